@@ -23,8 +23,16 @@ Array = NDArray[np.floating[Any]]
 SOLAR_CONSTANT = 1366.1
 
 _SECONDS_A_DAY = 86400.0
+#: Spencer's series counts from 0 h of 1 January of a leap year. Half a day brings it to noon, 3/8 of a day to
+#: the middle of the leap cycle: the declination is then within 0.17 deg of the ephemeris in every year,
+#: against 0.5 deg without.
+_SERIES_OFFSET_DAYS = 0.875
 #: Steps of more than this are too coarse for one position of the sun. [h]
 LONGEST_STEP_HOURS = 6.0
+
+
+def _series_day(day_of_year: ArrayLike) -> Array:
+    return np.asarray(day_of_year, dtype=float) + _SERIES_OFFSET_DAYS
 
 
 def declination(day_of_year: ArrayLike) -> Array:
@@ -38,7 +46,7 @@ def declination(day_of_year: ArrayLike) -> Array:
     Returns
     -------
     ndarray, shape (day,)
-        Within 0.5 deg of the ephemeris in any year of the leap cycle. [rad]
+        At local noon; within 0.2 deg of the ephemeris in any year of the leap cycle. [rad]
 
     References
     ----------
@@ -51,7 +59,7 @@ def declination(day_of_year: ArrayLike) -> Array:
     """
     from pvlib.solarposition import declination_spencer71
 
-    return np.asarray(declination_spencer71(np.asarray(day_of_year, dtype=float)))
+    return np.asarray(declination_spencer71(_series_day(day_of_year)))
 
 
 def equation_of_time(day_of_year: ArrayLike) -> Array:
@@ -74,11 +82,11 @@ def equation_of_time(day_of_year: ArrayLike) -> Array:
     Examples
     --------
     >>> round(60 * float(equation_of_time(307)), 1)  # early November, the largest of the year [min]
-    16.4
+    16.3
     """
     from pvlib.solarposition import equation_of_time_spencer71
 
-    return np.asarray(equation_of_time_spencer71(np.asarray(day_of_year, dtype=float))) / 60.0
+    return np.asarray(equation_of_time_spencer71(_series_day(day_of_year))) / 60.0
 
 
 def normal_irradiance_outside(day_of_year: ArrayLike) -> Array:
@@ -105,7 +113,7 @@ def normal_irradiance_outside(day_of_year: ArrayLike) -> Array:
     """
     from pvlib.irradiance import get_extra_radiation
 
-    return np.asarray(get_extra_radiation(np.asarray(day_of_year, dtype=float), SOLAR_CONSTANT))
+    return np.asarray(get_extra_radiation(_series_day(day_of_year), SOLAR_CONSTANT))
 
 
 def sunset_hour_angle(latitude: ArrayLike, declination: ArrayLike) -> Array:
@@ -344,7 +352,8 @@ def sun_over_steps(
         part[dark] = 0.0
     shape = (len(day) * steps_per_day, len(phi))
     outside = np.repeat(normal_irradiance_outside(day), steps_per_day)[:, None]
-    return SunSteps(*(part.reshape(shape) for part in (east, north, up, sunlit)), outside)
+    east, north, up, sunlit = (part.reshape(shape) for part in (east, north, up, sunlit))
+    return SunSteps(east, north, up, sunlit, outside)
 
 
 def _sunlit_part(
