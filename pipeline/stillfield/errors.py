@@ -57,7 +57,8 @@ class StillfieldError(Exception):
         super().__init__(self._sentence())
 
     def _sentence(self) -> str:
-        facts = [f"{label} {value}" for label, value in (("got", self.got), ("wanted", self.wanted)) if value is not None]
+        pairs = (("got", self.got), ("wanted", self.wanted))
+        facts = [f"{label} {value}" for label, value in pairs if value is not None]
         text = f"{self.where}: {self.what}" if self.where else self.what
         if facts:
             text += f" ({'; '.join(facts)})"

@@ -142,12 +142,12 @@ class Still:
 
     @property
     def cover_area_ratio(self) -> float:
-        """Cover area per basin area, R_A. [1]"""
+        """Cover area per basin area, R_A [1]."""
         return sum(panel.share / cos(radians(panel.tilt_deg)) for panel in self.panels)
 
     @property
     def basin_salinity_g_kg(self) -> float:
-        """Salinity of the brine in the basin. [g kg-1]"""
+        """Salinity of the brine in the basin [g kg-1]."""
         return self.feed_salinity_g_kg * self.concentration_factor
 
     @property

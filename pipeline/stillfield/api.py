@@ -1,0 +1,142 @@
+"""The notebook interface: the same stages as the command line, on datasets in memory.
+
+>>> import stillfield as sf
+>>> weather = sf.open_weather("pvlib:data/12839.tm2")
+>>> still = sf.load_still("single-slope-glass")
+>>> monthly = sf.monthly_yield(weather, still, method="rule")
+>>> round(float(monthly["annual_yield"][0]))
+842
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+import xarray as xr
+
+from stillfield.methods.baselines import ConstantEfficiency
+from stillfield.methods.registry import get_method
+from stillfield.physics.rule import USUAL_EFFICIENCY
+from stillfield.physics.still import Still
+from stillfield.settings.still_file import load_still_file
+from stillfield.sources import guess_kind
+from stillfield.sources.places import read_places
+from stillfield.stages.aggregate import aggregate
+from stillfield.stages.estimate import estimate
+from stillfield.stages.prepare import prepare
+from stillfield.stages.rank import rank_places
+from stillfield.stages.read import Box, read_weather
+
+__all__ = ["Box", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
+
+
+def open_weather(
+    files: str | Path | Sequence[str | Path],
+    kind: str | None = None,
+    *,
+    region: Box | None = None,
+    **options: Any,
+) -> xr.Dataset:
+    """Open weather of any kind in vocabulary names and units.
+
+    Parameters
+    ----------
+    files : path or sequence of paths
+        Files, globs, or ``package:path`` for a file inside an installed package.
+    kind : str, optional
+        'typical-year', 'netcdf', ...; recognised from the first file when left out.
+    region : Box, optional
+        Keep only cells or sites inside.
+    **options
+        Options of the kind, as in the run file.
+
+    Returns
+    -------
+    xarray.Dataset
+        Dimensions ``time`` and space; see `stillfield.sources.Source`.
+
+    Raises
+    ------
+    WeatherError
+        If the files cannot be read, recognised or believed.
+    """
+    names = [str(files)] if isinstance(files, str | Path) else [str(name) for name in files]
+    return read_weather(kind or guess_kind(names), names, region=region, **options)
+
+
+def load_still(still: str | Path) -> Still:
+    """Load a still design.
+
+    Parameters
+    ----------
+    still : str or path
+        A still file.
+
+    Returns
+    -------
+    Still
+
+    Raises
+    ------
+    RunFileError
+        All faults of the file at once.
+    """
+    return load_still_file(still)
+
+
+def load_places(table: str | Path, columns: Mapping[str, str] | None = None) -> pd.DataFrame:
+    """Load a table of villages; see `stillfield.sources.places.read_places`."""
+    return read_places(table, columns)
+
+
+def monthly_yield(
+    weather: xr.Dataset,
+    still: Still,
+    method: str = "fitted",
+    *,
+    rule_efficiency: float = USUAL_EFFICIENCY,
+    min_valid_hours: float = 20.0,
+    min_valid_days_share: float = 0.8,
+) -> xr.Dataset:
+    """Litres per square metre of basin for every month of the year and every cell or site.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        As `open_weather` gives it.
+    still : Still
+        As `load_still` gives it.
+    method : str
+        'fitted', 'heat-balance', 'rule' or 'nafey-2000'.
+    rule_efficiency : float
+        Efficiency of the rule printed beside every result. [1]
+    min_valid_hours : float
+        Hours a daily mean needs. [h]
+    min_valid_days_share : float
+        Share of its days a month needs. [1]
+
+    Returns
+    -------
+    xarray.Dataset
+        ``monthly_yield`` [L m-2 month-1] with its band, the rule, years, worst month and day counts; see
+        `stillfield.stages.aggregate.aggregate`.
+
+    Raises
+    ------
+    MethodError, WeatherError
+        If the method does not exist or the weather cannot feed it.
+
+    Notes
+    -----
+    A still is no barrier to volatile contaminants; distillate must be disinfected, remineralised and tested
+    before people drink it. See `stillfield.vocabulary.WATER_CAUTION`.
+    """
+    chosen = get_method(method)
+    prepared = prepare(weather, min_valid_hours=min_valid_hours)
+    daily = estimate(
+        prepared.daily, still, chosen, rule=ConstantEfficiency(rule_efficiency), steps=prepared.steps
+    )
+    return aggregate(daily, min_valid_days_share=min_valid_days_share)

@@ -1,0 +1,75 @@
+"""Read: sources to one dataset in vocabulary names and units, cut to the region."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import xarray as xr
+
+from stillfield.errors import WeatherError
+from stillfield.sources import open_source
+
+
+@dataclass(frozen=True)
+class Box:
+    """A region on the map, edges in degrees; `west` > `east` crosses the antimeridian."""
+
+    south: float
+    north: float
+    west: float
+    east: float
+
+
+def read_weather(
+    kind: str, files: Sequence[str] = (), *, region: Box | None = None, **options: Any
+) -> xr.Dataset:
+    """Read weather of one kind and cut it to a region.
+
+    Parameters
+    ----------
+    kind : str
+        A kind of source known to `stillfield.sources`.
+    files : sequence of str
+        Files, globs or ``package:path`` names.
+    region : Box, optional
+        Keep only cells or sites whose centre lies inside.
+    **options
+        Passed on to the source.
+
+    Returns
+    -------
+    xarray.Dataset
+        As described in `stillfield.sources.Source`.
+
+    Raises
+    ------
+    WeatherError
+        If the weather cannot be read, or no cell lies in the region.
+    """
+    weather = open_source(kind, files, **options).open()
+    return weather if region is None else _cut(weather, region)
+
+
+def _cut(weather: xr.Dataset, box: Box) -> xr.Dataset:
+    longitude, latitude = weather["longitude"], weather["latitude"]
+    east_of_west, west_of_east = longitude >= box.west, longitude <= box.east
+    inside_lon = (east_of_west & west_of_east) if box.west <= box.east else (east_of_west | west_of_east)
+    inside_lat = (latitude >= box.south) & (latitude <= box.north)
+    if "site" in weather.dims:
+        cut = weather.isel(site=(inside_lon & inside_lat).values.nonzero()[0])
+    else:
+        cut = weather.isel(
+            latitude=inside_lat.values.nonzero()[0], longitude=inside_lon.values.nonzero()[0]
+        )
+    if 0 in cut.sizes.values():
+        raise WeatherError(
+            "no weather in the region",
+            where="region",
+            got=f"{box.south}..{box.north} N, {box.west}..{box.east} E",
+            wanted=f"a box that meets {float(latitude.min()):g}..{float(latitude.max()):g} N, "
+            f"{float(longitude.min()):g}..{float(longitude.max()):g} E",
+            cure="Correct the box or the weather files.",
+        )
+    return cut
