@@ -53,12 +53,15 @@ class CoverMaterial:
         Sheet thickness. [m]
     emittance : float
         Long-wave emittance of the outer face. [1]
+    ageing : float
+        Factor of the transmittance for yellowing and scratches; dirt belongs to the condition. [1]
     """
 
     refractive_index: float = 1.526
     extinction_per_m: float = 4.0
     thickness_m: float = 0.004
     emittance: float = 0.90
+    ageing: float = 1.0
 
 
 @dataclass(frozen=True)
