@@ -16,7 +16,7 @@ LOWEST_HEIGHT_M = 0.5
 
 
 def wind_speed_at_2m(speed: Field, height_m: float) -> Field:
-    """Wind speed at 2 m from that at another height, by the log law over short grass.
+    r"""Wind speed at 2 m from that at another height, by the log law over short grass.
 
     u2 = u_z · 4.87 / ln(67.8 z - 5.42).
 
