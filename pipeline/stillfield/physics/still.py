@@ -29,8 +29,8 @@ class Panel:
     azimuth_deg : float
         Direction the panel faces: degrees clockwise from `azimuth_from`. [deg]
     azimuth_from : {'equator', 'north'}
-        'equator': 0 faces the equator in either hemisphere (180 the pole, 90 and 270 east and west);
-        'north': compass degrees.
+        'equator': 0 faces the equator in either hemisphere and 180 the pole; clockwise from there, 90 is
+        west north of the equator and east south of it. 'north': compass degrees.
     """
 
     share: float
