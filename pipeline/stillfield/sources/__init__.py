@@ -2,9 +2,23 @@
 
 from __future__ import annotations
 
-from typing import Protocol
+import importlib
+import inspect
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any, Protocol
 
 import xarray as xr
+
+from stillfield.errors import WeatherError
+
+#: Kinds of source by the name used in run files, and the function or class that opens each.
+KINDS = {
+    "typical-year": ("stillfield.sources.typical_year", "open_typical_year"),
+    "netcdf": ("stillfield.sources.netcdf", "open_netcdf"),
+    "synthetic": ("stillfield.sources.synthetic", "SyntheticSource"),
+}
 
 
 class Source(Protocol):
@@ -26,3 +40,108 @@ class Source(Protocol):
     def open(self) -> xr.Dataset:
         """Read or lazily open the weather."""
         ...
+
+
+@dataclass(frozen=True)
+class FileSource:
+    """A source that is read by one function from some files, when it is opened."""
+
+    kind: str
+    files: tuple[str, ...]
+    options: dict[str, Any] = field(default_factory=dict)
+
+    def open(self) -> xr.Dataset:
+        """Read or lazily open the files.
+
+        Returns
+        -------
+        xarray.Dataset
+            As described in `Source`.
+        """
+        weather: xr.Dataset = _opener(self.kind)(self.files, **self.options)
+        return weather
+
+
+def _opener(kind: str) -> Any:
+    module, name = KINDS[kind]
+    return getattr(importlib.import_module(module), name)
+
+
+def open_source(kind: str, files: Sequence[str | Path] = (), **options: Any) -> Source:
+    """Source of one kind, not yet opened.
+
+    Parameters
+    ----------
+    kind : {'typical-year', 'netcdf', 'synthetic'}
+        What the files are.
+    files : sequence of str or Path
+        Paths, patterns, or ``package:path`` for a file inside an installed package.
+        For 'synthetic' the polygon file of the land, unless `land` is among the options.
+    **options
+        Arguments of `typical_year.open_typical_year`, `netcdf.open_netcdf` or `synthetic.SyntheticSource`.
+
+    Returns
+    -------
+    Source
+        Its ``open()`` gives the dataset.
+
+    Raises
+    ------
+    WeatherError
+        If the kind or an option does not exist.
+
+    Examples
+    --------
+    >>> open_source("typical-year", ["pvlib:data/12839.tm2"]).open().sizes["time"]
+    8760
+    """
+    if kind not in KINDS:
+        raise WeatherError("unknown kind of weather", where="weather.kind", got=kind, wanted=", ".join(KINDS))
+    opener = _opener(kind)
+    known = inspect.signature(opener).parameters
+    unknown = sorted(set(options) - set(known))
+    if unknown:
+        raise WeatherError(
+            f"{kind} weather takes no option '{unknown[0]}'",
+            where="weather",
+            wanted=", ".join(name for name in known if name != "files"),
+        )
+    if kind == "synthetic":
+        source: Source = opener(**({"land": Path(files[0])} if files else {}) | options)
+        return source
+    return FileSource(kind, tuple(map(str, files)), dict(options))
+
+
+def guess_kind(files: Sequence[str | Path]) -> str:
+    """Kind of weather files, told from the first bytes of the first one.
+
+    Parameters
+    ----------
+    files : sequence of str or Path
+        Paths, patterns, or ``package:path``.
+
+    Returns
+    -------
+    str
+        'netcdf' or 'typical-year'.
+
+    Raises
+    ------
+    WeatherError
+        If there is no such file, or it is of no known kind.
+
+    Examples
+    --------
+    >>> guess_kind(["pvlib:data/12839.tm2"])
+    'typical-year'
+    """
+    from stillfield.sources.locate import locate
+    from stillfield.sources.year_formats import recognise
+
+    first = locate([str(name) for name in files])[0]
+    with first.open("rb") as stream:
+        head = stream.read(4000)
+    if head.startswith((b"CDF", b"\x89HDF")):
+        return "netcdf"
+    recognise(head, where=str(first))
+    return "typical-year"

@@ -1,0 +1,190 @@
+"""Physical gates: weather that cannot be true is refused, and the first breach is named.
+
+A gate works on weather in memory: a whole small dataset, or one block of a large one as it is read, so that
+nothing is read twice. Counts of several blocks add up.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from stillfield.errors import WeatherError
+from stillfield.physics.sun import extraterrestrial_irradiation
+from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER, Quantity
+
+Array = NDArray[np.floating[Any]]
+
+#: Irradiation of a day may exceed the extraterrestrial by this factor and this much [MJ m-2]: rounding,
+#: days cut at another hour than the sun's, and the last degrees before polar night.
+_MARGIN_FACTOR = 1.05
+_MARGIN_MJ = 0.6
+
+#: Negative sunshine up to this is instrument or packing noise and becomes 0.
+_NOISE_FLOOR = {"ghi": -20.0, "dni": -20.0, "dhi": -20.0, "irradiation": -0.5}
+
+
+@dataclass(frozen=True)
+class GateCounts:
+    """What the gates changed or found, by variable; add the counts of blocks with ``+``.
+
+    Attributes
+    ----------
+    clipped : dict of str to int
+        Small negative values set to 0.
+    missing : dict of str to int
+        Missing values.
+    values : dict of str to int
+        Values seen.
+    """
+
+    clipped: dict[str, int] = field(default_factory=dict)
+    missing: dict[str, int] = field(default_factory=dict)
+    values: dict[str, int] = field(default_factory=dict)
+
+    def __add__(self, other: GateCounts) -> GateCounts:
+        """Counts of both."""
+        return GateCounts(*(_added(getattr(self, name), getattr(other, name)) for name in
+                            ("clipped", "missing", "values")))
+
+    def sentences(self) -> list[str]:
+        """One sentence for each variable that was clipped or has missing values.
+
+        Returns
+        -------
+        list of str
+
+        Examples
+        --------
+        >>> GateCounts({"ghi": 3}, {"ghi": 0}, {"ghi": 100}).sentences()
+        ['3 of 100 values of ghi were slightly negative and set to 0.']
+        """
+        told = [f"{n} of {self.values[name]} values of {name} were slightly negative and set to 0."
+                for name, n in self.clipped.items() if n]
+        return told + [f"{n} of {self.values[name]} values of {name} are missing."
+                       for name, n in self.missing.items() if n]
+
+
+def _added(first: dict[str, int], second: dict[str, int]) -> dict[str, int]:
+    return {name: first.get(name, 0) + second.get(name, 0) for name in {**first, **second}}
+
+
+def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, GateCounts]:
+    """Check weather in memory against physical bounds and clip noise below zero.
+
+    Every variable of the vocabulary is held against its bounds, and the irradiation of each day against
+    the extraterrestrial one at its latitude (with a margin of 5 % and 0.6 MJ m-2).
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        Vocabulary names and units, coordinates ``time`` and ``latitude``; already computed.
+    where : str
+        File or block, for errors.
+
+    Returns
+    -------
+    weather : xarray.Dataset
+        The same, small negative irradiance set to 0.
+    counts : GateCounts
+
+    Raises
+    ------
+    WeatherError
+        On the first value outside its bounds, with its cell and time.
+    """
+    daily = float(weather.attrs.get("step_hours", 24.0)) >= 24.0
+    table = DAY_WEATHER if daily else STEP_WEATHER
+    counts = GateCounts()
+    changed: dict[str, xr.DataArray] = {}
+    for name in (name for name in table if name in weather.data_vars):
+        values, clipped = _check_bounds(weather[name], table[name], where=where)
+        counts += GateCounts(
+            {name: clipped}, {name: int(np.isnan(values.values).sum())}, {name: int(values.size)}
+        )
+        changed[name] = values
+    result = weather.assign(changed)
+    if "latitude" in weather.coords:
+        _check_sunshine(result, daily=daily, where=where)
+    return result, counts
+
+
+def _check_bounds(values: xr.DataArray, quantity: Quantity, *, where: str) -> tuple[xr.DataArray, int]:
+    data = values.values
+    floor = _NOISE_FLOOR.get(quantity.name)
+    low = quantity.low if floor is None else floor
+    with np.errstate(invalid="ignore"):
+        outside = (data < low) | (data > quantity.high)
+        negative = (data < 0.0) if floor is not None else np.zeros(1, dtype=bool)
+    if outside.any():
+        first = np.unravel_index(int(np.argmax(outside)), outside.shape)
+        raise WeatherError(
+            f"{quantity.name} cannot be true",
+            where=f"{where}, {_label(values, first)}",
+            got=f"{float(data[first]):g} {quantity.unit}; {int(outside.sum())} such values",
+            wanted=f"{low:g} to {quantity.high:g} {quantity.unit}",
+            cure="Check the units and the number that marks missing values.",
+        )
+    clipped = int(negative.sum())
+    return (values.clip(min=0.0, keep_attrs=True) if clipped else values), clipped
+
+
+def _label(values: xr.DataArray, index: tuple[Any, ...]) -> str:
+    parts = []
+    for dim, at in zip(values.dims, index, strict=True):
+        if dim in values.coords:
+            mark = values[dim].values[at]
+            text = str(mark)[:16] if dim == "time" else (f"{mark:g}" if isinstance(mark, np.floating) else str(mark))
+            parts.append(f"{dim} {text}")
+    return ", ".join(parts) or f"index {tuple(int(i) for i in index)}"
+
+
+def _check_sunshine(weather: xr.Dataset, *, daily: bool, where: str) -> None:
+    sun = _daily_irradiation(weather, daily=daily)
+    if sun is None:
+        return
+    latitude = np.atleast_1d(weather["latitude"].values).astype(float)
+    day_of_year = np.atleast_1d(sun["time"].dt.dayofyear.values)
+    outside = xr.DataArray(
+        extraterrestrial_irradiation(latitude, day_of_year), dims=("time", weather["latitude"].dims[0])
+    )
+    limit = (outside * _MARGIN_FACTOR + _MARGIN_MJ).transpose(*[d for d in sun.dims if d in outside.dims])
+    with np.errstate(invalid="ignore"):
+        breach = (sun.drop_vars(list(sun.coords)) > limit).transpose(*sun.dims).values
+    if not breach.any():
+        return
+    first = np.unravel_index(int(np.argmax(breach)), breach.shape)
+    marks = dict(zip(sun.dims, first, strict=True))
+    allowed = limit.isel({d: marks[d] for d in limit.dims})
+    raise WeatherError(
+        "more sunshine than reaches the top of the atmosphere",
+        where=f"{where}, {_label(sun, first)}",
+        got=f"{float(sun.values[first]):.2f} MJ m-2 in the day; {int(breach.sum())} such days",
+        wanted=f"at most {float(allowed):.2f} MJ m-2",
+        cure="Check the units and what the sunshine `means` (mean or total, of which period).",
+    )
+
+
+def _daily_irradiation(weather: xr.Dataset, *, daily: bool) -> xr.DataArray | None:
+    """Irradiation of each whole day [MJ m-2]; None where there is none to check."""
+    if daily:
+        return weather.get("irradiation")
+    if "ghi" not in weather:
+        return None
+    hours = float(weather.attrs["step_hours"])
+    steps = round(24.0 / hours)
+    first = int((-_hour_of(weather["time"].values[:1])[0] / hours) % steps)
+    days = (weather.sizes["time"] - first) // steps
+    if days < 1:
+        return None
+    block = weather["ghi"].isel(time=slice(first, first + days * steps))
+    sums = block.coarsen(time=steps, coord_func="min").sum()
+    return sums * (hours * 0.0036)
+
+
+def _hour_of(time: NDArray[Any]) -> Array:
+    return np.asarray(xr.DataArray(time, dims="time").dt.hour.values, dtype=float)
