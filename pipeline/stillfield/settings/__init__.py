@@ -1,1 +1,1 @@
-"""Run files and still files: text with positions in, frozen settings out, every fault at once."""
+"""Run files and still files: text with positions, checked whole, as frozen settings."""

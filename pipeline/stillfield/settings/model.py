@@ -1,0 +1,243 @@
+"""The run file as frozen settings: every key with its unit, its range and its meaning."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Annotated, Any
+
+from pydantic import (
+    BeforeValidator,
+    Field,
+    GetPydanticSchema,
+    PlainSerializer,
+    WithJsonSchema,
+    field_validator,
+    model_validator,
+)
+from pydantic_core import PydanticCustomError, core_schema
+
+from stillfield.errors import RunFileError, StillfieldError
+from stillfield.physics.still import Still
+from stillfield.settings.base import MAX_NAME, Box, Group, OneOf, Section, folder_name
+from stillfield.settings.paths import FileKey, find_file, folder_of, refuse, shown
+from stillfield.settings.still_file import load_still_file
+from stillfield.settings.text import harmless
+from stillfield.settings.weather import Weather
+from stillfield.vocabulary import METHODS
+
+
+@dataclass(frozen=True)
+class StillChoice:
+    """A still file named in a run file, and the still it describes."""
+
+    given: str
+    path: Path
+    still: Still
+
+
+def _load_choice(given: str, folder: Path) -> StillChoice:
+    file = find_file(given, folder)
+    try:
+        return StillChoice(given, file.path, load_still_file(file.path, given=given))
+    except RunFileError as error:
+        parts = tuple(f"{harmless(given)}, {fault}" for fault in error.faults)
+        raise PydanticCustomError("stillfield", "{message}", {"message": parts[0], "faults": parts}) from None
+    except StillfieldError as error:
+        raise refuse(str(error)) from None
+
+
+def _choice_schema(_source: Any, _handler: Any) -> core_schema.CoreSchema:
+    return core_schema.with_info_after_validator_function(
+        lambda given, info: _load_choice(given, folder_of(info)), core_schema.str_schema(strict=True)
+    )
+
+
+_StillKey = Annotated[
+    StillChoice,
+    GetPydanticSchema(_choice_schema),
+    PlainSerializer(lambda choice: shown(choice.given), return_type=str),
+    WithJsonSchema({"type": "string"}),
+]
+
+
+class Rule(Group):
+    """Numbers of the constant-efficiency rule."""
+
+    efficiency: float = Field(
+        0.30, gt=0, le=0.6, description="Share of the sunshine carried off by the distillate [1]; 0.30 is usual"
+    )
+
+
+class PlaceColumns(Group):
+    """Columns of the village table whose names are not recognised by themselves."""
+
+    name: str | None = Field(None, description="Column with the name of the place")
+    id: str | None = Field(None, description="Column with the identifier of the place")
+    latitude: str | None = Field(None, description="Column with the latitude [deg north]")
+    longitude: str | None = Field(None, description="Column with the longitude [deg east]")
+    population: str | None = Field(None, description="Column with the number of people")
+    households: str | None = Field(None, description="Column with the number of households")
+    feed_salinity_g_kg: str | None = Field(None, description="Column with the salinity of the feed water [g kg-1]")
+    distance_to_feed_km: str | None = Field(None, description="Column with the distance to the feed water [km]")
+    elevation_m: str | None = Field(None, description="Column with the height above sea [m]")
+    note: str | None = Field(None, description="Column with a remark")
+
+    def given(self) -> dict[str, str]:
+        """Columns that were named: stillfield's name to the table's."""
+        return self.model_dump(exclude_none=True)
+
+
+class Places(Group):
+    """The villages to rank."""
+
+    table: FileKey = Field(description="CSV table of places with name, latitude and longitude")
+    max_cell_distance_km: float = Field(
+        25.0, ge=0, le=1000, description="How far the next cell with weather may lie from a place [km]"
+    )
+    columns: Section[PlaceColumns] = Field(
+        default_factory=PlaceColumns, description="Names of columns that are not recognised by themselves"
+    )
+
+
+class Need(Group):
+    """Water that people need from the stills."""
+
+    litres_per_person_day: float = Field(
+        3.0, ge=0.1, le=100, description="Drinking water each person needs [L day-1]; 2.5 to 3 for survival"
+    )
+
+
+class Weights(Group):
+    """How much each criterion counts in the order of the places; only the proportions matter."""
+
+    yield_: float = Field(0.0, ge=0, le=1000, alias="yield", description="Weight of the litres per basin area")
+    people: float = Field(0.0, ge=0, le=1000, description="Weight of the number of people")
+    salinity: float = Field(0.0, ge=0, le=1000, description="Weight of the salinity of the water they have")
+    distance: float = Field(0.0, ge=0, le=1000, description="Weight of the distance to the feed water")
+
+    @model_validator(mode="after")
+    def _some_weight(self) -> Weights:
+        if not any(self.by_criterion().values()):
+            raise refuse("at least one weight should be above 0")
+        return self
+
+    def by_criterion(self) -> dict[str, float]:
+        """Weights by the name of the criterion, as the run file has them."""
+        return self.model_dump(by_alias=True)
+
+
+#: Weights of a run file that states none; one that states some gives the others no weight.
+USUAL_WEIGHTS = {"yield": 0.3, "people": 0.3, "salinity": 0.2, "distance": 0.2}
+
+
+def _usual_if_empty(value: Any) -> Any:
+    return dict(USUAL_WEIGHTS) if value in (None, {}) else value
+
+
+class Rank(Group):
+    """How the places are ordered."""
+
+    weights: Annotated[Weights, BeforeValidator(_usual_if_empty)] = Field(
+        default_factory=lambda: Weights(**USUAL_WEIGHTS),
+        description="Weight of each criterion; one that is left out counts nothing",
+    )
+
+
+class Missing(Group):
+    """When there is too little weather for a figure."""
+
+    min_valid_days_share: float = Field(
+        0.8, gt=0, le=1, description="Share of the days of a month that must have weather [1]"
+    )
+    min_valid_hours: float = Field(20.0, ge=1, le=24, description="Hours of a day that must have weather [h]")
+
+
+class Output(Group):
+    """Where results go."""
+
+    folder: str = Field(
+        "outputs", min_length=1, max_length=500,
+        description="Folder under which the run's own folder is made, from the working directory",
+    )
+
+    @field_validator("folder")
+    @classmethod
+    def _usable(cls, folder: str) -> str:
+        try:
+            is_file = Path(folder).is_file()
+        except ValueError:
+            raise refuse(f"cannot be used as a folder name (got '{harmless(folder)}')") from None
+        if is_file:
+            raise refuse(f"'{harmless(folder)}' is a file, not a folder")
+        return folder
+
+
+class Map(Group):
+    """What the maps show beside the results."""
+
+    land: FileKey | None = Field(None, description="GeoJSON outline of the land; the default is the shipped one")
+
+
+def _as_list(value: Any) -> Any:
+    return [value] if isinstance(value, str) else value
+
+
+_Stills = Annotated[
+    tuple[_StillKey, ...],
+    BeforeValidator(_as_list),
+    WithJsonSchema({
+        "anyOf": [{"type": "string"}, {"type": "array", "items": {"type": "string"}, "minItems": 1}],
+    }),
+]
+
+
+class RunSettings(Group):
+    """One run of the pipeline, checked."""
+
+    name: str = Field(min_length=1, max_length=MAX_NAME, description="Name of the run and of its output folder")
+    weather: Weather
+    region: Box | None = Field(None, description="Keep only cells and sites in this region; all without it")
+    still: _Stills = Field(
+        strict=False, min_length=1, max_length=20, description="Still file, or a list of several to compare"
+    )
+    method: Annotated[str, OneOf(METHODS)] = Field("fitted", description="Yield method")
+    rule: Section[Rule] = Field(default_factory=Rule, description="Numbers of the constant-efficiency rule")
+    places: Places | None = Field(None, description="Villages to rank; no ranking without them")
+    need: Section[Need] = Field(default_factory=Need, description="Water that people need")
+    rank: Section[Rank] = Field(default_factory=Rank, description="How the places are ordered")
+    missing: Section[Missing] = Field(default_factory=Missing, description="When weather is too scarce")
+    output: Section[Output] = Field(default_factory=Output, description="Where results go")
+    map: Section[Map] = Field(default_factory=Map, description="What the maps show beside the results")
+
+    @field_validator("name")
+    @classmethod
+    def _makes_a_folder_name(cls, name: str) -> str:
+        if not folder_name(name):
+            raise refuse(f"should hold at least one letter or digit (got '{harmless(name)}')")
+        return name
+
+    @field_validator("still")
+    @classmethod
+    def _different_names(cls, choices: tuple[StillChoice, ...]) -> tuple[StillChoice, ...]:
+        first: dict[str, str] = {}
+        for choice in choices:
+            name = choice.still.name
+            if name in first:
+                raise refuse(f"two stills are called '{name}' ('{first[name]}' and '{choice.given}')")
+            first[name] = choice.given
+        return choices
+
+    @property
+    def stills(self) -> tuple[Still, ...]:
+        """The still designs of the run."""
+        return tuple(choice.still for choice in self.still)
+
+    @property
+    def folder(self) -> Path:
+        """The run's own output folder."""
+        return Path(self.output.folder).expanduser() / folder_name(self.name)
+
+    def with_output(self, folder: str) -> RunSettings:
+        """Return the same run with its results under another `folder`."""
+        return self.model_copy(update={"output": Output(folder=folder)})

@@ -1,0 +1,148 @@
+"""Where the weather of a run comes from: one group of keys per kind of source."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated, Any, Literal
+
+from pydantic import BeforeValidator, Field, WithJsonSchema, field_validator, model_validator
+
+from stillfield.settings.base import Box, Group, OneOf, Section
+from stillfield.settings.paths import FileKey, FilesKey, InputFiles, refuse
+from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
+
+#: Formats of typical-year files.
+FORMATS = ("auto", "tmy2", "tmy3", "epw", "pvgis-csv", "pvgis-json")
+
+#: What a value of the file stands for; needed where the unit alone does not say it.
+MEANS = (
+    "daily-total", "daily-mean", "daylight-mean", "step-mean", "step-total", "since-midnight-utc", "instant",
+)
+
+#: Weather variables a grid file may offer, by stillfield's names.
+VARIABLES = tuple(dict.fromkeys((*STEP_WEATHER, *(name for name in DAY_WEATHER if name != "valid_hours"))))
+
+#: Bounds of invented weather: what its climate is made for, and what fits into memory.
+LARGEST_LATITUDE = 60.0
+MAX_CELL_DAYS = 200_000_000
+
+_Count = Annotated[int, Field(ge=1, le=5000)]
+_Shape = tuple[_Count, _Count]
+
+
+def _as_list(value: Any) -> Any:
+    """One file may be written without the brackets of a list."""
+    return [value] if isinstance(value, str) else value
+
+
+_Files = Annotated[
+    tuple[FilesKey, ...],
+    BeforeValidator(_as_list),
+    WithJsonSchema({
+        "anyOf": [{"type": "string"}, {"type": "array", "items": {"type": "string"}, "minItems": 1}],
+    }),
+]
+
+
+class FileWeather(Group):
+    """What the kinds of weather that read files share."""
+
+    files: _Files = Field(
+        strict=False, min_length=1,
+        description="Weather files: paths from this file's folder, patterns such as 'era/*.nc', or "
+                    "'package:path' for a file inside an installed package",
+    )
+
+    @field_validator("files")
+    @classmethod
+    def _each_once(cls, entries: tuple[InputFiles, ...]) -> tuple[InputFiles, ...]:
+        first: dict[Path, str] = {}
+        for entry in entries:
+            for path in entry.paths:
+                if path in first:
+                    raise refuse(f"names '{path.name}' twice ('{first[path]}' and '{entry.given}')")
+                first[path] = entry.given
+        return entries
+
+    @property
+    def paths(self) -> tuple[Path, ...]:
+        """Every file, patterns followed, in the order of the run file."""
+        return tuple(path for entry in self.files for path in entry.paths)
+
+
+class TypicalYearWeather(FileWeather):
+    """Typical years of single sites, one file per site."""
+
+    kind: Literal["typical-year"]
+    format: Annotated[str, OneOf(FORMATS)] = Field(
+        "auto", description="Format of the files; 'auto' recognises it from ending and content"
+    )
+
+
+class VariableKey(Group):
+    """How one weather variable is found in grid files and what its values stand for."""
+
+    name: str | None = Field(None, min_length=1, description="Name of the variable in the files")
+    units: str | None = Field(
+        None, min_length=1, description="Unit of the values, where the files state none or a wrong one"
+    )
+    means: Annotated[str, OneOf(MEANS)] | None = Field(
+        None, description="What a value stands for, for example 'daily-total' or 'daylight-mean'"
+    )
+    height_m: float | None = Field(
+        None, ge=0.5, le=200, description="Height of a wind speed above ground [m]; 2 m is what the models take"
+    )
+
+
+class NetcdfWeather(FileWeather):
+    """Gridded weather from NetCDF files."""
+
+    kind: Literal["netcdf"]
+    variables: Section[dict[Annotated[str, OneOf(VARIABLES)], VariableKey]] = Field(
+        default_factory=dict,
+        description="Weather variables by stillfield's names; one that is left out is recognised by its "
+                    "attributes",
+    )
+
+    @model_validator(mode="after")
+    def _heights_of_wind_only(self) -> NetcdfWeather:
+        for name, variable in self.variables.items():
+            if variable.height_m is not None and name != "wind_speed":
+                raise refuse(f"variables.{name}.height_m has no meaning; only wind_speed has a height")
+        return self
+
+
+class Years(Group):
+    """A run of calendar years."""
+
+    first: int = Field(2011, ge=1900, le=2200, description="First calendar year")
+    count: int = Field(8, ge=1, le=100, description="Number of years")
+
+
+class SyntheticWeather(Group):
+    """Invented weather on an invented land, to try things with; never a statement about a real place."""
+
+    kind: Literal["synthetic"]
+    seed: int = Field(1, ge=0, le=2**32 - 1, description="Seed of the weather: same seed, same weather")
+    years: Section[Years] = Field(default_factory=Years, description="Calendar years to invent")
+    box: Box = Field(description="Region to fill with weather, within 60 deg of the equator")
+    shape: _Shape = Field((60, 60), strict=False, description="Rows and columns of the grid")
+    land: FileKey = Field(description="GeoJSON file of land polygons; cells at sea stay without weather")
+
+    @model_validator(mode="after")
+    def _fits_on_the_map_and_in_memory(self) -> SyntheticWeather:
+        box, (rows, columns) = self.box, self.shape
+        if max(abs(box.south), abs(box.north)) > LARGEST_LATITUDE or not -180 <= box.west < box.east <= 180:
+            raise refuse(
+                f"box should lie within {LARGEST_LATITUDE:g} deg of the equator and between 180 W and 180 E, "
+                "west of east"
+            )
+        if rows * columns * self.years.count * 365 > MAX_CELL_DAYS:
+            raise refuse(f"asks for more than {MAX_CELL_DAYS:.0e} cell-days; take fewer rows, columns or years")
+        return self
+
+
+Weather = Annotated[
+    SyntheticWeather | TypicalYearWeather | NetcdfWeather,
+    Field(discriminator="kind", description="Where the weather comes from"),
+]
