@@ -71,16 +71,30 @@ class DailyYield:
 class Method(Protocol):
     """What every yield method offers."""
 
-    #: Name in run files and metadata.
-    name: str
-    #: Weather it takes: 'daily' or 'hourly' (steps of at most 6 h).
-    resolution: Literal["daily", "hourly"]
-    #: Vocabulary names it cannot do without.
-    needs: tuple[str, ...]
-    #: Vocabulary names it uses when they are there.
-    uses: tuple[str, ...]
-    #: False where the result is the same in every condition of the still, so there is no band.
-    knows_condition: bool
+    @property
+    def name(self) -> str:
+        """Name in run files and metadata."""
+        ...
+
+    @property
+    def resolution(self) -> Literal["daily", "hourly"]:
+        """Weather it takes: 'daily' or 'hourly' (steps of at most 6 h)."""
+        ...
+
+    @property
+    def needs(self) -> tuple[str, ...]:
+        """Vocabulary names it cannot do without."""
+        ...
+
+    @property
+    def uses(self) -> tuple[str, ...]:
+        """Vocabulary names it uses when they are there."""
+        ...
+
+    @property
+    def knows_condition(self) -> bool:
+        """False where the result is the same in every condition of the still, so there is no band."""
+        ...
 
     def daily_yield(self, block: Block, still: Still) -> DailyYield:
         """Yield of every day and cell of `block` for `still` in its central condition."""

@@ -50,6 +50,6 @@ class PublishedLine:
     def daily_yield(self, block: Block, still: Still) -> DailyYield:
         """Yield by the printed line at the mean tilt of the still's cover."""
         tilt = sum(panel.share * panel.tilt_deg for panel in still.panels)
-        weather = tuple(block.weather[name] for name in self.needs)
-        litres = np.maximum(self.fit.litres(*weather, tilt), 0.0)
-        return DailyYield(litres, outside=self.fit.outside(*weather, tilt))
+        irradiation, temp_air, wind_speed = (block.weather[name] for name in self.needs)
+        litres = np.maximum(self.fit.litres(irradiation, temp_air, wind_speed, tilt), 0.0)
+        return DailyYield(litres, outside=self.fit.outside(irradiation, temp_air, wind_speed, tilt))

@@ -9,7 +9,6 @@ from __future__ import annotations
 from functools import partial
 from typing import Any
 
-import dask
 import dask.array as da
 import numpy as np
 import xarray as xr
@@ -81,7 +80,7 @@ def _calendar(time: xr.DataArray) -> tuple[NDArray[Any], NDArray[Any], NDArray[A
 
 
 def _days_in_month(time: xr.DataArray, starts: NDArray[Any]) -> NDArray[np.float64]:
-    return time.dt.days_in_month.to_numpy()[starts].astype(float)
+    return np.asarray(time.dt.days_in_month.to_numpy()[starts], dtype=np.float64)
 
 
 def _stretch(expected: NDArray[np.float64], like: NDArray[Any]) -> NDArray[np.float64]:
@@ -100,7 +99,7 @@ def _month_sums(daily: xr.Dataset, starts: NDArray[Any], ends: NDArray[Any]) -> 
         new_axes={"o": len(names) + 1, "m": len(starts)}, concatenate=True, dtype=np.float64,
         meta=np.empty((0,) * (arrays[0].ndim + 1)),
     )
-    (sums,) = dask.compute(stacked, scheduler="threads")
+    sums = stacked.compute(scheduler="threads")
     return dict(zip([*names, "count"], sums, strict=True))
 
 

@@ -79,7 +79,7 @@ def estimate(
         method=method,
         rule=rule,
     )
-    stacked = da.blockwise(  # type: ignore[no-untyped-call]
+    stacked = da.blockwise(
         kernel,
         "ot" + _letters(space),
         *[item for pair in zip(arrays, axes, strict=True) for item in pair],
@@ -129,8 +129,9 @@ def _letters(space: list[Any]) -> str:
 
 def _chunked(arrays: Mapping[str, xr.DataArray], space: list[Any]) -> tuple[list[Any], list[str]]:
     """Give every array dask chunks that are whole in time and the same in space."""
-    largest = max(arrays.values(), key=lambda array: array.size)
-    per_cell = largest.size / max(np.prod([largest.sizes[dim] for dim in space]), 1) * 8.0 * len(arrays)
+    largest = max(arrays.values(), key=lambda array: int(array.size))
+    steps = int(np.prod([largest.sizes[dim] for dim in largest.dims if dim not in space]))
+    per_cell = steps * 8.0 * len(arrays)
     cells = max(int(BLOCK_BYTES / per_cell), 1)
     columns = largest.sizes[space[-1]]
     chunks = {space[-1]: min(columns, cells)}

@@ -8,6 +8,7 @@ before days are summed. Station files keep their local standard day. Daily input
 from __future__ import annotations
 
 from dataclasses import dataclass
+from datetime import timedelta
 from typing import Any
 
 import numpy as np
@@ -116,10 +117,11 @@ def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
     index = steps.indexes["time"]
     if len(index) < 2:
         raise WeatherError("a single time step makes no day", got=f"{len(index)} step")
-    width = (index[1:] - index[:-1]) / np.timedelta64(1, "h") if index.dtype.kind == "M" else np.array(
-        [delta.total_seconds() / 3600.0 for delta in np.diff(index.to_numpy())]
-    )
-    width = np.asarray(width, dtype=float)
+    marks = index.to_numpy()
+    if index.dtype.kind == "M":
+        width = np.diff(marks) / np.timedelta64(1, "h")
+    else:
+        width = np.array([delta / timedelta(hours=1) for delta in np.diff(marks)], dtype=float)
     if (width <= 0).any():
         raise WeatherError(
             "time does not run forward",
@@ -132,7 +134,7 @@ def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
     if index.dtype.kind != "M" or not np.allclose(width / step_hours, np.round(width / step_hours), atol=1e-3):
         raise WeatherError("time steps are irregular", got=f"steps of {width.min():g} to {width.max():g} h")
     axis = index[0] + np.arange(round(count) + 1) * np.timedelta64(round(step_hours * 3600), "s")
-    return steps.reindex(time=axis, method="nearest", tolerance=np.timedelta64(60, "s"))
+    return steps.reindex(time=axis, method="nearest", tolerance="60s")
 
 
 def _clock_shift(weather: xr.Dataset, step_hours: float) -> tuple[np.ndarray, xr.DataArray]:
@@ -177,8 +179,6 @@ def _day_axis(
         midnight = midnight.replace(nanosecond=0).to_datetime64()
         days: Any = midnight + np.arange(int(begin), int(end)) * np.timedelta64(1, "D")
     else:
-        from datetime import timedelta
-
         days = [midnight + timedelta(days=int(day)) for day in range(int(begin), int(end))]
     return int(begin) * per_day - offset, days
 

@@ -157,7 +157,8 @@ def _nearest(places: pd.DataFrame, cells: xr.Dataset) -> tuple[NDArray[np.int64]
 
     cell_lat, cell_lon = cells["latitude"].to_numpy(), cells["longitude"].to_numpy()
     place_lat, place_lon = places["latitude"].to_numpy(), places["longitude"].to_numpy()
-    _, nearest = cKDTree(on_sphere(cell_lat, cell_lon)).query(on_sphere(place_lat, place_lon))
+    found = cKDTree(on_sphere(cell_lat, cell_lon)).query(on_sphere(place_lat, place_lon))[1]
+    nearest = np.asarray(found, dtype=np.int64)
     return nearest, great_circle_km(place_lat, place_lon, cell_lat[nearest], cell_lon[nearest])
 
 
