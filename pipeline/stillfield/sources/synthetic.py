@@ -25,7 +25,7 @@ if TYPE_CHECKING:
     from shapely.geometry.base import BaseGeometry
 
 KM_PER_DEGREE = 111.195
-LARGEST_LATITUDE = 45.0
+LARGEST_LATITUDE = 60.0
 LARGEST_CELL_DAYS = 200_000_000
 
 #: Variables and the decimals kept: no record is finer, and rounding hides the last bits that differ

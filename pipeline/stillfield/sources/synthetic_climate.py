@@ -248,7 +248,7 @@ def clear_sky_of_cells(ground: Ground, linke_turbidity: Floats, day_of_year: Flo
     """
     rows, row_of_cell = np.unique(ground.latitude, return_inverse=True)
     level, slope, bend = clear_sky_parabolas(rows, day_of_year)[:, :, row_of_cell]
-    irradiation: Floats = level + linke_turbidity * (slope + linke_turbidity * bend)
+    irradiation: Floats = np.exp(level + linke_turbidity * (slope + linke_turbidity * bend))
     return irradiation
 
 
