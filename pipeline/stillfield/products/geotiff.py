@@ -71,7 +71,7 @@ def write_geotiff(
         "quantity": variable, "meaning": str(described.attrs["long_name"]),
         "unit": str(described.attrs["units"]), "caution": caution,
     }
-    _write_image(Path(path), values, nodata, place, _band_names(bands, described), tags)
+    _write_image(Path(path), values, place, nodata=nodata, names=_band_names(bands, described), tags=tags)
 
 
 def _pixels(bands: xr.DataArray, variable: str) -> tuple[NDArray[Any], float]:
@@ -88,7 +88,7 @@ def _band_names(bands: xr.DataArray, described: xr.DataArray) -> list[str]:
 
 
 def _write_image(
-    path: Path, values: NDArray[Any], nodata: float, place: NorthUp, names: list[str], tags: dict[str, str]
+    path: Path, values: NDArray[Any], place: NorthUp, *, nodata: float, names: list[str], tags: dict[str, str]
 ) -> None:
     from rasterio.io import MemoryFile
     from rasterio.shutil import copy
