@@ -45,7 +45,8 @@ def test_a_degree_of_a_great_circle_is_the_same_in_every_direction() -> None:
 def test_a_village_on_a_sea_cell_takes_the_nearest_valid_one(monthly: xr.Dataset) -> None:
     ranked = rank_places(monthly, table(latitude=[10.05], longitude=[40.8]), max_cell_distance_km=120.0)
     row = ranked.iloc[0]
-    assert (row["cell_latitude"], row["cell_longitude"]) == (10.0, 40.0)
+    assert (row["cell_latitude_deg"], row["cell_longitude_deg"]) == (10.0, 40.0)
+    assert row["nearest_cell_missing"]
     expected = great_circle_km(np.array(10.05), np.array(40.8), np.array(10.0), np.array(40.0))
     assert row["cell_distance_km"] == pytest.approx(float(expected))
 
@@ -74,8 +75,8 @@ def test_area_is_need_over_the_worst_month(monthly: xr.Dataset) -> None:
     assert row["worst_month_yield_l_m2_day"] == pytest.approx(daily_mean.min())
     assert row["area_per_person_m2"] == pytest.approx(3.0 / daily_mean.min())
     assert row["area_village_m2"] == pytest.approx(200 * 3.0 / daily_mean.min())
-    assert row["area_per_person_m2_at_low_yield"] == pytest.approx(3.0 / (0.75 * daily_mean.min()))
-    assert row["area_per_person_m2_at_high_yield"] == pytest.approx(3.0 / (1.25 * daily_mean.min()))
+    assert row["area_per_person_at_low_yield_m2"] == pytest.approx(3.0 / (0.75 * daily_mean.min()))
+    assert row["area_per_person_at_high_yield_m2"] == pytest.approx(3.0 / (1.25 * daily_mean.min()))
 
 
 def test_order_of_input_does_not_matter_and_ties_share_a_rank(monthly: xr.Dataset) -> None:

@@ -67,7 +67,7 @@ def rank_places(
     Returns
     -------
     pandas.DataFrame
-        Ranked, first to visit first, every place kept; see `COLUMNS_TEXT` for the columns.
+        Ranked, first to visit first, every place kept; the columns are explained in `stillfield.products.place_columns`.
 
     Raises
     ------
@@ -81,10 +81,12 @@ def rank_places(
     a rank and stand in the order of name and id, so the order of the input does not matter.
     """
     used = _checked_weights(weights)
-    cells = _valid_cells(monthly)
+    every_cell, valid = _flat_cells(monthly)
+    cells = every_cell.isel(cell=np.flatnonzero(valid))
     nearest, distance = _nearest(places, cells)
     reached = distance <= max_cell_distance_km
-    table = _with_yields(places, cells, nearest, distance, reached)
+    substituted = ~valid[_nearest(places, every_cell)[0]]
+    table = _with_yields(places, cells, nearest, distance, reached, substituted)
     table = _with_area(table, litres_per_person_day)
     table["score"] = _score(table, reached, used)
     table["reason"] = np.where(
@@ -105,16 +107,18 @@ def _checked_weights(weights: Mapping[str, float] | None) -> dict[str, float]:
     return used
 
 
-def _valid_cells(monthly: xr.Dataset) -> xr.Dataset:
-    """One dimension ``cell`` holding only cells or sites whose every month is known."""
+def _flat_cells(monthly: xr.Dataset) -> tuple[xr.Dataset, NDArray[np.bool_]]:
+    """One dimension ``cell`` for cells or sites, and which of them know their every month."""
     known = monthly["worst_month"].notnull()
     space = list(known.dims)
     flat = monthly.stack(cell=space) if len(space) > 1 else monthly.rename({space[0]: "cell"})
     flat = flat.reset_index("cell") if len(space) > 1 else flat
-    keep = np.flatnonzero(flat["worst_month"].notnull().to_numpy())
-    if keep.size == 0:
-        raise PlacesError("no cell of the region has a whole year of yields", cure="Look at days_used in the rasters.")
-    return flat.isel(cell=keep)
+    valid = flat["worst_month"].notnull().to_numpy()
+    if not valid.any():
+        raise PlacesError(
+            "no cell of the region has a whole year of yields", cure="Look at days_used in the rasters."
+        )
+    return flat, valid
 
 
 def great_circle_km(
@@ -164,12 +168,15 @@ def _nearest(places: pd.DataFrame, cells: xr.Dataset) -> tuple[NDArray[np.int64]
 
 def _with_yields(
     places: pd.DataFrame, cells: xr.Dataset, nearest: NDArray[np.int64],
-    distance: NDArray[np.float64], reached: NDArray[np.bool_],
+    distance: NDArray[np.float64], reached: NDArray[np.bool_], substituted: NDArray[np.bool_],
 ) -> pd.DataFrame:
-    table = places.reset_index(drop=True).copy()
-    table["cell_latitude"] = cells["latitude"].to_numpy()[nearest]
-    table["cell_longitude"] = cells["longitude"].to_numpy()[nearest]
+    table = places.reset_index(drop=True).rename(
+        columns={"latitude": "latitude_deg", "longitude": "longitude_deg"}
+    )
+    table["cell_latitude_deg"] = cells["latitude"].to_numpy()[nearest]
+    table["cell_longitude_deg"] = cells["longitude"].to_numpy()[nearest]
     table["cell_distance_km"] = distance
+    table["nearest_cell_missing"] = substituted
     if "elevation" in cells and "elevation_m" in table:
         table["cell_height_difference_m"] = cells["elevation"].to_numpy()[nearest] - table["elevation_m"]
 
@@ -213,13 +220,13 @@ def _band_of_worst_month(
 
 def _with_area(table: pd.DataFrame, litres_per_person_day: float) -> pd.DataFrame:
     """Basin area sized on the worst month: central, and the range the condition band gives."""
-    table["litres_per_person_day"] = litres_per_person_day
-    for suffix, column in (
-        ("", "worst_month_yield_l_m2_day"), ("_at_low_yield", "worst_month_yield_low_l_m2_day"),
-        ("_at_high_yield", "worst_month_yield_high_l_m2_day"),
+    table["litres_per_person_day_l"] = litres_per_person_day
+    for end, column in (
+        ("", "worst_month_yield_l_m2_day"), ("at_low_yield_", "worst_month_yield_low_l_m2_day"),
+        ("at_high_yield_", "worst_month_yield_high_l_m2_day"),
     ):
         litres = table[column].where(table[column] > 0)
-        table[f"area_per_person_m2{suffix}"] = litres_per_person_day / litres
+        table[f"area_per_person_{end}m2"] = litres_per_person_day / litres
     if "population" in table:
         table["area_village_m2"] = table["area_per_person_m2"] * table["population"]
         table["need_l_day"] = litres_per_person_day * table["population"]
@@ -253,5 +260,5 @@ def _ordered(table: pd.DataFrame) -> pd.DataFrame:
     table = table.sort_values(["_score", "name", "id"], ascending=[False, True, True], kind="stable")
     table = table.drop(columns="_score").reset_index(drop=True)
     table["rank"] = table["rank"].astype("Int64")
-    front = ["rank", "name", "id", "score", "latitude", "longitude"]
+    front = ["rank", "name", "id", "score", "latitude_deg", "longitude_deg"]
     return table[[*front, *[column for column in table.columns if column not in front]]]

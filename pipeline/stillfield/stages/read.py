@@ -2,14 +2,20 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Any
 
 import xarray as xr
 
 from stillfield.errors import WeatherError
+from stillfield.products.manifest import digest_file, portable_name
 from stillfield.sources import open_source
+from stillfield.sources.locate import locate
+from stillfield.sources.places import read_places
+
+__all__ = ["Box", "describe_inputs", "read_places", "read_weather"]
 
 
 @dataclass(frozen=True)
@@ -73,3 +79,26 @@ def _cut(weather: xr.Dataset, box: Box) -> xr.Dataset:
             cure="Correct the box or the weather files.",
         )
     return cut
+
+
+def describe_inputs(files: Iterable[str], base: Path) -> dict[str, dict[str, Any]]:
+    """Identity of every input file: its name as given, digest and size.
+
+    Parameters
+    ----------
+    files : iterable of str
+        Paths or ``package:path`` names.
+    base : Path
+        Folder of the run file; names are told relative to it.
+
+    Returns
+    -------
+    dict
+        Name to ``{'sha256': str, 'bytes': int}``.
+    """
+    found: dict[str, dict[str, Any]] = {}
+    for name in files:
+        (path,) = locate([name])
+        shown = portable_name(name, base)
+        found[shown] = {"sha256": digest_file(path), "bytes": path.stat().st_size}
+    return found

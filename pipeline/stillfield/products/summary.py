@@ -1,0 +1,111 @@
+"""What a person reads when a run ends: the answer, how sure it is, and where the files are."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Sequence
+from dataclasses import dataclass
+from pathlib import Path
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+
+from stillfield.products.netcdf import MONTH_NAMES
+from stillfield.vocabulary import WATER_CAUTION
+
+_WIDTH = 100
+_BEST = 5
+
+
+@dataclass(frozen=True)
+class Summary:
+    """The end of a run in words.
+
+    Attributes
+    ----------
+    text : str
+        What is printed.
+    files : tuple of Path
+        Everything written, in reading order.
+    """
+
+    text: str
+    files: tuple[Path, ...]
+
+    def __str__(self) -> str:
+        """Text for a terminal."""
+        return self.text
+
+
+def summarise(
+    monthly: xr.Dataset, ranked: pd.DataFrame | None, *, title: str, method_line: str,
+    folder: Path, files: Sequence[Path], remarks: Sequence[str] = (),
+) -> Summary:
+    """Put the outcome of a run in words.
+
+    Parameters
+    ----------
+    monthly : xarray.Dataset
+        Monthly result.
+    ranked : pandas.DataFrame or None
+        Ranked places.
+    title, method_line : str
+        Name of the run; one line on method and still.
+    folder : Path
+        Where the files are.
+    files : sequence of Path
+        What was written.
+    remarks : sequence of str
+        Warnings and assumptions to repeat here.
+
+    Returns
+    -------
+    Summary
+    """
+    lines = [title, method_line, "", *_litres(monthly)]
+    if ranked is not None:
+        lines += ["", *_places(ranked)]
+    if remarks:
+        lines += ["", *[line for remark in remarks for line in textwrap.wrap(remark, _WIDTH, subsequent_indent="  ")]]
+    lines += ["", *textwrap.wrap(WATER_CAUTION, _WIDTH), "", f"{len(files)} files in {folder}"]
+    return Summary("\n".join(lines) + "\n", tuple(files))
+
+
+def _litres(monthly: xr.Dataset) -> list[str]:
+    annual = monthly["annual_yield"].to_numpy().ravel()
+    known = np.isfinite(annual)
+    if not known.any():
+        return ["No cell has a whole year of yields; look at days_used."]
+    worst = monthly["worst_month_yield"].to_numpy().ravel()[known]
+    low = monthly["annual_yield_low"].to_numpy().ravel()[known]
+    high = monthly["annual_yield_high"].to_numpy().ravel()[known]
+    rule = monthly["monthly_yield_rule"].sum("month", skipna=False).to_numpy().ravel()[known]
+    what = "sites" if "site" in monthly.dims else "cells"
+    return [
+        f"Litres per m2 of basin, median of {int(known.sum())} {what} (range over them):",
+        f"  a year        {_middle(annual[known])}   condition band {np.median(low):.0f} to {np.median(high):.0f}",
+        f"  worst month   {_middle(worst, 2)} a day",
+        f"  rule, a year  {_middle(rule)}   constant efficiency, for comparison",
+    ]
+
+
+def _middle(values: np.ndarray, decimals: int = 0) -> str:
+    return f"{np.median(values):.{decimals}f} ({values.min():.{decimals}f} to {values.max():.{decimals}f})"
+
+
+def _places(ranked: pd.DataFrame) -> list[str]:
+    first = ranked[ranked["rank"].notna()].head(_BEST)
+    lines = [f"First to visit, of {len(ranked)} places:"]
+    width = max([len(str(name)) for name in first["name"]] + [5])
+    for row in first.to_dict("records"):
+        month = MONTH_NAMES[int(row["worst_month"]) - 1]
+        lines.append(
+            f"  {row['rank']:>2}  {row['name']:<{width}}  {row['worst_month_yield_l_m2_day']:.2f} L a day and m2 in {month}, "
+            f"{row['area_per_person_m2']:.1f} m2 a person "
+            f"({row['area_per_person_at_high_yield_m2']:.1f} to {row['area_per_person_at_low_yield_m2']:.1f})"
+        )
+    without = int(ranked["rank"].isna().sum())
+    if without:
+        lines.append(f"  {without} places without litres; the reasons stand in places.csv.")
+    return lines

@@ -1,0 +1,98 @@
+"""The order of the stages, and nothing else."""
+
+from __future__ import annotations
+
+import logging
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from stillfield.methods.baselines import ConstantEfficiency
+from stillfield.methods.registry import get_method
+from stillfield.physics.still import Still
+from stillfield.products.summary import Summary, summarise
+from stillfield.settings.load import resolved_yaml
+from stillfield.settings.model import RunSettings
+from stillfield.stages.aggregate import aggregate
+from stillfield.stages.estimate import estimate
+from stillfield.stages.prepare import Prepared, prepare
+from stillfield.stages.rank import rank_places
+from stillfield.stages.read import Box, describe_inputs, read_places, read_weather
+from stillfield.stages.write import Results, write_results
+
+log = logging.getLogger(__name__)
+
+
+def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
+    """Do everything a run file asks for.
+
+    Parameters
+    ----------
+    settings : RunSettings
+        A checked run.
+    run_file : path
+        The file it came from; inputs are named relative to its folder.
+
+    Returns
+    -------
+    Summary
+        What to tell the person who waits. With several stills each has its own folder below the run's.
+
+    Raises
+    ------
+    StillfieldError
+        With what, where, got, wanted and cure.
+    """
+    places = None
+    if settings.places is not None:
+        places = read_places(settings.places.table.path, settings.places.columns.given())
+    log.info("reading the weather")
+    region = None if settings.region is None else Box(**settings.region.model_dump())
+    weather = read_weather(
+        settings.weather.kind, settings.weather.names, region=region, **settings.weather.options()
+    )
+    log.info("%s", weather.attrs.get("origin", ""))
+    prepared = prepare(weather, min_valid_hours=settings.missing.min_valid_hours)
+    files = list(settings.weather.names)
+    files += [str(named.path) for named in (settings.places and settings.places.table, settings.map.land) if named]
+    inputs = describe_inputs([*files, *(str(choice.path) for choice in settings.still)], Path(run_file).parent)
+    summaries = []
+    for still in settings.stills:
+        folder = settings.folder if len(settings.stills) == 1 else settings.folder / still.name
+        summaries.append(_one_still(settings, still, prepared, places=places, inputs=inputs, folder=folder))
+    return Summary(
+        "\n".join(summary.text for summary in summaries),
+        tuple(file for summary in summaries for file in summary.files),
+    )
+
+
+def _one_still(
+    settings: RunSettings, still: Still, prepared: Prepared, *, places: pd.DataFrame | None,
+    inputs: dict[str, dict[str, Any]], folder: Path,
+) -> Summary:
+    log.info("estimating %s by method %s", still.name, settings.method)
+    daily = estimate(
+        prepared.daily, still, get_method(settings.method), rule=ConstantEfficiency(settings.rule.efficiency),
+        steps=prepared.steps,
+    )
+    monthly = aggregate(daily, min_valid_days_share=settings.missing.min_valid_days_share)
+    ranked = None
+    if places is not None and settings.places is not None:
+        ranked = rank_places(
+            monthly, places, litres_per_person_day=settings.need.litres_per_person_day,
+            max_cell_distance_km=settings.places.max_cell_distance_km,
+            weights=settings.rank.weights.by_criterion(),
+        )
+    title = f"Solar still yield, {settings.name}"
+    line = f"Still {still.name}, {still.condition}; method {settings.method}."
+    remarks = (str(monthly.attrs.get("origin", "")), *map(str, monthly.attrs.get("conventions", [])))
+    log.info("writing to %s", folder)
+    files = write_results(
+        folder,
+        Results(
+            monthly, ranked, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
+            inputs, land=settings.map.land and settings.map.land.path, remarks=tuple(filter(None, remarks)),
+        ),
+    )
+    return summarise(monthly, ranked, title=title, method_line=line, folder=folder, files=files)

@@ -1,0 +1,199 @@
+"""Write: results to files, each whole or not at all, the manifest last.
+
+Everything is first written beside its final place under a temporary name; only when all of it is there are
+the files moved in, the manifest last. A folder with a manifest is therefore a finished run.
+"""
+
+from __future__ import annotations
+
+import shutil
+from collections.abc import Iterable, Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+import xarray as xr
+
+from stillfield.errors import OutputError
+from stillfield.products.grid import is_grid
+from stillfield.products.manifest import digest_dataset, digest_file, write_manifest
+from stillfield.products.netcdf import MONTH_NAMES, write_netcdf
+from stillfield.products.place_columns import PLACE_COLUMNS
+from stillfield.products.tables import CELL_COLUMNS, cells_frame, write_csv, write_notes
+from stillfield.vocabulary import WATER_CAUTION
+
+MANIFEST = "manifest.json"
+
+#: Variables that get a GeoTIFF of their own.
+RASTERS = ("monthly_yield", "monthly_yield_low", "monthly_yield_high", "annual_yield", "worst_month_yield")
+
+
+@dataclass(frozen=True)
+class Results:
+    """What a run found, and the words that travel with it.
+
+    Attributes
+    ----------
+    monthly : xarray.Dataset
+        As `aggregate` gives it.
+    ranked : pandas.DataFrame or None
+        As `rank` gives it.
+    title, method_line : str
+        Heading of the products, and one line on method and still.
+    resolved : str
+        Text of the resolved run file.
+    settings : object
+        The settings, for the manifest.
+    inputs : mapping
+        Identity of the input files.
+    land : path or None
+        Outline of the land for the maps; the shipped one without it.
+    remarks : list of str
+        Sentences on assumptions and warnings.
+    facts : mapping
+        Further sections of the manifest.
+    """
+
+    monthly: xr.Dataset
+    ranked: pd.DataFrame | None
+    title: str
+    method_line: str
+    resolved: str
+    settings: object
+    inputs: Mapping[str, Mapping[str, Any]]
+    land: Path | None = None
+    remarks: tuple[str, ...] = ()
+    facts: Mapping[str, Any] = field(default_factory=dict)
+
+
+def write_results(folder: Path, results: Results) -> list[Path]:
+    """Write every product of a run into its folder.
+
+    Parameters
+    ----------
+    folder : Path
+        The run's own folder; made if need be. Files of the same names are replaced.
+    results : Results
+        What to write.
+
+    Returns
+    -------
+    list of Path
+        The files, in the order in which a reader wants them.
+
+    Raises
+    ------
+    OutputError
+        If the folder cannot be written to.
+    """
+    with _staged(folder) as stage:
+        _write_rasters(stage, results)
+        _write_maps(stage, results)
+        _write_tables(stage, results)
+        (stage / "run.yaml").write_text(results.resolved, encoding="utf-8", newline="\n")
+        files = sorted(path.relative_to(stage) for path in stage.rglob("*") if path.is_file())
+        write_manifest(
+            stage / MANIFEST,
+            settings=results.settings,
+            inputs=results.inputs,
+            conventions=results.remarks,
+            digests=_digests(stage, files, results),
+            caution=WATER_CAUTION,
+            **results.facts,
+        )
+    return [folder / path for path in (*files, Path(MANIFEST))]
+
+
+@contextmanager
+def _staged(folder: Path) -> Iterator[Path]:
+    """Give a temporary folder inside `folder` whose files are moved in when the block ends well."""
+    stage = folder / ".unfinished"
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        shutil.rmtree(stage, ignore_errors=True)
+        stage.mkdir()
+        try:
+            yield stage
+            _move_in(stage, folder)
+        finally:
+            shutil.rmtree(stage, ignore_errors=True)
+    except OSError as error:
+        raise OutputError(
+            "cannot write the results", where=str(folder), got=error.strerror or str(error),
+            cure="Free the disk or the permissions, or choose another output.folder.",
+        ) from error
+
+
+def _move_in(stage: Path, folder: Path) -> None:
+    (folder / MANIFEST).unlink(missing_ok=True)
+    paths = sorted(path for path in stage.rglob("*") if path.is_file() and path.name != MANIFEST)
+    for path in (*paths, stage / MANIFEST):
+        target = folder / path.relative_to(stage)
+        target.parent.mkdir(parents=True, exist_ok=True)
+        path.replace(target)
+
+
+def _write_rasters(stage: Path, results: Results) -> None:
+    monthly = results.monthly
+    write_netcdf(
+        monthly, stage / "monthly_yield.nc", title=results.title, history=results.method_line
+    )
+    if is_grid(monthly):
+        from stillfield.products.geotiff import write_geotiff
+
+        for name in RASTERS:
+            write_geotiff(monthly, name, stage / f"{name}.tif")
+
+
+def _write_maps(stage: Path, results: Results) -> None:
+    from stillfield.products.page import Words
+
+    words = Words(results.title, results.method_line)
+    maps = stage / "maps"
+    maps.mkdir()
+    if not is_grid(results.monthly):
+        from stillfield.products.site_months import write_site_months
+
+        write_site_months(results.monthly, maps / "site_months.png", words=words)
+        return
+    from stillfield.products.maps import MapPlace, write_map_single, write_map_twelve_months
+
+    places: list[MapPlace] = []
+    if results.ranked is not None:
+        for latitude, longitude, rank in results.ranked[["latitude_deg", "longitude_deg", "rank"]].itertuples(
+            index=False
+        ):
+            places.append(MapPlace(latitude, longitude, None if pd.isna(rank) else int(rank)))
+    write_map_twelve_months(
+        results.monthly, maps / "monthly_yield.png", words=words, land=results.land, places=places
+    )
+    for name in ("annual_yield", "worst_month_yield", "worst_month"):
+        write_map_single(
+            results.monthly, name, maps / f"{name}.png", words=words, land=results.land, places=places
+        )
+
+
+def _write_tables(stage: Path, results: Results) -> None:
+    write_csv(cells_frame(results.monthly), stage / "cells.csv")
+    columns = list(CELL_COLUMNS)
+    if results.ranked is not None:
+        table = results.ranked.copy()
+        table["worst_month"] = [
+            None if pd.isna(month) else MONTH_NAMES[int(month) - 1] for month in table["worst_month"]
+        ]
+        present = [column for column in PLACE_COLUMNS if column.name in table]
+        write_csv(table, stage / "places.csv", columns=[column.name for column in present])
+        known = {column.name for column in present}
+        columns = present + [column for column in columns if column.name not in known]
+    write_notes(
+        stage / "READ-ME-FIRST.txt", columns, title=results.title,
+        remarks=(results.method_line, *results.remarks),
+    )
+
+
+def _digests(stage: Path, files: Iterable[Path], results: Results) -> dict[str, str]:
+    digests = {str(path.as_posix()): digest_file(stage / path) for path in files if path.suffix in (".csv", ".tif")}
+    digests["monthly"] = digest_dataset(results.monthly)
+    return digests
