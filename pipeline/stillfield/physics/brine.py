@@ -6,7 +6,6 @@ All relations hold for sea salt and are near enough for sodium chloride up to 20
 
 from __future__ import annotations
 
-
 import numpy as np
 from numpy.typing import NDArray
 

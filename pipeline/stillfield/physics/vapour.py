@@ -28,6 +28,10 @@ WAGNER_PRUSS = (
     (1.80122502, 7.5),
 )
 
+#: L = LATENT_BASE - LATENT_SLOPE T. [J kg-1], [J kg-1 K-1]
+LATENT_BASE = 2.501e6
+LATENT_SLOPE = 2361.0
+
 #: Range in which `ROOT_POLYNOMIAL` was fitted; colder or hotter is held at the end. [degC]
 ROOT_RANGE_C = (-40.0, 105.0)
 #: Coefficients of P**(1/8) in Pa**(1/8) as a polynomial of the temperature in degC, lowest power first.
@@ -150,7 +154,7 @@ def latent_heat(temperature: Field) -> Field:
     >>> round(float(latent_heat(20.0)) / 1e6, 2)
     2.45
     """
-    heat: Field = 2.501e6 - 2361.0 * np.asarray(temperature)
+    heat: Field = LATENT_BASE - LATENT_SLOPE * np.asarray(temperature)
     return heat
 
 

@@ -13,6 +13,9 @@ Field = float | NDArray[np.floating[Any]]
 
 #: Lowest height the log law of FAO-56 is used from; below it the logarithm soon turns negative. [m]
 LOWEST_HEIGHT_M = 0.5
+#: h_w = WIND_BASE + WIND_SLOPE v (Watmuff et al. 1977). [W m-2 K-1], [W s m-3 K-1]
+WIND_BASE = 2.8
+WIND_SLOPE = 3.0
 
 
 def wind_speed_at_2m(speed: Field, height_m: float) -> Field:
@@ -81,5 +84,5 @@ def wind_coefficient(speed: Field) -> Field:
     >>> round(float(wind_coefficient(2.0)), 3)
     8.8
     """
-    coefficient: Field = 2.8 + 3.0 * np.asarray(speed)
+    coefficient: Field = WIND_BASE + WIND_SLOPE * np.asarray(speed)
     return coefficient
