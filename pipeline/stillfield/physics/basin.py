@@ -249,20 +249,33 @@ def basin_gain(
     0.902
     """
     diffuse = diffuse_gain(still, albedo)
-    passed, absorbed = beam_gain(still, sun, latitude)
-    # Without sun there is no direction to put the circumsolar light in: it stays with the even sky.
-    circumsolar = np.clip(dni / sun.normal_outside, 0.0, 1.0) * (sun.up > 0.0)
-    circumsolar *= dhi
-    even = dhi - circumsolar
-    circumsolar /= np.maximum(sun.up, LEAST_COS_ZENITH)
-    circumsolar += dni  # the whole beam from now on
-    passed *= circumsolar
+    even = np.array(dhi, dtype=float)
+    passed = diffuse.ground * ghi
+    kept = diffuse.ground_absorbed * ghi
+    # Half of all steps are night in every cell; the beam is worked out for the others only.
+    day = np.flatnonzero(sun.up.any(axis=1))
+    by_day = sun.take(day)
+    beam, circumsolar = _beam_and_circumsolar(by_day, dni[day], even[day])
+    even[day] -= circumsolar
+    beam_passed, beam_kept = beam_gain(still, by_day, latitude)
+    beam_passed *= beam
+    beam_kept *= beam
+    passed[day] += beam_passed
+    kept[day] += beam_kept
     passed += diffuse.sky * even
-    passed += diffuse.ground * ghi
-    absorbed *= circumsolar
-    absorbed += diffuse.sky_absorbed * even
-    absorbed += diffuse.ground_absorbed * ghi
-    return BasinGain(passed, absorbed)
+    kept += diffuse.sky_absorbed * even
+    return BasinGain(passed, kept)
+
+
+def _beam_and_circumsolar(sun: SunSteps, dni: Array, dhi: Array) -> tuple[Array, Array]:
+    """Irradiance of the whole beam on a plane facing the sun, and its circumsolar part on the horizontal."""
+    anisotropy = np.clip(dni / sun.normal_outside, 0.0, 1.0)
+    # Without sun there is no direction to put the circumsolar light in: it stays with the even sky.
+    anisotropy *= sun.up > 0.0
+    anisotropy *= dhi
+    beam = anisotropy / np.maximum(sun.up, LEAST_COS_ZENITH)
+    beam += dni
+    return beam, anisotropy
 
 
 def absorbed(transmitted: Array, still: Still) -> Array:

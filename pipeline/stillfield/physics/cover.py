@@ -145,6 +145,7 @@ def normal_transmittance(cover: CoverMaterial) -> float:
     return float(transmittance_and_absorptance(1.0, cover)[0])
 
 
+@lru_cache(maxsize=256)
 def diffuse_transmittance_and_absorptance(
     cover: CoverMaterial, tilt_deg: float, part: Part = "sky"
 ) -> tuple[float, float]:

@@ -278,12 +278,11 @@ class SunSteps:
         """Compass direction of the sun in degrees, clockwise from north."""
         return np.asarray(np.degrees(np.arctan2(self.east, self.north)) % 360.0)
 
-    def rows(self, start: int, stop: int) -> SunSteps:
-        """Return the steps from `start` up to `stop` as views."""
-        pick = slice(start, stop)
-        return SunSteps(
-            self.east[pick], self.north[pick], self.up[pick], self.sunlit[pick], self.normal_outside[pick]
-        )
+    def take(self, steps: NDArray[np.integer[Any]]) -> SunSteps:
+        """Return the steps of the given numbers."""
+        parts = (self.east, self.north, self.up, self.sunlit, self.normal_outside)
+        east, north, up, sunlit, outside = (part[steps] for part in parts)
+        return SunSteps(east, north, up, sunlit, outside)
 
 
 def sun_over_steps(
@@ -339,17 +338,28 @@ def sun_over_steps(
     )
     # Mean of sin and cos of the hour angle over an interval: the value at its middle times sin(h) / h; the
     # series is good to 1e-6 for the half of a 6 h step.
-    square = half * half
-    shrink = 1.0 - square / 6.0 * (1.0 - square / 20.0 * (1.0 - square / 42.0))
-    mean_cos = np.cos(middle) * shrink
-    east = np.sin(middle)
-    east *= -np.cos(delta) * shrink
-    up = np.sin(phi) * np.sin(delta) + np.cos(phi) * np.cos(delta) * mean_cos
-    north = np.cos(phi) * np.sin(delta) - np.sin(phi) * np.cos(delta) * mean_cos
+    half *= half  # the square from here on
+    shrink = half * (-1.0 / 42.0)
+    for divisor in (20.0, 6.0):
+        shrink += 1.0
+        shrink *= half
+        shrink *= -1.0 / divisor
+    shrink += 1.0
+    shrink *= sunlit > 0.0
+    mean_cos = np.cos(middle)
+    mean_cos *= shrink
+    east = np.sin(middle, out=middle)
+    east *= shrink
+    east *= -np.cos(delta)
+    lit = shrink > 0.0
+    up = mean_cos * (np.cos(phi) * np.cos(delta))
+    up += np.sin(phi) * np.sin(delta)
     np.maximum(up, 0.0, out=up)
-    dark = sunlit <= 0.0
-    for part in (east, north, up):
-        part[dark] = 0.0
+    up *= lit
+    north = mean_cos
+    north *= -np.sin(phi) * np.cos(delta)
+    north += np.cos(phi) * np.sin(delta)
+    north *= lit
     shape = (len(day) * steps_per_day, len(phi))
     outside = np.repeat(normal_irradiance_outside(day), steps_per_day)[:, None]
     east, north, up, sunlit = (part.reshape(shape) for part in (east, north, up, sunlit))
@@ -367,10 +377,14 @@ def _sunlit_part(
     clock = (np.arange(steps_per_day) + 0.5) * (24.0 / steps_per_day)
     angle = (clock[:, None] + shift_hours - 12.0) * (np.pi / 12.0)
     # A clock far from solar time may push a step beyond midnight: bring it back to -pi..pi.
-    angle = angle - 2.0 * np.pi * np.round(angle / (2.0 * np.pi))
+    if np.abs(angle).max() > np.pi:
+        angle = angle - 2.0 * np.pi * np.round(angle / (2.0 * np.pi))
     sunset = sunset_hour_angle(latitude, delta)
-    angle = np.broadcast_to(angle, np.broadcast_shapes(angle.shape, sunset.shape))
-    first = np.clip(angle - width / 2.0, -sunset, sunset)
-    last = np.clip(angle + width / 2.0, -sunset, sunset)
-    half = (last - first) / 2.0
-    return (first + last) / 2.0, half, half * (2.0 / width)
+    first = np.maximum(angle - width / 2.0, -sunset)
+    last = np.minimum(angle + width / 2.0, sunset)
+    half = last - first
+    np.maximum(half, 0.0, out=half)
+    half *= 0.5
+    last += first
+    last *= 0.5
+    return last, half, half * (2.0 / width)
