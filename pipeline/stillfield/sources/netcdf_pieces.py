@@ -1,0 +1,280 @@
+"""One variable of one NetCDF file on canonical axes, and the joining of such pieces along time."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from math import prod
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import xarray as xr
+
+from stillfield.errors import WeatherError
+from stillfield.sources.grid_axes import Axes, clean_degrees, find_axes, latitude_order, longitude_order, snapped
+from stillfield.sources.recognise import Choice, Found, recognise
+
+#: Numbers that stand for "missing" in files that do not declare them.
+_SENTINELS = (-999.0, -9999.0)
+_IMPOSSIBLY_LARGE = 1e14
+#: Size of the blocks weather is read in. [bytes]
+_BLOCK_BYTES = 64 * 2**20
+
+
+@dataclass(frozen=True)
+class Piece:
+    """One variable of one file: values as in the file, axes canonical.
+
+    Attributes
+    ----------
+    found : Found
+        Role, unit and meaning.
+    path : str
+        File, for errors.
+    placed : {'bounds', None}
+        'bounds' when time is already the lower time bound.
+    values : DataArray
+        Dims time and latitude, longitude or site; lazy; missing values NaN.
+    notes : tuple of str
+        Sentences for the conventions.
+    """
+
+    found: Found
+    path: str
+    placed: str | None
+    values: xr.DataArray
+    notes: tuple[str, ...]
+
+
+def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
+    """Open one file and take the variables that play a role.
+
+    Parameters
+    ----------
+    path : Path
+        A whole NetCDF file.
+    choices : mapping of str to Choice
+        What the run file says.
+
+    Returns
+    -------
+    list of Piece
+        Empty when the file holds nothing of use.
+
+    Raises
+    ------
+    WeatherError
+        If the file cannot be opened or its axes cannot be used.
+    """
+    where = str(path)
+    weather = _open(path)
+    weather, notes = _one_version(weather)
+    axes = find_axes(weather, where=where)
+    if weather[axes.time].size == 0:
+        raise WeatherError("the file holds no times", where=where, got="0 records", wanted="at least one",
+                           cure="Its writer did not finish; get it again.")
+    keep = _core_dims(weather, axes)
+    usable = frozenset(
+        str(name) for name, variable in weather.variables.items()
+        if np.issubdtype(variable.dtype, np.number)
+        and all(size == 1 or dim in keep for dim, size in variable.sizes.items())
+    )
+    found = recognise(weather, choices, usable, where=where)
+    return [_piece(weather, axes, one, path, notes) for one in found]
+
+
+def _open(path: Path) -> xr.Dataset:
+    try:
+        return xr.open_dataset(path, engine="netcdf4", decode_timedelta=False, cache=False)
+    except Exception as fault:  # netCDF4, HDF5 and the time decoder each raise their own kinds
+        raise WeatherError("the file cannot be read", where=str(path), got=" ".join(str(fault).split())[:160],
+                           cure="It is broken or cut off, or its time axis is not CF; get it again or correct it.",
+                           ) from fault
+
+
+def _one_version(weather: xr.Dataset) -> tuple[xr.Dataset, tuple[str, ...]]:
+    """Final and preliminary weather on an `expver` dimension, joined: final first."""
+    if "expver" not in weather.dims:
+        return weather, ()
+    final = weather.isel(expver=0, drop=True)
+    for i in range(1, weather.sizes["expver"]):
+        final = final.combine_first(weather.isel(expver=i, drop=True))
+    return final, ("Final and preliminary weather (expver) were joined, final first.",)
+
+
+def _core_dims(weather: xr.Dataset, axes: Axes) -> set[str]:
+    names = (axes.latitude, axes.longitude, axes.time)
+    return {str(dim) for name in names for dim in weather[name].dims}
+
+
+def _piece(weather: xr.Dataset, axes: Axes, found: Found, path: Path, notes: tuple[str, ...]) -> Piece:
+    variable = weather.variables[found.name]
+    core = _core_dims(weather, axes)
+    spare = [dim for dim, size in variable.sizes.items() if dim not in core and size == 1]
+    variable = variable.isel(dict.fromkeys(spare, 0))
+    time, placed, hours = _time_of(weather, axes, found, where=str(path))
+    time_dim = str(next(iter(weather[axes.time].dims), "time"))
+    if time_dim not in variable.dims:
+        if weather[axes.time].size != 1:
+            raise WeatherError(f"variable '{found.name}' has no time", where=str(path))
+        variable = xr.Variable((time_dim, *variable.dims), variable.data[np.newaxis], variable.attrs)
+    values = _lazy(variable, time_dim)
+    values, said = _on_cells(values, weather, axes, time_dim, where=str(path))
+    values = values.assign_coords(time=("time", time)).assign_attrs(bounds_hours=hours)
+    return Piece(found, str(path), placed, _masked(values), notes + said)
+
+
+def _time_of(weather: xr.Dataset, axes: Axes, found: Found, *, where: str) -> tuple[Any, str | None, float]:
+    """Time stamps, moved to the lower bound where the file has time bounds and the variable is no instant."""
+    time = weather[axes.time]
+    stamps = np.atleast_1d(time.values)
+    bounds_name = str(time.attrs.get("bounds", time.encoding.get("bounds", "")))
+    bounds = weather.get(bounds_name) if bounds_name else None
+    if bounds is None or "time: point" in found.cell_methods or bounds.size != 2 * stamps.size:
+        return stamps, None, 0.0
+    edges = bounds.values.reshape(-1, 2)
+    lengths = np.array([_hours(b - a) for a, b in edges])
+    if lengths.min() <= 0.0:
+        raise WeatherError("time bounds are empty or reversed", where=where,
+                           got=f"{edges[int(lengths.argmin())][0]} to {edges[int(lengths.argmin())][1]}")
+    return edges[:, 0], "bounds", float(lengths[0])
+
+
+def _hours(span: Any) -> float:
+    seconds = span / np.timedelta64(1, "s") if isinstance(span, np.timedelta64) else span.total_seconds()
+    return float(seconds) / 3600.0
+
+
+def _lazy(variable: xr.Variable, time_dim: str) -> xr.DataArray:
+    """Variable in blocks of whole stored chunks, about `_BLOCK_BYTES` each, growing along time first."""
+    stored = variable.encoding.get("chunksizes") or None
+    sizes = dict(variable.sizes)
+    if stored is None or len(stored) != len(sizes):
+        chunks = dict(sizes)
+        row = variable.dtype.itemsize * prod(size for dim, size in sizes.items() if dim != time_dim)
+        chunks[time_dim] = max(1, min(sizes[time_dim], _BLOCK_BYTES // max(row, 1)))
+    else:
+        chunks = dict(zip(sizes, stored, strict=True))
+        for dim in (time_dim, *(dim for dim in reversed(list(sizes)) if dim != time_dim)):
+            room = _BLOCK_BYTES // (variable.dtype.itemsize * prod(chunks.values()))
+            chunks[dim] = min(sizes[dim], chunks[dim] * max(1, room))
+    return xr.DataArray(variable.chunk(chunks))
+
+
+def _on_cells(
+    values: xr.DataArray, weather: xr.Dataset, axes: Axes, time_dim: str, *, where: str
+) -> tuple[xr.DataArray, tuple[str, ...]]:
+    latitude, longitude = (clean_degrees(weather[name].values) for name in (axes.latitude, axes.longitude))
+    if axes.site_dim is not None:
+        values = values.rename({time_dim: "time", axes.site_dim: "site"} if time_dim != axes.site_dim else {})
+        return _at_sites(values, weather, axes, latitude, longitude), ()
+    renamed = {time_dim: "time"}
+    for name, axis in ((axes.latitude, "latitude"), (axes.longitude, "longitude")):
+        if weather[name].ndim == 0:
+            values = values.expand_dims(axis)
+        else:
+            renamed[str(weather[name].dims[0])] = axis
+    values = values.rename({old: new for old, new in renamed.items() if old != new and old in values.dims})
+    for axis in ("latitude", "longitude"):
+        if axis not in values.dims:
+            values = values.expand_dims(axis)
+    rows = latitude_order(latitude, where=where)
+    columns, east, notes = longitude_order(longitude, where=where)
+    values = values.transpose("time", "latitude", "longitude")
+    values = values.isel(latitude=_slice(rows), longitude=_slice(columns))
+    return values.assign_coords(latitude=latitude[rows], longitude=east), tuple(notes)
+
+
+def _slice(order: Any) -> Any:
+    """A slice where the order is a plain run, which keeps blocks as they are stored."""
+    steps = np.diff(order)
+    if order.size > 1 and (steps == 1).all():
+        return slice(int(order[0]), int(order[-1]) + 1)
+    if order.size > 1 and (steps == -1).all():
+        return slice(int(order[0]), None if order[-1] == 0 else int(order[-1]) - 1, -1)
+    return order
+
+
+def _at_sites(values: xr.DataArray, weather: xr.Dataset, axes: Axes, latitude: Any, longitude: Any) -> xr.DataArray:
+    names = next((variable for variable in weather.variables.values()
+                  if variable.attrs.get("cf_role") == "timeseries_id" and variable.size == latitude.size), None)
+    raw = np.arange(latitude.size) if names is None else names.values.ravel()
+    ids = [one.decode() if isinstance(one, bytes) else str(one) for one in raw]
+    wrapped = clean_degrees((longitude + 180.0) % 360.0 - 180.0)
+    return values.transpose("time", "site").assign_coords(
+        site=ids, latitude=("site", latitude), longitude=("site", wrapped)
+    )
+
+
+def _masked(values: xr.DataArray) -> xr.DataArray:
+    """Values as floats, undeclared sentinels missing."""
+    kind = values.dtype if np.issubdtype(values.dtype, np.floating) else np.dtype(np.float64)
+    masked: xr.DataArray = xr.apply_ufunc(
+        _mask_block, values, dask="parallelized", output_dtypes=[kind], keep_attrs=True
+    )
+    return masked
+
+
+def _mask_block(block: Any) -> Any:
+    block = block if np.issubdtype(block.dtype, np.floating) else block.astype(np.float64)
+    with np.errstate(invalid="ignore"):
+        bad = np.abs(block) >= _IMPOSSIBLY_LARGE
+        for sentinel in _SENTINELS:
+            bad |= block == sentinel
+    return np.where(bad, block.dtype.type(np.nan), block) if bad.any() else block
+
+
+def join_pieces(pieces: Sequence[Piece]) -> xr.DataArray:
+    """Join pieces of one role along time.
+
+    Parameters
+    ----------
+    pieces : sequence of Piece
+        Of one role, any order.
+
+    Returns
+    -------
+    DataArray
+
+    Raises
+    ------
+    WeatherError
+        If the pieces differ in unit, kind of stamp or cells, or a time comes twice.
+    """
+    ordered = sorted(pieces, key=lambda piece: piece.values.indexes["time"].min())
+    first = ordered[0]
+    parts = [first.values, *(snapped(other.values, first.values) for other in ordered[1:])]
+    for other, values in zip(ordered[1:], parts[1:], strict=True):
+        _check_alike(first, other, values)
+    joined = first.values if len(ordered) == 1 else xr.concat(
+        parts, dim="time", join="exact", combine_attrs="override",
+        coords="minimal", compat="override", data_vars="all",
+    )
+    index = joined.indexes["time"]
+    if not index.is_monotonic_increasing:
+        joined = joined.sortby("time")
+        index = joined.indexes["time"]
+    if index.has_duplicates:
+        twice = index[index.duplicated()][0]
+        holders = [piece.path for piece in ordered if twice in piece.values.indexes["time"]]
+        raise WeatherError("a time comes twice", where=" and ".join(holders[:2]), got=str(twice)[:16],
+                           cure="Leave out one of the overlapping files.")
+    return joined
+
+
+def _check_alike(first: Piece, other: Piece, values: xr.DataArray) -> None:
+    where = f"{first.path} and {other.path}"
+    if first.found.units != other.found.units or first.found.name != other.found.name:
+        raise WeatherError(
+            f"files disagree about {first.found.role}", where=where,
+            got=f"'{first.found.name}' in '{first.found.units}' and '{other.found.name}' in '{other.found.units}'",
+            wanted="one variable in one unit", cure="Run them apart, or choose the variable under `variables`.",
+        )
+    if first.placed != other.placed:
+        raise WeatherError("only some of the files have time bounds", where=where, cure="Make them alike.")
+    for axis in set(first.values.dims) - {"time"}:
+        if not first.values.indexes[axis].equals(values.indexes[axis]):
+            raise WeatherError(f"files lie on different cells ({axis})", where=where,
+                               got=f"{first.values.sizes[axis]} and {values.sizes[axis]} values",
+                               cure="Cut or regrid them to one grid first.")
