@@ -68,8 +68,16 @@ def decode_topojson(topology: dict[str, Any], name: str) -> tuple[Polygon, ...]:
     polygons = []
     for geometry in topology["objects"][name]["geometries"]:
         members = [geometry["arcs"]] if geometry["type"] == "Polygon" else geometry["arcs"]
-        polygons += [tuple(ring(indices) for indices in member) for member in members]
+        polygons += [_same_turn(tuple(ring(indices) for indices in member)) for member in members]
     return tuple(polygons)
+
+
+def _same_turn(polygon: Polygon) -> Polygon:
+    """Move holes by whole turns to where the outer ring is."""
+    west, east = polygon[0][:, 0].min(), polygon[0][:, 0].max()
+    middles = [(ring[:, 0].min() + ring[:, 0].max()) / 2 for ring in polygon]
+    turns = [np.ceil((west - middle) / _TURN) if not west <= middle <= east else 0.0 for middle in middles]
+    return tuple(ring + np.array([turn * _TURN, 0.0]) for ring, turn in zip(polygon, turns, strict=True))
 
 
 @cache

@@ -187,6 +187,6 @@ def _even_step(centres: NDArray[np.float64], name: str) -> float | None:
     if off > _UNEVEN_SHARE * abs(step):
         raise OutputError(
             "uneven spacing cannot be written as a raster", where=name,
-            got=f"a centre {off:.4g} deg off an even spacing of {abs(step):.4g} deg",
+            got=f"steps from {np.abs(np.diff(centres)).min():.4g} to {np.abs(np.diff(centres)).max():.4g} deg",
             cure="Take the NetCDF file, which keeps the true cells, or bring the weather to an even grid.")
     return float(abs(step))

@@ -115,7 +115,8 @@ def write_netcdf(
     ...         print(back["annual_yield"].attrs["units"], back.attrs["Conventions"])
     L m-2 year-1 CF-1.11
     """
-    described = described_dataset(dataset)
+    # Loaded first: lazy blocks would be laid down in the order in which they happen to be finished.
+    described = described_dataset(dataset).load()
     described.attrs = {
         "Conventions": "CF-1.11",
         "title": title,

@@ -20,7 +20,7 @@ from stillfield.products.netcdf import MONTH_NAMES
 from stillfield.vocabulary import WATER_CAUTION
 
 #: A spreadsheet takes text that starts with one of these for a formula or a command.
-_DANGEROUS = ("=", "+", "-", "@", "\t", "\r")
+_DANGEROUS = ("=", "+", "-", "@", "\t", "\r", "\n")
 
 #: Decimals by the unit at the end of a column name; the first that fits counts.
 _DECIMALS: tuple[tuple[tuple[str, ...], int], ...] = (
@@ -223,7 +223,9 @@ def _cell(value: object, decimals: int) -> str:
 
 
 def _harmless(text: str) -> str:
-    return f"'{text}" if text.startswith(_DANGEROUS) else text
+    safe = f"'{text}" if text.startswith(_DANGEROUS) else text
+    # A lone carriage return would break the row: the csv writer quotes only its own line ends.
+    return safe.replace("\r\n", "\n").replace("\r", "\n")
 
 
 def write_notes(
