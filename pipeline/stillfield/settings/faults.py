@@ -75,7 +75,7 @@ def _translate(error: ValidationError, model: type[BaseModel], document: Documen
         messages = parts if parts is not None else [_sentence(details, place, schema)]
         line, key = document.line_of(place.path), show_path(place.path)
         faults.extend(Fault(line, key, message) for message in messages)
-    return faults
+    return list(dict.fromkeys(faults))
 
 
 def _at_the_kind(details: ErrorDetails) -> ErrorDetails:
@@ -106,6 +106,8 @@ def _find(loc: tuple[str | int, ...], root: Schema, data: Any) -> _Place:
         if step in kinds and not (isinstance(data, dict) and step in data):
             node = group = _resolve({"$ref": kinds[step]}, root)
             continue
+        if isinstance(step, int) and isinstance(data, list) and step >= len(data):
+            break  # an item that a list of fixed length lacks: the list is at fault
         known = isinstance(data, dict) and (step in data or (position == len(loc) - 1 and step != _KEY_ITSELF))
         if known or (isinstance(step, int) and isinstance(data, list)):
             path.append(step)
@@ -156,7 +158,7 @@ def _sentence(details: ErrorDetails, place: _Place, root: Schema) -> str:
     kind, value = details["type"], details["input"]
     if details["loc"][-1:] == (_KEY_ITSELF,):
         return f"unknown key{_known_name(str(value), place)}"
-    if kind == "missing":
+    if kind == "missing" and isinstance(value, dict):
         return f"is missing{_meaning(place.expected)}"
     if kind == "extra_forbidden":
         return f"unknown key{_known_key(place, root)}"
@@ -164,8 +166,16 @@ def _sentence(details: ErrorDetails, place: _Place, root: Schema) -> str:
         return details["msg"]
     if "enum" in place.expected:
         return not_a_choice(value, place.expected["enum"])
-    got = f"{len(value)} items" if kind in ("too_short", "too_long") else show_value(value)
+    got = _count(value) if kind in _WRONG_LENGTH else show_value(value)
     return f"should be {_expectation(place.expected, details)} (got {got}{_cure(value, place.expected)})"
+
+
+#: Errors about the number of items in a list.
+_WRONG_LENGTH = ("too_short", "too_long", "missing")
+
+
+def _count(items: Any) -> str:
+    return f"{len(items)} item{'' if len(items) == 1 else 's'}"
 
 
 def _meaning(expected: Schema) -> str:
@@ -197,9 +207,9 @@ def _known_name(name: str, place: _Place) -> str:
 
 
 def _all_keys(node: Schema, root: Schema, above: tuple[str, ...]) -> Iterable[tuple[str, str]]:
-    """Every key of the schema with its path; paths through lists are left out."""
+    """Every key of the schema with its path."""
     node = _resolve(node, root)
-    for branch in node.get("oneOf", []):
+    for branch in (*node.get("oneOf", []), *([node["items"]] if node.get("items") else [])):
         yield from _all_keys(branch, root, above)
     for key, child in node.get("properties", {}).items():
         yield key, ".".join((*above, key))
@@ -243,7 +253,7 @@ def _expectation(expected: Schema, details: ErrorDetails) -> str:
     kind = expected.get("type", "")
     if kind in ("number", "integer"):
         return _bounds(expected, _NOUNS[kind], details["input"])
-    if details["type"] in ("too_short", "too_long"):
+    if details["type"] in _WRONG_LENGTH:
         expected = _branch(expected, "array", {})
         return f"a list of {_span(expected.get('minItems', 0), expected.get('maxItems'))}"
     if details["type"].startswith("string_too"):

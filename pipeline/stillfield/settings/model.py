@@ -11,7 +11,9 @@ from pydantic import (
     Field,
     GetPydanticSchema,
     PlainSerializer,
+    ValidationError,
     WithJsonSchema,
+    field_serializer,
     field_validator,
     model_validator,
 )
@@ -157,16 +159,22 @@ class Output(Group):
     """Where results go."""
 
     folder: str = Field(
-        "outputs", min_length=1, max_length=500,
+        "outputs",
         description="Folder under which the run's own folder is made, from the working directory",
     )
+
+    @field_serializer("folder")
+    def _told(self, folder: str) -> str:
+        return shown(folder)
 
     @field_validator("folder")
     @classmethod
     def _usable(cls, folder: str) -> str:
+        if not folder.strip():
+            raise refuse("should name a folder (got an empty text)")
         try:
             is_file = Path(folder).is_file()
-        except ValueError:
+        except (OSError, ValueError):
             raise refuse(f"cannot be used as a folder name (got '{harmless(folder)}')") from None
         if is_file:
             raise refuse(f"'{harmless(folder)}' is a file, not a folder")
@@ -239,5 +247,16 @@ class RunSettings(Group):
         return Path(self.output.folder).expanduser() / folder_name(self.name)
 
     def with_output(self, folder: str) -> RunSettings:
-        """Return the same run with its results under another `folder`."""
-        return self.model_copy(update={"output": Output(folder=folder)})
+        """Return the same run with its results under another `folder`.
+
+        Raises
+        ------
+        StillfieldError
+            When `folder` cannot be one.
+        """
+        try:
+            output = Output(folder=folder)
+        except ValidationError as error:
+            said = error.errors(include_url=False)[0]["msg"]
+            raise StillfieldError(f"the output folder {said}") from None
+        return self.model_copy(update={"output": output})

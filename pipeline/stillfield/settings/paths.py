@@ -52,6 +52,15 @@ class InputFiles:
     given: str
     paths: tuple[Path, ...]
 
+    @property
+    def names(self) -> tuple[str, ...]:
+        """The files as text: ``package:path`` as given, so that no output learns where a package lies."""
+        in_package = _PACKAGE_FILE.fullmatch(self.given)
+        if in_package:
+            inside = Path(in_package[2]).parent
+            return tuple(f"{in_package[1]}:{(inside / path.name).as_posix()}" for path in self.paths)
+        return tuple(str(path) for path in self.paths)
+
 
 def refuse(message: str) -> PydanticCustomError:
     """Fault with `message` taken as it is, for validators to raise."""
@@ -81,11 +90,13 @@ def find_files(given: str, folder: Path) -> InputFiles:
     as it is.
     """
     path = _locate(given, folder)
+    if path.is_dir() and path.suffix == ".zarr":
+        return InputFiles(given, (path,))
     if not _GLOB.search(given) or path.exists():
         return InputFiles(given, (find_file(given, folder).path,))
     found = glob.glob(str(path), recursive=True)  # noqa: PTH207 (Path.glob takes no absolute pattern)
     matches = sorted(Path(match) for match in found)
-    files = tuple(match for match in matches if match.is_file())
+    files = tuple(match for match in matches if match.is_file() or match.suffix == ".zarr")
     if not files:
         raise refuse(f"no file matches '{harmless(given)}'{_nearest_folder(path, given, folder)}")
     return InputFiles(given, files)

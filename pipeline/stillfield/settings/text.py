@@ -16,6 +16,7 @@ from typing import Any
 
 from ruamel.yaml import YAML
 from ruamel.yaml.error import MarkedYAMLError, YAMLError
+from ruamel.yaml.events import CollectionEndEvent, CollectionStartEvent
 from ruamel.yaml.nodes import MappingNode, Node, ScalarNode, SequenceNode
 from ruamel.yaml.reader import ReaderError
 
@@ -28,6 +29,8 @@ KeyPath = tuple[str | int, ...]
 MAX_BYTES = 262_144
 #: Values after aliases are followed; repeated aliases would otherwise grow without bound.
 MAX_VALUES = 10_000
+#: Groups within groups; run files need five.
+MAX_DEPTH = 40
 
 _NULL = re.compile(r"null|Null|NULL|~|")
 _TRUE = re.compile(r"true|True|TRUE")
@@ -156,14 +159,13 @@ def parse_text(text: str, source: str = "text") -> Document:
         document.data = _Builder(document).mapping(root, ())
     except _UnusableError as stop:
         raise RunFileError(source, [stop.fault]) from None
-    except RecursionError:
-        raise RunFileError(source, [Fault(None, "", "is nested too deeply")]) from None
     return document
 
 
 def _compose(text: str) -> Node | None:
     """Parse `text` into nodes with their lines; every syntax fault becomes one plain sentence."""
     try:
+        _refuse_excess(text)
         root: Node | None = YAML(typ="safe", pure=True).compose(text)
     except ReaderError as error:
         line = text.count("\n", 0, error.position) + 1
@@ -173,6 +175,20 @@ def _compose(text: str) -> Node | None:
     except YAMLError as error:
         raise _UnusableError(None, f"is not YAML: {str(error).splitlines()[0]}") from None
     return root
+
+
+def _refuse_excess(text: str) -> None:
+    """Walk through `text` once without building anything, and stop where it is too deep or too long.
+
+    The parser's time grows with the square of the depth, so depth is stopped before it is parsed to its end.
+    """
+    depth = 0
+    for count, event in enumerate(YAML(typ="safe", pure=True).parse(text)):
+        depth += isinstance(event, CollectionStartEvent) - isinstance(event, CollectionEndEvent)
+        if depth > MAX_DEPTH:
+            raise _UnusableError(int(event.start_mark.line) + 1, f"is nested more than {MAX_DEPTH} levels deep")
+        if count > 2 * MAX_VALUES:
+            raise _UnusableError(int(event.start_mark.line) + 1, f"stands for more than {MAX_VALUES} values")
 
 
 def _plain_syntax_fault(error: MarkedYAMLError) -> tuple[int | None, str]:

@@ -12,7 +12,7 @@ from stillfield.settings.paths import FileKey, FilesKey, InputFiles, refuse
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
 
 #: Formats of typical-year files.
-FORMATS = ("auto", "tmy2", "tmy3", "epw", "pvgis-csv", "pvgis-json")
+FORMATS = ("auto", "epw", "tmy2", "tmy3", "pvgis-csv", "pvgis-json", "nsrdb")
 
 #: What a value of the file stands for; needed where the unit alone does not say it.
 MEANS = (
@@ -69,14 +69,26 @@ class FileWeather(Group):
         """Every file, patterns followed, in the order of the run file."""
         return tuple(path for entry in self.files for path in entry.paths)
 
+    @property
+    def names(self) -> tuple[str, ...]:
+        """Every file as the sources take it: a path, or ``package:path`` as given."""
+        return tuple(name for entry in self.files for name in entry.names)
+
 
 class TypicalYearWeather(FileWeather):
     """Typical years of single sites, one file per site."""
 
     kind: Literal["typical-year"]
     format: Annotated[str, OneOf(FORMATS)] = Field(
-        "auto", description="Format of the files; 'auto' recognises it from ending and content"
+        "auto", description="Format of the files; 'auto' recognises each from its content"
     )
+    wind_height_m: float | None = Field(
+        None, ge=0.5, le=200, description="Height of the wind speeds, where it is not the format's own [m]"
+    )
+
+    def options(self) -> dict[str, Any]:
+        """Arguments of the source beside the files."""
+        return {"format": None if self.format == "auto" else self.format, "wind_height_m": self.wind_height_m}
 
 
 class VariableKey(Group):
@@ -111,6 +123,10 @@ class NetcdfWeather(FileWeather):
                 raise refuse(f"variables.{name}.height_m has no meaning; only wind_speed has a height")
         return self
 
+    def options(self) -> dict[str, Any]:
+        """Arguments of the source beside the files."""
+        return {"variables": {name: key.model_dump(exclude_none=True) for name, key in self.variables.items()}}
+
 
 class Years(Group):
     """A run of calendar years."""
@@ -138,8 +154,20 @@ class SyntheticWeather(Group):
                 "west of east"
             )
         if rows * columns * self.years.count * 365 > MAX_CELL_DAYS:
-            raise refuse(f"asks for more than {MAX_CELL_DAYS:.0e} cell-days; take fewer rows, columns or years")
+            raise refuse(f"asks for more than {MAX_CELL_DAYS} cell-days; take fewer rows, columns or years")
         return self
+
+    @property
+    def names(self) -> tuple[str, ...]:
+        """No weather file is read."""
+        return ()
+
+    def options(self) -> dict[str, Any]:
+        """Arguments of the source."""
+        return {
+            **self.box.model_dump(), "land": self.land.path, "shape": self.shape, "seed": self.seed,
+            "first_year": self.years.first, "years": self.years.count,
+        }
 
 
 Weather = Annotated[

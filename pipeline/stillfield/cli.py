@@ -1,0 +1,198 @@
+"""The command line: arguments, messages and exit codes, and nothing that computes.
+
+Only the standard library is imported here; everything else is imported by the command that needs it, so
+that ``stillfield --help`` answers at once.
+"""
+
+from __future__ import annotations
+
+import argparse
+import errno
+import logging
+import os
+import sys
+import traceback
+from collections.abc import Sequence
+from typing import TextIO
+
+from stillfield import __version__
+from stillfield.errors import (
+    EXIT_BAD_INPUT,
+    EXIT_DEFECT,
+    EXIT_INTERRUPTED,
+    EXIT_OK,
+    EXIT_OUTPUT,
+    OutputError,
+    StillfieldError,
+)
+
+DESCRIPTION = """\
+Where passive solar stills can supply drinking water, and how large they must be:
+litres per square metre of basin for every month, cell and village, from gridded or
+typical-year weather.
+"""
+
+EPILOG = f"""\
+exit codes:
+  {EXIT_OK}    done
+  {EXIT_DEFECT}    a defect in stillfield; the traceback on stderr is what to report
+  {EXIT_BAD_INPUT}    bad input, settings or usage; one message on stderr says what is wrong and where
+  {EXIT_OUTPUT}    an output could not be written
+  {EXIT_INTERRUPTED}  interrupted
+
+example:
+  stillfield run config/demo.yaml
+"""
+
+#: Errors of the system that mean an output has no room, whoever was writing it.
+_NO_ROOM = (errno.ENOSPC, errno.EDQUOT, errno.EROFS)
+
+#: Lowest level that reaches stderr.
+_LEVELS = {"quiet": logging.ERROR, "plain": logging.INFO, "verbose": logging.DEBUG}
+
+
+def main(argv: Sequence[str] | None = None) -> int:
+    """Run the command line.
+
+    Parameters
+    ----------
+    argv : sequence of str, optional
+        Arguments without the program's name; the process's own by default.
+
+    Returns
+    -------
+    int
+        The exit code: 0 done, 1 a defect, 2 bad input, 3 output not written, 130 interrupted.
+    """
+    try:
+        code = _guarded(build_parser().parse_args(argv))
+    except SystemExit as leave:  # argparse: 0 after --help and --version, 2 for wrong usage
+        code = leave.code if isinstance(leave.code, int) else EXIT_BAD_INPUT
+    _let_go(sys.stdout)
+    _let_go(sys.stderr)
+    return code
+
+
+def build_parser() -> argparse.ArgumentParser:
+    """Build the parser of the command line."""
+    parser = argparse.ArgumentParser(
+        prog="stillfield", description=DESCRIPTION, epilog=EPILOG, allow_abbrev=False,
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    parser.add_argument("--version", action="version", version=f"stillfield {__version__}")
+    commands = parser.add_subparsers(dest="command", metavar="COMMAND", required=True)
+
+    run = commands.add_parser(
+        "run", help="do everything a run file asks for", allow_abbrev=False, epilog=EPILOG,
+        description="Check a run file, then do everything it asks for.",
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+    )
+    run.add_argument("run_file", metavar="RUN.yaml", help="the run file")
+    run.add_argument("--output", metavar="FOLDER", help="put the results under FOLDER, whatever the run file says")
+    loudness = run.add_mutually_exclusive_group()
+    loudness.add_argument(
+        "-q", "--quiet", dest="loudness", action="store_const", const="quiet", help="say nothing but errors"
+    )
+    loudness.add_argument(
+        "-v", "--verbose", dest="loudness", action="store_const", const="verbose",
+        help="say every detail, with times and the warnings of libraries",
+    )
+    run.set_defaults(loudness="plain")
+
+    schema = commands.add_parser(
+        "schema", help="print the JSON Schema of run files or still files", allow_abbrev=False,
+        description="Print the JSON Schema of run files or still files, for editors that complete and check.",
+    )
+    schema.add_argument("kind", nargs="?", choices=("run", "still"), default="run", help="which file (default: run)")
+    return parser
+
+
+def _guarded(arguments: argparse.Namespace) -> int:
+    """Do the command; every failure ends in an exit code and the words that belong to it."""
+    try:
+        return _run(arguments) if arguments.command == "run" else _schema(arguments)
+    except StillfieldError as error:
+        _complain(str(error))
+        return error.exit_code
+    except KeyboardInterrupt:
+        _complain("interrupted; outputs that were finished are whole")
+        return EXIT_INTERRUPTED
+    except Exception as error:
+        if isinstance(error, OSError) and error.errno in _NO_ROOM:
+            _complain(f"an output could not be written: {error.strerror}")
+            return EXIT_OUTPUT
+        _complain(f"this is a defect in stillfield {__version__}, not in your input; please report what follows")
+        traceback.print_exc()
+        return EXIT_DEFECT
+
+
+def _run(arguments: argparse.Namespace) -> int:
+    _log_to_stderr(arguments.loudness)
+    from stillfield.settings.load import load_run
+
+    settings = load_run(arguments.run_file)
+    if arguments.output is not None:
+        settings = settings.with_output(arguments.output)
+
+    from stillfield.run import run
+
+    summary = run(settings, run_file=arguments.run_file)
+    if arguments.loudness != "quiet":
+        _say(f"{summary}\n")
+    return EXIT_OK
+
+
+def _schema(arguments: argparse.Namespace) -> int:
+    from stillfield.settings.load import schema_text
+
+    _say(schema_text(arguments.kind))
+    return EXIT_OK
+
+
+class _PlainLines(logging.Formatter):
+    """Progress as it is; what is amiss says so in front."""
+
+    def format(self, record: logging.LogRecord) -> str:
+        """One line of the record."""
+        text = super().format(record)
+        return text if record.levelno < logging.WARNING else f"{record.levelname.lower()}: {text}"
+
+
+def _log_to_stderr(loudness: str) -> None:
+    """Set up plain lines on stderr: progress, or errors only, or everything with its time."""
+    verbose = loudness == "verbose"
+    handler = logging.StreamHandler(sys.stderr)
+    handler.setLevel(_LEVELS[loudness])
+    handler.setFormatter(
+        logging.Formatter("%(asctime)s %(levelname)s %(name)s: %(message)s") if verbose else _PlainLines()
+    )
+    ours, libraries = logging.getLogger("stillfield"), logging.getLogger("py.warnings")
+    ours.setLevel(logging.DEBUG)
+    ours.handlers, ours.propagate = [handler], False
+    logging.captureWarnings(True)
+    libraries.handlers, libraries.propagate = [handler if verbose else logging.NullHandler()], False
+
+
+def _say(text: str) -> None:
+    """Write to stdout; a reader who has gone is no fault, a full disk behind it is one."""
+    try:
+        sys.stdout.write(text)
+        sys.stdout.flush()
+    except BrokenPipeError:
+        return
+    except OSError as error:
+        raise OutputError("cannot be written", where="standard output", got=error.strerror) from None
+
+
+def _complain(message: str) -> None:
+    print(f"stillfield: {message}", file=sys.stderr)
+
+
+def _let_go(stream: TextIO) -> None:
+    """Flush; where that fails, send the rest to nowhere, so that the interpreter can leave in peace."""
+    try:
+        stream.flush()
+    except ValueError:
+        return
+    except OSError:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
