@@ -4,25 +4,39 @@ from __future__ import annotations
 
 from typing import Any
 
-from numba import njit
+from numba import njit, types
 from numba.extending import overload, register_jitable
 
 from stillfield.physics import balance_kernel as kernel
 
 
-@overload(kernel.choose)
+@overload(kernel.choose, strict=False, jit_options={"forceinline": True})
 def _choose(condition: Any, yes: Any, no: Any) -> Any:
     return lambda condition, yes, no: yes if condition else no
 
 
-@overload(kernel.larger)
+@overload(kernel.larger, strict=False, jit_options={"forceinline": True})
 def _larger(value: Any, floor: Any) -> Any:
     return lambda value, floor: floor if value < floor else value
 
 
-@overload(kernel.smaller)
+@overload(kernel.smaller, strict=False, jit_options={"forceinline": True})
 def _smaller(value: Any, ceiling: Any) -> Any:
     return lambda value, ceiling: ceiling if value > ceiling else value
+
+
+@overload(kernel.note, strict=False, jit_options={"forceinline": True})
+def _note(record: Any, row: Any, i: Any, sub_step: Any, cell: Any, k: Any) -> Any:
+    if isinstance(record, types.NoneType):
+        return lambda record, row, i, sub_step, cell, k: None
+    return kernel.note
+
+
+@overload(kernel.note_end, strict=False, jit_options={"forceinline": True})
+def _note_end(record: Any, row: Any, work: Any, start: Any, count: Any) -> Any:
+    if isinstance(record, types.NoneType):
+        return lambda record, row, work, start, count: None
+    return kernel.note_end
 
 
 for _function in (
@@ -30,7 +44,7 @@ for _function in (
     kernel.dry_newton, kernel.move, kernel.after, kernel.distilled, kernel.around, kernel.refreshed,
     kernel.ledger, kernel.clear, kernel.enter_step, kernel.advance,
 ):
-    register_jitable(inline="always")(_function)
+    register_jitable(forceinline=True)(_function)
 
 #: `balance_kernel.march_cells`, compiled at its first call and kept in numba's cache. Divisions are not
 #: checked, because a check per division would keep the processor from working on several cells at once.

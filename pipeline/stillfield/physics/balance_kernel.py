@@ -327,42 +327,36 @@ def march_cells(
     Arguments as in `balance_numpy.march`.
     """
     order, rows, substeps = schedule
-    count = cells.shape[1]
-    space = np.empty((9, BLOCK_CELLS), cells.dtype)
-    for start in range(0, count, BLOCK_CELLS):
-        stop = min(start + BLOCK_CELLS, count)
-        part = cells[:, start:stop]
-        work = space[:, : stop - start]
+    work = np.empty((9, BLOCK_CELLS), cells.dtype)
+    for start in range(0, cells.shape[1], BLOCK_CELLS):
+        count = min(BLOCK_CELLS, cells.shape[1] - start)
         work[0, :] = np.nan
-        clear(work, k)
+        clear(work, count, k)
         for step in range(order.size):
             row = rows[step]
-            enter_step(work, forcing, order[step], start, k)
+            enter_step(work, forcing, order[step], start, count, k)
             for _ in range(substeps):
-                advance(work, part, k, record, row, start)
-            if row >= 0 and record is not None:
-                for c in range(stop - start):
-                    record[7, row, start + c] = work[0, c]
-                    record[8, row, start + c] = work[3, c]
+                advance(work, cells, k, record, row, start, count)
+            note_end(record, row, work, start, count)
             if step + 1 == order.size or rows[step + 1] != row:
                 if row >= 0:
-                    for c in range(stop - start):
+                    for c in range(count):
                         daily[row, start + c] = work[7, c]
                         frozen[row, start + c] = work[8, c] > k.zero
-                clear(work, k)
+                clear(work, count, k)
 
 
-def clear(work: Any, k: Numbers) -> None:
+def clear(work: Any, count: Any, k: Numbers) -> None:
     """Begin a new row of the result."""
-    for c in range(work.shape[1]):
+    for c in range(count):
         work[7, c] = k.zero
         work[8, c] = k.zero
 
 
-def enter_step(work: Any, forcing: Any, f: Any, start: Any, k: Numbers) -> None:
+def enter_step(work: Any, forcing: Any, f: Any, start: Any, count: Any, k: Numbers) -> None:
     """Bring the weather of row `f` into the form of the balance; mend states lost in a gap."""
     absorbed, cover_absorbed, temp_air, wind, temp_sky = forcing
-    for c in range(work.shape[1]):
+    for c in range(count):
         i = start + c
         air = temp_air[f, i]
         weather = around(absorbed[f, i], cover_absorbed[f, i], air, wind[f, i], temp_sky[f, i], k)
@@ -376,13 +370,14 @@ def enter_step(work: Any, forcing: Any, f: Any, start: Any, k: Numbers) -> None:
         work[6, c] = weather.cover_slope
 
 
-def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any) -> None:
-    """One sub-step of the cells of a block; the loop the processor works on several cells at once."""
-    for c in range(work.shape[1]):
+def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any, count: Any) -> None:
+    """One sub-step of the cells of a block: the loop in which the processor takes several cells at once."""
+    for c in range(count):
+        i = start + c
         old = State(work[0, c], work[1, c], work[2, c], work[3, c])
         weather = Weather(work[4, c], work[5, c], work[6, c])
         cell = Cell(
-            cells[0, c], cells[1, c], cells[2, c], cells[3, c], cells[4, c], cells[5, c], cells[6, c], cells[7, c]
+            cells[0, i], cells[1, i], cells[2, i], cells[3, i], cells[4, i], cells[5, i], cells[6, i], cells[7, i]
         )
         moved = move(old, weather, cell, k)
         new = after(moved, old, cell, k)
@@ -392,7 +387,21 @@ def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any
         work[3, c] = new.ice
         work[7, c] += distilled(moved, k)
         work[8, c] = larger(work[8, c], new.ice)
-        if row >= 0 and record is not None:
-            entries = ledger(moved, old, new, cell, k)
-            for channel in range(7):
-                record[channel, row, start + c] += entries[channel]
+        note(record, row, i, (moved, old, new), cell, k)
+
+
+def note(record: Any, row: Any, i: Any, sub_step: Any, cell: Cell, k: Numbers) -> None:
+    """Add a sub-step of cell `i` to the record; left out of the compiled code where there is none."""
+    if row >= 0:
+        moved, old, new = sub_step
+        entries = ledger(moved, old, new, cell, k)
+        for channel in range(7):
+            record[channel, row, i] += entries[channel]
+
+
+def note_end(record: Any, row: Any, work: Any, start: Any, count: Any) -> None:
+    """Write the state at the end of a step to the record; left out of the compiled code likewise."""
+    if row >= 0:
+        for c in range(count):
+            record[7, row, start + c] = work[0, c]
+            record[8, row, start + c] = work[3, c]

@@ -254,10 +254,12 @@ def _checked(forcing: Forcing, steps_per_day: int) -> tuple[tuple[Array, ...], t
             wanted="(days * steps_per_day, cell)",
             cure="Cut the series into whole local days first.",
         )
-    fields: tuple[Array, ...] = tuple(
-        np.ascontiguousarray(np.broadcast_to(field, shape), dtype=dtype) for field in given
-    )
-    return fields, (shape[0], shape[1])
+    fields = []
+    for field in given:
+        view = np.ascontiguousarray(np.broadcast_to(field, shape), dtype=dtype).view()
+        view.flags.writeable = False  # of one kind, so that there is one compiled form
+        fields.append(view)
+    return tuple(fields), (shape[0], shape[1])
 
 
 def _time_constant_days(still: Still) -> float:
