@@ -118,7 +118,7 @@ def _piece(weather: xr.Dataset, axes: Axes, found: Found, path: Path, notes: tup
     if time_dim not in variable.dims:
         if weather[axes.time].size != 1:
             raise WeatherError(f"variable '{found.name}' has no time", where=str(path))
-        variable = xr.Variable((time_dim, *variable.dims), variable.data[np.newaxis], variable.attrs)
+        variable = xr.Variable((time_dim, *variable.dims), variable.chunk().data[np.newaxis], variable.attrs)
     values = _lazy(variable, time_dim)
     values, said = _on_cells(values, weather, axes, time_dim, where=str(path))
     values = values.assign_coords(time=("time", time)).assign_attrs(bounds_hours=hours)
