@@ -11,10 +11,11 @@ from pathlib import Path
 import pytest
 
 from stillfield.errors import RunFileError, StillfieldError
+from stillfield.settings import weather as weather_keys
 from stillfield.settings.base import folder_name
 from stillfield.settings.load import json_schema, load_run, resolved_yaml, schema_text
 from stillfield.settings.weather import NetcdfWeather, SyntheticWeather, TypicalYearWeather
-from stillfield.sources import open_source
+from stillfield.sources import open_source, recognise, synthetic, year_formats
 
 CONFIG = Path(__file__).parents[2] / "config"
 
@@ -295,11 +296,13 @@ def test_weather_files_that_are_not_there(folder, files, expected):
     ("variable", "expected"),
     [
         ("irradiatoin: {name: ssrd}", "irradiatoin: unknown key (did you mean 'irradiation'?)"),
-        ("ghi: {means: daily_total}", "ghi.means: should be one of 'daily-total', 'daily-mean', 'daylight-mean', "
-         "'step-mean', 'step-total', 'since-midnight-utc', 'instant' (got 'daily_total'; "
+        ("ghi: {means: daily_total}", "ghi.means: should be one of 'daily-total', 'daily-mean', 'step-mean', "
+         "'hour-ending accumulation', 'hour-starting accumulation', 'since-00-UTC' (got 'daily_total'; "
          "did you mean 'daily-total'?)"),
+        ("ghi: {stamp: begin}", "ghi.stamp: should be one of 'start', 'middle', 'end' (got 'begin')"),
         ("wind_speed: {height_m: 0}", "wind_speed.height_m: should be between 0.5 and 200 (got 0)"),
-        ("wind_speed: ws10", "wind_speed: should be a group of keys (got the text 'ws10')"),
+        ("wind_speed: 10", "wind_speed: should be text or a group of keys (got 10)"),
+        ("wind_speed: ''", "wind_speed: should be 1 or more characters of text (got the text '')"),
         ("ghi: {unit: W}", "ghi.unit: unknown key (did you mean 'units'?)"),
     ],
 )  # fmt: skip
@@ -308,13 +311,27 @@ def test_faults_of_the_variable_mapping(folder, variable, expected):
     assert faults(folder, text) == [f"line 5, weather.variables.{expected}"]
 
 
-def test_only_a_wind_speed_has_a_height(folder):
-    text = FILES.format(kind="netcdf", files="demo/*").replace(
-        "still:", "  variables: {temp_air: {height_m: 2}}\nstill:"
-    )
-    assert faults(folder, text) == [
-        "line 2, weather: variables.temp_air.height_m has no meaning; only wind_speed has a height"
-    ]
+@pytest.mark.parametrize(
+    ("variables", "expected"),
+    [
+        ("{temp_air: {height_m: 2}}",
+         "variables.temp_air.height_m has no meaning; only wind_speed, wind_u, wind_v have a height"),
+        ("{ghi: ssrd, irradiation: rsds}",
+         "variables: irradiation and ghi are two names of the same sunshine; state one of them"),
+    ],
+)  # fmt: skip
+def test_contradictions_in_the_variable_mapping(folder, variables, expected):
+    text = FILES.format(kind="netcdf", files="demo/*").replace("still:", f"  variables: {variables}\nstill:")
+    assert faults(folder, text) == [f"line 2, weather: {expected}"]
+
+
+def test_words_of_the_run_file_are_those_of_the_readers():
+    assert weather_keys.MEANS == recognise.MEANINGS
+    assert weather_keys.STAMPS == recognise.STAMPS
+    assert set(weather_keys.VARIABLES) == {"irradiation", "ghi", *recognise.ROLES[1:]}
+    assert weather_keys.FORMATS[1:] == year_formats.FORMATS
+    assert weather_keys.LARGEST_LATITUDE == synthetic.LARGEST_LATITUDE
+    assert weather_keys.MAX_CELL_DAYS == synthetic.LARGEST_CELL_DAYS
 
 
 def test_files_in_packages_keep_their_name_so_that_outputs_know_no_machine(folder):
@@ -335,10 +352,11 @@ def test_options_are_those_the_sources_take(folder):
 
 
 def test_a_mapping_of_variables_keeps_what_was_stated(folder):
-    variables = "{irradiation: {name: ssrd, units: J m-2, means: daily-total}, temp_air: {name: t2m}}"
+    variables = "{irradiation: {name: ssrd, units: J m-2, means: daily-total}, temp_air: t2m}"
     text = FILES.format(kind="netcdf", files="demo/*").replace("still:", f"  variables: {variables}\nstill:")
     weather = load(folder, text).weather
     assert isinstance(weather, NetcdfWeather)
+    assert recognise.read_mapping(weather.options()["variables"])["sun"].means == "daily-total"
     assert weather.options()["variables"] == {
         "irradiation": {"name": "ssrd", "units": "J m-2", "means": "daily-total"}, "temp_air": {"name": "t2m"},
     }

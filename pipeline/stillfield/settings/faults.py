@@ -111,7 +111,7 @@ def _find(loc: tuple[str | int, ...], root: Schema, data: Any) -> _Place:
         known = isinstance(data, dict) and (step in data or (position == len(loc) - 1 and step != _KEY_ITSELF))
         if known or (isinstance(step, int) and isinstance(data, list)):
             path.append(step)
-            group = node
+            group = _branch(node, "array" if isinstance(step, int) else "object", root)
             data = data.get(step) if isinstance(data, dict) else data[int(step)]
         if step != _KEY_ITSELF:
             node = _child(node, step, root)
@@ -138,20 +138,17 @@ def _resolve(node: Schema, root: Schema) -> Schema:
     while "$ref" in node:
         kept = {key: value for key, value in node.items() if key != "$ref"}
         node = {**root["$defs"][node["$ref"].rpartition("/")[2]], **kept}
-    branches = [branch for branch in node.get("anyOf", []) if branch.get("type") != "null"]
-    if len(branches) == 1:
-        kept = {key: value for key, value in node.items() if key != "anyOf"}
-        return _resolve({**branches[0], **kept}, root)
-    return node
+    if "anyOf" not in node:
+        return node
+    branches = [_resolve(branch, root) for branch in node["anyOf"] if branch.get("type") != "null"]
+    kept = {key: value for key, value in node.items() if key != "anyOf"}
+    return {**branches[0], **kept} if len(branches) == 1 else {**kept, "anyOf": branches}
 
 
 def _branch(node: Schema, kind: str, root: Schema) -> Schema:
     """The branch of `node` that is an array or object, if it offers several forms."""
-    for branch in node.get("anyOf", []):
-        found = _resolve(branch, root)
-        if found.get("type") == kind:
-            return found
-    return node
+    branches = (_resolve(branch, root) for branch in node.get("anyOf", []))
+    return next((branch for branch in branches if branch.get("type") == kind), node)
 
 
 def _sentence(details: ErrorDetails, place: _Place, root: Schema) -> str:

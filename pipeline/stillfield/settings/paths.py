@@ -90,13 +90,11 @@ def find_files(given: str, folder: Path) -> InputFiles:
     as it is.
     """
     path = _locate(given, folder)
-    if path.is_dir() and path.suffix == ".zarr":
-        return InputFiles(given, (path,))
     if not _GLOB.search(given) or path.exists():
         return InputFiles(given, (find_file(given, folder).path,))
     found = glob.glob(str(path), recursive=True)  # noqa: PTH207 (Path.glob takes no absolute pattern)
     matches = sorted(Path(match) for match in found)
-    files = tuple(match for match in matches if match.is_file() or match.suffix == ".zarr")
+    files = tuple(match for match in matches if match.is_file())
     if not files:
         raise refuse(f"no file matches '{harmless(given)}'{_nearest_folder(path, given, folder)}")
     return InputFiles(given, files)

@@ -9,18 +9,25 @@ from pydantic import BeforeValidator, Field, WithJsonSchema, field_validator, mo
 
 from stillfield.settings.base import Box, Group, OneOf, Section
 from stillfield.settings.paths import FileKey, FilesKey, InputFiles, refuse
-from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
 
 #: Formats of typical-year files.
 FORMATS = ("auto", "epw", "tmy2", "tmy3", "pvgis-csv", "pvgis-json", "nsrdb")
 
-#: What a value of the file stands for; needed where the unit alone does not say it.
+#: What a value of the sunshine stands for; needed where the unit alone does not say it.
 MEANS = (
-    "daily-total", "daily-mean", "daylight-mean", "step-mean", "step-total", "since-midnight-utc", "instant",
+    "daily-total", "daily-mean", "step-mean", "hour-ending accumulation", "hour-starting accumulation",
+    "since-00-UTC",
 )
 
-#: Weather variables a grid file may offer, by stillfield's names.
-VARIABLES = tuple(dict.fromkeys((*STEP_WEATHER, *(name for name in DAY_WEATHER if name != "valid_hours"))))
+#: Where in its interval the time of a value lies.
+STAMPS = ("start", "middle", "end")
+
+#: Quantities that can be looked up in grid files: the sunshine under either name, and the wind by components.
+VARIABLES = (
+    "irradiation", "ghi", "dni", "dhi", "temp_air", "temp_air_min", "temp_air_max", "temp_dew",
+    "relative_humidity", "wind_speed", "wind_u", "wind_v",
+)
+_WINDS = ("wind_speed", "wind_u", "wind_v")
 
 #: Bounds of invented weather: what its climate is made for, and what fits into memory.
 LARGEST_LATITUDE = 60.0
@@ -99,28 +106,44 @@ class VariableKey(Group):
         None, min_length=1, description="Unit of the values, where the files state none or a wrong one"
     )
     means: Annotated[str, OneOf(MEANS)] | None = Field(
-        None, description="What a value stands for, for example 'daily-total' or 'daylight-mean'"
+        None, description="What a value stands for, where the unit does not say it, for example 'daily-mean'"
+    )
+    stamp: Annotated[str, OneOf(STAMPS)] | None = Field(
+        None, description="Where in its interval the time of a value lies"
     )
     height_m: float | None = Field(
         None, ge=0.5, le=200, description="Height of a wind speed above ground [m]; 2 m is what the models take"
     )
 
 
+def _name_alone(value: Any) -> Any:
+    """The name of the variable may stand in place of the group."""
+    return {"name": value} if isinstance(value, str) else value
+
+
+_Variable = Annotated[
+    VariableKey,
+    BeforeValidator(_name_alone, json_schema_input_type=str | VariableKey),
+]
+
+
 class NetcdfWeather(FileWeather):
     """Gridded weather from NetCDF files."""
 
     kind: Literal["netcdf"]
-    variables: Section[dict[Annotated[str, OneOf(VARIABLES)], VariableKey]] = Field(
+    variables: Section[dict[Annotated[str, OneOf(VARIABLES)], _Variable]] = Field(
         default_factory=dict,
-        description="Weather variables by stillfield's names; one that is left out is recognised by its "
-                    "attributes",
+        description="Quantities by stillfield's names, and how the files name them; one that is left out is "
+                    "recognised by its name or standard_name",
     )
 
     @model_validator(mode="after")
-    def _heights_of_wind_only(self) -> NetcdfWeather:
+    def _sun_once_and_heights_of_wind_only(self) -> NetcdfWeather:
+        if {"irradiation", "ghi"} <= set(self.variables):
+            raise refuse("variables: irradiation and ghi are two names of the same sunshine; state one of them")
         for name, variable in self.variables.items():
-            if variable.height_m is not None and name != "wind_speed":
-                raise refuse(f"variables.{name}.height_m has no meaning; only wind_speed has a height")
+            if variable.height_m is not None and name not in _WINDS:
+                raise refuse(f"variables.{name}.height_m has no meaning; only {', '.join(_WINDS)} have a height")
         return self
 
     def options(self) -> dict[str, Any]:
