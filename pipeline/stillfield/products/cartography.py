@@ -138,7 +138,7 @@ class View:
         return (self.box[2] - self.box[0]) * KM_PER_DEGREE * self.shrink
 
 
-def view_of(edges: Edges, land: Iterable[Polygon] | None) -> View:
+def view_of(edges: Edges, land: Iterable[Polygon] | None, *, grains: int = 2500) -> View:
     """View that holds a grid; long thin grids get surroundings, so that the map stays a map.
 
     Parameters
@@ -147,6 +147,8 @@ def view_of(edges: Edges, land: Iterable[Polygon] | None) -> View:
         Of the grid.
     land : iterable of polygon, optional
         Land to draw; the shipped land by default.
+    grains : int
+        Grains across the map; land is thinned to them. A page is 1600 pixels wide.
 
     Returns
     -------
@@ -169,8 +171,19 @@ def view_of(edges: Edges, land: Iterable[Polygon] | None) -> View:
         grow = (east - west) * (bare.aspect / _ASPECTS[1] - 1.0) / 2
         west, east = west - grow, east + grow
     box = (west, south, east, north)
-    polygons = land_in(box, land)
+    grain = max(east - west, north - south) / grains
+    thinned = (tuple(_thinned(ring, grain) for ring in polygon) for polygon in land_in(box, land))
+    polygons = [tuple(ring for ring in polygon if len(ring) > 3) for polygon in thinned if len(polygon[0]) > 3]
     return View(box, coastline(box, polygons) if polygons else [], polygons)
+
+
+def _thinned(ring: Ring, grain: float) -> Ring:
+    """Drop vertices that fall on the same grain as the one before: too fine to be seen."""
+    cells = np.round(ring / grain)
+    keep = np.concatenate([[True], np.any(np.diff(cells, axis=0) != 0.0, axis=1)])
+    keep[-1] = True
+    kept: Ring = ring[keep]
+    return kept
 
 
 def draw_map(axes: Axes, field: xr.DataArray, edges: Edges, view: View, scale: ColourScale) -> None:
@@ -189,8 +202,9 @@ def draw_map(axes: Axes, field: xr.DataArray, edges: Edges, view: View, scale: C
     from matplotlib.patches import PathPatch
 
     axes.set_facecolor(SEA)
-    for polygon in view.land:
-        patch = PathPatch(_outline(polygon), facecolor=NO_VALUE, edgecolor=NO_VALUE_HATCH, hatch="/////",
+    if view.land:
+        # One patch for all land: hatching is drawn per patch.
+        patch = PathPatch(_outlines(view.land), facecolor=NO_VALUE, edgecolor=NO_VALUE_HATCH, hatch="/////",
                           linewidth=0.0, zorder=1)
         patch.set_hatch_linewidth(0.45)
         axes.add_patch(patch)
@@ -239,10 +253,10 @@ def _rising(longitude: NDArray[Any], latitude: NDArray[Any], values: Any) -> tup
     return longitude, latitude, values
 
 
-def _outline(polygon: Polygon) -> Any:
+def _outlines(polygons: Iterable[Polygon]) -> Any:
     from matplotlib.path import Path
 
-    return Path.make_compound_path(*[Path(ring, closed=True) for ring in polygon])
+    return Path.make_compound_path(*[Path(ring, closed=True) for polygon in polygons for ring in polygon])
 
 
 def degree_label(value: float, positive: str, negative: str) -> str:

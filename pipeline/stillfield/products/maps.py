@@ -171,7 +171,7 @@ def draw_twelve_months(
     monthly: xr.Dataset, *, words: Words, variable: str, land: Land, places: Sequence[MapPlace]
 ) -> Figure:
     """Draw what `write_map_twelve_months` writes; to be called within `page.house_style`."""
-    field, edges, view = _ingredients(monthly, variable, land)
+    field, edges, view = _ingredients(monthly, variable, land, grains=900)
     if "month" not in field.dims:
         raise OutputError("no twelve months to draw", where=variable, wanted="dimension month")
     scale = yield_scale(field.values)
@@ -198,7 +198,7 @@ def draw_single(
     monthly: xr.Dataset, variable: str, *, words: Words, land: Land, places: Sequence[MapPlace]
 ) -> Figure:
     """Draw what `write_map_single` writes; to be called within `page.house_style`."""
-    field, edges, view = _ingredients(monthly, variable, land)
+    field, edges, view = _ingredients(monthly, variable, land, grains=2500)
     if field.ndim != 2:
         raise OutputError("not a single map", where=variable, got=", ".join(map(str, field.dims)))
     scale = month_scale() if variable == "worst_month" else yield_scale(field.values)
@@ -216,12 +216,14 @@ def draw_single(
     return page.figure
 
 
-def _ingredients(monthly: xr.Dataset, variable: str, land: Land) -> tuple[xr.DataArray, Edges, View]:
+def _ingredients(
+    monthly: xr.Dataset, variable: str, land: Land, *, grains: int
+) -> tuple[xr.DataArray, Edges, View]:
     if variable not in monthly or not is_grid(monthly[variable]):
         raise OutputError("no such variable on a grid", where=variable, cure="Sites have charts, no maps.")
     field = monthly[variable].load()
     edges = cell_edges(monthly)
-    return field, edges, view_of(edges, None if land is None else read_land(land))
+    return field, edges, view_of(edges, None if land is None else read_land(land), grains=grains)
 
 
 def _with_subtitle(words: Words, subtitle: str) -> Words:
