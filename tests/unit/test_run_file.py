@@ -277,6 +277,8 @@ def test_a_name_that_really_holds_a_star_is_one_file(folder):
         ("pvlib:data/12839.tm3",
          ": no such file 'pvlib:data/12839.tm3' (did you mean 'pvlib:data/12839.tm2'?)"),
         ("nosuchpackage:x.nc", ": no package 'nosuchpackage' is installed"),
+        ("__main__:x.nc", ": no package '__main__' is installed"),
+        ("sys:x.nc", ": no package 'sys' is installed"),
         ("pvlib:../x.nc", ": should stay inside the package 'pvlib' (got '../x.nc')"),
         ("https://example.org/a.nc", ": should be a file on this machine; fetch 'https://example.org/a.nc' "
                                      "first and name the copy"),

@@ -119,7 +119,10 @@ def _locate(given: str, folder: Path) -> Path:
 
 def _in_package(package: str, inside: str) -> Path:
     """Path of a file inside an installed package, found without importing it."""
-    spec = find_spec(package)
+    try:
+        spec = find_spec(package)
+    except ValueError:  # a module such as __main__ that came from no package
+        spec = None
     if spec is None or not spec.origin or not spec.submodule_search_locations:
         raise refuse(f"no package '{package}' is installed")
     if Path(inside).is_absolute() or ".." in Path(inside).parts:
