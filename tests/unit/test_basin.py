@@ -129,6 +129,19 @@ def test_compass_azimuth_ignores_the_hemisphere():
     np.testing.assert_allclose(north, 0.0, atol=1e-12)
 
 
+@pytest.mark.parametrize("still", [single(20.0, 1.0), double(35.0, 1.0)], ids=["single", "double"])
+def test_what_a_tinted_film_does_not_pass_it_absorbs(still):
+    """Without reflection and with all walls counted, passed plus absorbed is what the cover takes in."""
+    sun = sun_over_steps([30.0, -10.0], DAYS)
+    dni, dhi = 700.0 * (sun.up > 0.0), 150.0 * (sun.up > 0.0)
+    light = {"ghi": dni * sun.up + dhi, "dni": dni, "dhi": dhi}
+    clear = basin_gain(still, sun, [30.0, -10.0], **light)
+    tinted = replace(still, cover=CoverMaterial(refractive_index=1.0, extinction_per_m=200.0))
+    dark = basin_gain(tinted, sun, [30.0, -10.0], **light)
+    assert dark.cover_absorbed.max() > 300.0
+    np.testing.assert_allclose(dark.transmitted + dark.cover_absorbed, clear.transmitted, rtol=1e-4, atol=1e-3)
+
+
 def test_light_without_a_sun_is_kept():
     sun = sun_over_steps([20.0], np.array([10]))
     night = int(np.flatnonzero(sun.up[:, 0] == 0.0)[0])

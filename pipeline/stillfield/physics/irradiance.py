@@ -113,7 +113,8 @@ def daily_diffuse_fraction(clearness: ArrayLike, sunset: ArrayLike) -> Array:
     long = 1.0 + k * (0.2832 + k * (-2.5557 + k * 0.8448))
     short = np.where(k < 0.715, short, 0.143 + 0.0 * k)
     long = np.where(k < 0.722, long, 0.175 + 0.0 * k)
-    return np.where(np.asarray(sunset) <= _SEASON_SUNSET, short, long)
+    # The printed polynomial of the long days runs up to 1.008 below k_T = 0.11.
+    return np.minimum(np.where(np.asarray(sunset) <= _SEASON_SUNSET, short, long), 1.0)
 
 
 def global_over_diffuse_shape(hour_angle: ArrayLike, sunset: ArrayLike) -> Array:
