@@ -19,18 +19,21 @@ from stillfield.physics.still import CoverMaterial
 Array = NDArray[np.floating[Any]]
 Part = Literal["sky", "ground"]
 
-#: Named cover sheets. Refractive indices: Duffie & Beckman 4th ed. Table 5.1.1 (quoted from memory: glass
-#: 1.526, polycarbonate 1.60, polymethyl methacrylate 1.49, polyvinyl fluoride 1.45, polytetrafluoroethylene
-#: 1.37); polyethylene 1.51 as in its section 5 literature (quoted from memory; MIL-HDBK-1003/13A Table 2-3
-#: prints 1.64). Extinction of glass: Duffie & Beckman section 5.2, 4 m-1 for 'water white' to 32 m-1 for
-#: glass that is greenish at its edge (quoted from memory). Extinction of plastics: set so that the
-#: transmittance at normal incidence is the printed one, MIL-HDBK-1003/13A Table 2-3: polycarbonate 0.82 to
-#: 0.90, acrylic 0.88 to 0.92, polyethylene 0.88; polyvinyl fluoride 0.92 (quoted from memory). Ageing: the
-#: same table's note, plastic loses 5 to 13 % in 24 months, glass 0 to 2 %. Emittance of plastics: common
-#: practice, no source; condensate under a thin film makes it opaque to heat.
+#: Named cover sheets.
+#:
+#: Refractive index: Duffie & Beckman 4th ed. Table 5.1.1 (glass 1.526, polycarbonate 1.60, polymethyl
+#: methacrylate 1.49, polyvinyl fluoride 1.45; quoted from memory). Polyethylene: 1.51, handbook value of the
+#: plain polymer (quoted from memory; MIL-HDBK-1003/13A Table 2-3 prints 1.64).
+#: Extinction: 4 m-1 for 'water white' glass and 32 m-1 for glass greenish at its edge, Duffie & Beckman
+#: section 5.2 (quoted from memory). The others are set so that the new sheet passes at normal incidence what
+#: MIL-HDBK-1003/13A Table 2-3 prints: float glass 0.843, polycarbonate 0.82 to 0.90, acrylic 0.88 to 0.92,
+#: polyethylene film 0.88; polyvinyl fluoride 0.92 (quoted from memory).
+#: Ageing: note of the same table, plastic covers lose 5 to 13 % in 24 months, glass 0 to 2 %.
+#: Emittance: 0.90 of glass within the usual 0.88 to 0.94; of plastics common practice, no source (water that
+#: condenses under a thin film makes it opaque to heat).
 MATERIALS = {
     "low-iron-glass": CoverMaterial(1.526, 4.0, 0.004, 0.90),
-    "glass": CoverMaterial(1.526, 15.0, 0.004, 0.90),
+    "glass": CoverMaterial(1.526, 22.0, 0.004, 0.90),
     "greenish-glass": CoverMaterial(1.526, 32.0, 0.004, 0.90),
     "polycarbonate": CoverMaterial(1.60, 15.0, 0.003, 0.90, 0.91),
     "acrylic": CoverMaterial(1.49, 7.0, 0.003, 0.90, 0.95),
