@@ -46,7 +46,7 @@ def test_more_than_extraterrestrial_is_refused_by_cell_and_day():
     values = np.full((3, 2, 2), 20.0)
     values[2, 0, 1] = 32.2 * 1.05 + 0.8
     with pytest.raises(WeatherError, match=r"run, time 2010-09-03T00:00, latitude -20, longitude 41: more sunshine "
-                                           r"than reaches the top of the atmosphere \(got 34\.61 MJ m-2 in the day; 1 such"):
+                                           r"than reaches the top of the atmosphere \(got 34\.61 MJ m-2 in the day"):
         gate(_daily(values), where="run")
     values[2, 0, 1] = 32.2
     gate(_daily(values))
@@ -55,8 +55,8 @@ def test_more_than_extraterrestrial_is_refused_by_cell_and_day():
 def test_large_negative_sunshine_is_refused():
     values = np.full((3, 2, 2), 18.0)
     values[0, 1, 0] = -5.0
-    with pytest.raises(WeatherError, match=r"time 2010-09-01T00:00, latitude -19, longitude 40: irradiation cannot be "
-                                           r"true \(got -5 MJ m-2; 1 such values; wanted -0\.5 to 50 MJ m-2\)"):
+    with pytest.raises(WeatherError, match=r"time 2010-09-01T00:00, latitude -19, longitude 40: irradiation "
+                                           r"cannot be true \(got -5 MJ m-2; 1 such values; wanted -0\.5 to 50"):
         gate(_daily(values))
 
 

@@ -224,9 +224,10 @@ def longitude_order(longitude: Array, *, where: str) -> tuple[NDArray[np.intp], 
     ([-180.0, -90.0, 0.0, 90.0], [2, 3, 0, 1], ['1 repeated meridian was dropped.'])
     """
     _check_finite(longitude, 720.0, "longitude", where=where)
-    _check_even(longitude, "longitude", where=where)
     wrapped = clean_degrees((longitude + 180.0) % 360.0 - 180.0)
     unique, order = np.unique(wrapped, return_index=True)
+    if not _is_even(longitude):  # a box across Greenwich in 0..360 is even only once it is wrapped
+        _check_even(unique, "longitude", where=where)
     repeated = longitude.size - unique.size
     notes = []
     if repeated:
@@ -245,14 +246,20 @@ def _check_finite(values: Array, limit: float, name: str, *, where: str) -> None
                            wanted=f"-{limit:g} to {limit:g}", cure="Check the coordinates of the file.")
 
 
-def _check_even(values: Array, name: str, *, where: str) -> None:
+def _is_even(values: Array) -> bool:
     steps = np.diff(values)
     if steps.size == 0:
-        return
+        return True
     usual = float(np.median(steps))
-    wrong = ~(np.abs(steps - usual) <= _UNEVEN * abs(usual))
-    if usual == 0.0 or wrong.any():
-        at = int(np.argmax(wrong))
-        raise WeatherError(f"{name} is not evenly spaced", where=where,
-                           got=f"{values[at]:g} is followed by {values[at + 1]:g}",
-                           wanted=f"steps of {usual:g}", cure="Regrid it to a regular grid first.")
+    return usual != 0.0 and bool(np.all(np.abs(steps - usual) <= _UNEVEN * abs(usual)))
+
+
+def _check_even(values: Array, name: str, *, where: str) -> None:
+    if _is_even(values):
+        return
+    steps = np.diff(values)
+    usual = float(np.median(steps))
+    at = int(np.argmax(np.abs(steps - usual)))
+    raise WeatherError(f"{name} is not evenly spaced", where=where,
+                       got=f"{values[at]:g} is followed by {values[at + 1]:g}",
+                       wanted=f"steps of {usual:g}", cure="Regrid it to a regular grid first.")

@@ -67,8 +67,16 @@ def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
     WeatherError
         If the file cannot be opened or its axes cannot be used.
     """
-    where = str(path)
     weather = _open(path)
+    try:
+        return _take(weather, path, choices)
+    except BaseException:
+        weather.close()  # a refused file must not stay open: it may be about to be replaced
+        raise
+
+
+def _take(weather: xr.Dataset, path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
+    where = str(path)
     weather, notes = _one_version(weather)
     axes = find_axes(weather, where=where)
     if weather[axes.time].size == 0:
