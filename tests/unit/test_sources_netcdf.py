@@ -30,6 +30,7 @@ from stillfield.errors import UnitsError, WeatherError
 from stillfield.sources import guess_kind, open_source
 from stillfield.sources.gates import gate
 from stillfield.sources.netcdf import open_netcdf
+from typical_year_samples import clear_sky
 
 TRUE = truth()
 WIND_FACTOR = 4.87 / np.log(67.8 * 10 - 5.42)  # FAO-56 equation 47
@@ -315,6 +316,35 @@ def test_opening_reads_no_weather(tmp_path, monkeypatch):
     assert read.count((DAYS, 3, 4)) == 2
 
 
+def _long_sky(shift: float) -> xr.Dataset:
+    """Twelve clear days of March, stamps moved by `shift` hours from the start of the hour they stand for."""
+    hour = np.arange(12 * 24)
+    sky = [clear_sky(np.full(hour.size, 3), 10 + hour // 24, (hour % 24) * 60 + 30, latitude=latitude, longitude=-0.5,
+                     zone=0.0) for latitude in LATITUDE]
+    values = np.repeat(np.stack(sky, axis=1)[:, :, None], LONGITUDE.size, axis=2)
+    return grid(hours(shift, hour.size), rsds=(values, "W m-2"))
+
+
+def test_a_stamp_read_at_the_wrong_end_is_warned_of(tmp_path):
+    right = open_netcdf(whole(_long_sky(0.0), tmp_path)).attrs["conventions"]
+    assert any("follows the sun 3" in line and "WARNING" not in line for line in right)
+    (tmp_path / "ends").mkdir()
+    path = whole(_long_sky(1.0), tmp_path / "ends")
+    wrong = open_netcdf(path).attrs["conventions"]
+    assert any("WARNING: Sunshine follows the sun -3" in line and "check `means` and `stamp`" in line for line in wrong)
+    mended = open_netcdf(path, variables={"ghi": {"name": "rsds", "stamp": "end"}}).attrs["conventions"]
+    assert not any("WARNING" in line for line in mended)
+
+
+def test_values_outside_a_stated_range_are_missing(tmp_path):
+    values = TRUE.irradiation.copy()
+    values[2, 0, 0] = 900.0
+    weather = grid(days(), rsds=(values, {"units": "MJ m-2", "valid_range": np.array([0.0, 60.0])}))
+    found, counts = gate(open_netcdf(whole(weather, tmp_path)).compute())
+    assert bool(found.irradiation[2, 0, 0].isnull())
+    assert counts.missing == {"irradiation": 1}
+
+
 def _refused(tmp_path, weather: xr.Dataset, sentence: str, kind: type[WeatherError] = WeatherError, **said) -> None:
     folder = Path(tempfile.mkdtemp(dir=tmp_path))
     with pytest.raises(kind, match=sentence):
@@ -399,6 +429,11 @@ def test_two_candidates_are_refused_and_a_choice_settles_it(tmp_path):
 def test_no_sunshine_is_refused_with_what_is_there(tmp_path):
     _refused(tmp_path, grid(days(), tas=(TRUE.irradiation, "K"), swrd=(TRUE.irradiation, "MJ m-2")),
              r"no sunshine was recognised \(got tas, swrd; wanted a variable for irradiation\)")
+
+
+def test_a_mapped_name_that_no_file_has_is_refused(tmp_path):
+    _refused(tmp_path, grid(days(), rsds=(TRUE.irradiation, "MJ m-2")),
+             r"variables\.temp_air\.name: no file has this variable \(got tas; wanted one of rsds\)", temp_air="tas")
 
 
 def test_a_mapping_is_checked(tmp_path):

@@ -16,16 +16,20 @@ import xarray as xr
 
 from stillfield.errors import WeatherError
 from stillfield.physics.wind import wind_speed_at_2m
+from stillfield.sources.alignment import TOLERANCE_MINUTES, measure_sun_offset
 from stillfield.sources.file_proof import prove_whole
 from stillfield.sources.grid_axes import snapped
 from stillfield.sources.locate import locate
 from stillfield.sources.netcdf_pieces import Piece, join_pieces, read_pieces
-from stillfield.sources.recognise import Found, read_mapping
+from stillfield.sources.recognise import Choice, Found, read_mapping
 from stillfield.sources.sunshine import Meaning, differences, grows_from_midnight, settle_meaning
 from stillfield.sources.units import conversion, irradiation_kind
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
 
 _LONGEST_COMPONENT_STEP_HOURS = 6.0
+#: The clock is checked on this many days, at steps up to this long.
+_CLOCK_DAYS = 12
+_LONGEST_CHECKED_STEP_HOURS = 3.0
 
 
 @dataclass(frozen=True)
@@ -74,6 +78,7 @@ def open_netcdf(
     for path in paths:
         prove_whole(path)
         pieces += read_pieces(path, choices)
+    _check_choices(choices, pieces, paths)
     joined, step_hours, notes = _join_roles(pieces, paths)
     daily = step_hours >= 24.0
     sun, said = _sunshine(joined.pop("sun"), step_hours)
@@ -92,9 +97,8 @@ def _join_roles(pieces: Sequence[Piece], paths: Sequence[Path]) -> tuple[dict[st
     for piece in pieces:
         roles.setdefault(piece.found.role, []).append(piece)
     if "sun" not in roles:
-        seen = ", ".join(dict.fromkeys(name for path in paths[:3] for name in _variable_names(path)))
-        raise WeatherError("no sunshine was recognised", where=", ".join(path.name for path in paths[:3]), got=seen,
-                           wanted="a variable for irradiation",
+        raise WeatherError("no sunshine was recognised", where=", ".join(path.name for path in paths[:3]),
+                           got=_variable_names(paths), wanted="a variable for irradiation",
                            cure="Name it under `variables.irradiation.name` in the run file.")
     joined = {}
     for role, parts in roles.items():
@@ -112,9 +116,22 @@ def _join_roles(pieces: Sequence[Piece], paths: Sequence[Path]) -> tuple[dict[st
     return joined, step_hours, notes
 
 
-def _variable_names(path: Path) -> list[str]:
-    with xr.open_dataset(path, engine="netcdf4", decode_cf=False) as raw:
-        return [str(name) for name in raw.data_vars]
+def _check_choices(choices: Mapping[str, Choice], pieces: Sequence[Piece], paths: Sequence[Path]) -> None:
+    seen = {(piece.found.role, piece.found.name) for piece in pieces}
+    for role, choice in choices.items():
+        if choice.name and (role, choice.name) not in seen:
+            raise WeatherError("no file has this variable",
+                               where=f"variables.{'irradiation' if role == 'sun' else role}.name", got=choice.name,
+                               wanted=f"one of {_variable_names(paths)}", cure="Correct the run file.")
+
+
+def _variable_names(paths: Sequence[Path]) -> str:
+    """Names in the first files, for an error."""
+    names: dict[str, None] = {}
+    for path in paths[:3]:
+        with xr.open_dataset(path, engine="netcdf4", decode_cf=False) as raw:
+            names |= dict.fromkeys(str(name) for name in raw.data_vars)
+    return ", ".join(names)
 
 
 def _names(parts: Sequence[Piece]) -> str:
@@ -180,19 +197,50 @@ def _sunshine(joined: _Joined, step_hours: float) -> tuple[xr.DataArray, list[st
     meaning = settle_meaning(joined.found, step_hours=step_hours, placed=placed.placed, grows=grows,
                              where=joined.where)
     values = differences(placed.values, step_hours) if meaning.accumulates else placed.values
-    return _shifted(_scaled(values, meaning), meaning.shift_steps * step_hours), [meaning.sentence]
+    sun = _shifted(_scaled(values, meaning), meaning.shift_steps * step_hours)
+    return sun, [meaning.sentence, *_check_clock(sun, step_hours)]
+
+
+def _check_clock(sun: xr.DataArray, step_hours: float) -> list[str]:
+    """Hold a few days of a few cells against the sun, so that a stamp read at the wrong end is noticed."""
+    if step_hours > _LONGEST_CHECKED_STEP_HOURS:
+        return []
+    index = sun.indexes["time"]
+    midnights = np.flatnonzero(index == index.floor("D"))
+    first = int(midnights[0]) if midnights.size else len(index)
+    steps = round(24.0 / step_hours)
+    days = min((len(index) - first) // steps, _CLOCK_DAYS)
+    part = sun.isel(time=slice(first, first + days * steps))
+    stamps = part.indexes["time"]
+    if days == 0 or not np.isclose((stamps[-1] - stamps[0]).total_seconds() / 3600.0, 24.0 * days - step_hours):
+        return []
+    sample = _sample(part, step_hours, days=days)
+    day_of_year = np.asarray(sample["time"].dt.dayofyear.values[::steps], dtype=float)
+    fits = [
+        measure_sun_offset(values, latitude=float(cell["latitude"]), longitude=float(cell["longitude"]),
+                           clock_offset_hours=0.0, day_of_year=day_of_year)
+        for cell, values in ((sample.isel(cell=i), sample.values[:, i]) for i in range(sample.sizes["cell"]))
+    ]
+    offsets = [fit.offset_minutes for fit in fits if fit is not None]
+    if not offsets:
+        return []
+    found, ideal = float(np.median(offsets)), 30.0 * step_hours
+    told = f"Sunshine follows the sun {found:.0f} minutes after the start of the step ({ideal:.0f} is ideal)."
+    if abs(found - ideal) < TOLERANCE_MINUTES:
+        return [told]
+    return [f"WARNING: {told} The stamps may mark another end of the step; check `means` and `stamp`."]
 
 
 def _scaled(values: xr.DataArray, meaning: Meaning) -> xr.DataArray:
     return values if meaning.factor == 1.0 else values * meaning.factor
 
 
-def _sample(values: xr.DataArray, step_hours: float) -> xr.DataArray:
-    """First three days of up to nine cells, computed, as (time, cell)."""
-    days = values.isel(time=slice(0, round(72.0 / step_hours) + 1))
+def _sample(values: xr.DataArray, step_hours: float, *, days: int = 3) -> xr.DataArray:
+    """First days of up to nine cells, computed, as (time, cell)."""
+    part = values.isel(time=slice(0, round(24.0 * days / step_hours) + 1))
     space = [dim for dim in values.dims if dim != "time"]
     picks = {dim: np.unique(np.linspace(0, values.sizes[dim] - 1, 5).astype(int)[1:4]) for dim in space}
-    return days.isel(picks).stack(cell=space).transpose("time", "cell").compute()
+    return part.isel(picks).stack(cell=space).transpose("time", "cell").compute()
 
 
 def _plain(joined: Mapping[str, _Joined], step_hours: float) -> tuple[dict[str, xr.DataArray], list[str]]:

@@ -35,7 +35,7 @@ class Piece:
     placed : {'bounds', None}
         'bounds' when time is already the lower time bound.
     values : DataArray
-        Dims time and latitude, longitude or site; lazy; missing values NaN.
+        Dims time and latitude, longitude or site; lazy; undeclared sentinels still in it.
     notes : tuple of str
         Sentences for the conventions.
     """
@@ -127,10 +127,19 @@ def _piece(weather: xr.Dataset, axes: Axes, found: Found, path: Path, notes: tup
         if weather[axes.time].size != 1:
             raise WeatherError(f"variable '{found.name}' has no time", where=str(path))
         variable = xr.Variable((time_dim, *variable.dims), variable.chunk().data[np.newaxis], variable.attrs)
-    values = _lazy(variable, time_dim)
-    values, said = _on_cells(values, weather, axes, time_dim, where=str(path))
-    values = values.assign_coords(time=("time", time)).assign_attrs(bounds_hours=hours)
-    return Piece(found, str(path), placed, _masked(values), notes + said)
+    chunked = variable.chunk(_chunks(variable, time_dim))
+    values, said = _on_cells(chunked, weather, axes, time_dim, where=str(path))
+    valid = _valid_range(weather.variables[found.name])
+    values = values.assign_coords(time=("time", time)).assign_attrs(bounds_hours=hours, valid_range=valid)
+    return Piece(found, str(path), placed, values, notes + said)
+
+
+def _valid_range(variable: xr.Variable) -> tuple[float, float]:
+    """Stated range of valid values; infinite where none is stated or it is in packed units."""
+    if "scale_factor" in variable.encoding or "add_offset" in variable.encoding:
+        return (-np.inf, np.inf)
+    both = variable.attrs.get("valid_range", (-np.inf, np.inf))
+    return float(variable.attrs.get("valid_min", both[0])), float(variable.attrs.get("valid_max", both[1]))
 
 
 def _time_of(weather: xr.Dataset, axes: Axes, found: Found, *, where: str) -> tuple[Any, str | None, float]:
@@ -154,44 +163,39 @@ def _hours(span: Any) -> float:
     return float(seconds) / 3600.0
 
 
-def _lazy(variable: xr.Variable, time_dim: str) -> xr.DataArray:
-    """Variable in blocks of whole stored chunks, about `_BLOCK_BYTES` each, growing along time first."""
+def _chunks(variable: xr.Variable, time_dim: str) -> dict[Any, int]:
+    """Blocks of whole stored chunks, about `_BLOCK_BYTES` each, growing along time first."""
     stored = variable.encoding.get("chunksizes") or None
     sizes = dict(variable.sizes)
     if stored is None or len(stored) != len(sizes):
-        chunks = dict(sizes)
         row = variable.dtype.itemsize * prod(size for dim, size in sizes.items() if dim != time_dim)
-        chunks[time_dim] = max(1, min(sizes[time_dim], _BLOCK_BYTES // max(row, 1)))
-    else:
-        chunks = dict(zip(sizes, stored, strict=True))
-        for dim in (time_dim, *(dim for dim in reversed(list(sizes)) if dim != time_dim)):
-            room = _BLOCK_BYTES // (variable.dtype.itemsize * prod(chunks.values()))
-            chunks[dim] = min(sizes[dim], chunks[dim] * max(1, room))
-    return xr.DataArray(variable.chunk(chunks))
+        return {**sizes, time_dim: max(1, min(sizes[time_dim], _BLOCK_BYTES // max(row, 1)))}
+    chunks = dict(zip(sizes, stored, strict=True))
+    for dim in (time_dim, *(dim for dim in reversed(list(sizes)) if dim != time_dim)):
+        room = _BLOCK_BYTES // (variable.dtype.itemsize * prod(chunks.values()))
+        chunks[dim] = min(sizes[dim], chunks[dim] * max(1, room))
+    return chunks
 
 
 def _on_cells(
-    values: xr.DataArray, weather: xr.Dataset, axes: Axes, time_dim: str, *, where: str
+    variable: xr.Variable, weather: xr.Dataset, axes: Axes, time_dim: str, *, where: str
 ) -> tuple[xr.DataArray, tuple[str, ...]]:
+    """Variable on canonical cells; its time coordinate is still to come."""
     latitude, longitude = (clean_degrees(weather[name].values) for name in (axes.latitude, axes.longitude))
     if axes.site_dim is not None:
-        values = values.rename({time_dim: "time", axes.site_dim: "site"} if time_dim != axes.site_dim else {})
-        return _at_sites(values, weather, axes, latitude, longitude), ()
-    renamed = {time_dim: "time"}
+        return _at_sites(variable.transpose(time_dim, axes.site_dim), weather, latitude, longitude), ()
+    dims = {time_dim: "time"}
     for name, axis in ((axes.latitude, "latitude"), (axes.longitude, "longitude")):
-        if weather[name].ndim == 0:
-            values = values.expand_dims(axis)
-        else:
-            renamed[str(weather[name].dims[0])] = axis
-    values = values.rename({old: new for old, new in renamed.items() if old != new and old in values.dims})
+        dims |= {str(dim): axis for dim in weather[name].dims}
+    renamed = xr.Variable([dims[str(dim)] for dim in variable.dims], variable.data)
     for axis in ("latitude", "longitude"):
-        if axis not in values.dims:
-            values = values.expand_dims(axis)
+        if axis not in renamed.dims:
+            renamed = xr.Variable((axis, *renamed.dims), renamed.data[np.newaxis])
     rows = latitude_order(latitude, where=where)
     columns, east, notes = longitude_order(longitude, where=where)
-    values = values.transpose("time", "latitude", "longitude")
-    values = values.isel(latitude=_slice(rows), longitude=_slice(columns))
-    return values.assign_coords(latitude=latitude[rows], longitude=east), tuple(notes)
+    laid = renamed.transpose("time", "latitude", "longitude").isel(latitude=_slice(rows), longitude=_slice(columns))
+    values = xr.DataArray(laid, coords={"latitude": latitude[rows], "longitude": east})
+    return values, tuple(notes)
 
 
 def _slice(order: Any) -> Any:
@@ -204,32 +208,32 @@ def _slice(order: Any) -> Any:
     return order
 
 
-def _at_sites(values: xr.DataArray, weather: xr.Dataset, axes: Axes, latitude: Any, longitude: Any) -> xr.DataArray:
+def _at_sites(variable: xr.Variable, weather: xr.Dataset, latitude: Any, longitude: Any) -> xr.DataArray:
     names = next((variable for variable in weather.variables.values()
                   if variable.attrs.get("cf_role") == "timeseries_id" and variable.size == latitude.size), None)
     raw = np.arange(latitude.size) if names is None else names.values.ravel()
     ids = [one.decode() if isinstance(one, bytes) else str(one) for one in raw]
     wrapped = clean_degrees((longitude + 180.0) % 360.0 - 180.0)
-    return values.transpose("time", "site").assign_coords(
-        site=ids, latitude=("site", latitude), longitude=("site", wrapped)
+    return xr.DataArray(
+        variable.data, dims=("time", "site"),
+        coords={"site": ids, "latitude": ("site", latitude), "longitude": ("site", wrapped)},
     )
 
 
-def _masked(values: xr.DataArray) -> xr.DataArray:
-    """Values as floats, undeclared sentinels missing."""
+def _masked(values: xr.DataArray, valid: tuple[float, float]) -> xr.DataArray:
+    """Values as floats; undeclared sentinels and values outside the stated range are missing."""
     kind = values.dtype if np.issubdtype(values.dtype, np.floating) else np.dtype(np.float64)
-    masked: xr.DataArray = xr.apply_ufunc(
-        _mask_block, values, dask="parallelized", output_dtypes=[kind], keep_attrs=True
-    )
-    return masked
+    return values.copy(data=values.data.map_blocks(_mask_block, valid=valid, dtype=kind))
 
 
-def _mask_block(block: Any) -> Any:
+def _mask_block(block: Any, *, valid: tuple[float, float]) -> Any:
     block = block if np.issubdtype(block.dtype, np.floating) else block.astype(np.float64)
     with np.errstate(invalid="ignore"):
         bad = np.abs(block) >= _IMPOSSIBLY_LARGE
         for sentinel in _SENTINELS:
             bad |= block == sentinel
+        if np.isfinite(valid).any():
+            bad |= (block < valid[0]) | (block > valid[1])
     return np.where(bad, block.dtype.type(np.nan), block) if bad.any() else block
 
 
@@ -268,7 +272,7 @@ def join_pieces(pieces: Sequence[Piece]) -> xr.DataArray:
         holders = [piece.path for piece in ordered if twice in piece.values.indexes["time"]]
         raise WeatherError("a time comes twice", where=" and ".join(holders[:2]), got=str(twice)[:16],
                            cure="Leave out one of the overlapping files.")
-    return joined
+    return _masked(joined, first.values.attrs["valid_range"])
 
 
 def _check_alike(first: Piece, other: Piece, values: xr.DataArray) -> None:
@@ -279,6 +283,8 @@ def _check_alike(first: Piece, other: Piece, values: xr.DataArray) -> None:
             got=f"'{first.found.name}' in '{first.found.units}' and '{other.found.name}' in '{other.found.units}'",
             wanted="one variable in one unit", cure="Run them apart, or choose the variable under `variables`.",
         )
+    if first.values.attrs["valid_range"] != other.values.attrs["valid_range"]:
+        raise WeatherError("files state different valid ranges", where=where, cure="Run them apart.")
     if first.placed != other.placed:
         raise WeatherError("only some of the files have time bounds", where=where, cure="Make them alike.")
     for axis in set(first.values.dims) - {"time"}:
