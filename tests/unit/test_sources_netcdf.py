@@ -57,6 +57,8 @@ HOURLY = {
                                      {"means": "since-00-UTC"}),
     "since 00 UTC, seen": lambda: (grid(hours(1.0), ssrd=(_since_midnight(TRUE.ghi), "J m**-2")), {}),
     "energy with bounds": lambda: (_with_bounds(grid(hours(1.0), ssrd=(TRUE.ghi * 3600, "J m-2")), 1.0, end=True), {}),
+    "energy with bounds, stated": lambda: (_with_bounds(grid(hours(1.0), ssrd=(TRUE.ghi * 3600, "J m-2")), 1.0,
+                                                        end=True), {"means": "hour-ending accumulation"}),
     "mean with bounds": lambda: (_with_bounds(grid(hours(0.5), rsds=(TRUE.ghi, "W m-2")), 1.0, end=False), {}),
 }
 
@@ -70,6 +72,9 @@ DAILY = {
         "units": "W m-2", "cell_methods": "area: time: mean"})), {}),
     "at the next 00 UTC": lambda: (grid(days(24), ssrd=(TRUE.irradiation * 1e6, "J m**-2")),
                                    {"means": "since-00-UTC"}),
+    "stamp at the end of the day": lambda: (grid(days(24), rsds=(TRUE.irradiation, "MJ m-2")), {"stamp": "end"}),
+    "daily mean rate of ECMWF": lambda: (grid(days(), avg_sdswrf=(TRUE.irradiation / 0.0864, "W m**-2")),
+                                         {"means": "daily-mean"}),
     "with bounds": lambda: (_with_bounds(grid(days(24), rsds=(TRUE.irradiation, "MJ m-2")), 24.0, end=True), {}),
 }
 
@@ -137,6 +142,22 @@ def test_only_accumulated_fields_move(tmp_path, write):
     np.testing.assert_allclose(found.temp_air.values[1:], TRUE.temp_air[:-1], atol=0.01)
     np.testing.assert_allclose(found.wind_speed.values[1:], WIND_FACTOR * TRUE.wind_10m[:-1], rtol=1e-3)
     assert any("temp_air is missing at 1 of 96 times" in line for line in found.attrs["conventions"])
+
+
+def test_single_and_double_precision_coordinates_are_the_same_cells(tmp_path):
+    """A tenth of a degree has no exact binary form, so 32 and 64 bits differ."""
+    tenths = np.round(25.0 + 0.1 * np.arange(3), 1)
+    thirds = 30.0 + np.arange(4) / 3
+    weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2"))
+    for name, kind in (("a", np.float32), ("b", np.float64)):
+        part = weather if name == "a" else weather.rename(rsds="tas")
+        part = part.assign_coords(latitude=tenths.astype(kind), longitude=thirds.astype(kind))
+        part[next(iter(part.data_vars))].attrs["units"] = "MJ m-2" if name == "a" else "degC"
+        part.to_netcdf(tmp_path / f"{name}.nc")
+    found = open_netcdf([str(tmp_path / "*.nc")])
+    assert found.latitude.values.tolist() == tenths.tolist()
+    assert dict(found.sizes) == {"time": DAYS, "latitude": 3, "longitude": 4}
+    assert int(found.temp_air.isnull().sum()) == 0
 
 
 def test_packed_files_are_decoded_each_by_its_own_scale(tmp_path):
@@ -251,6 +272,17 @@ def test_extremes_give_the_mean_temperature_with_a_word(tmp_path):
     np.testing.assert_allclose(found.temp_air, 25.0)
     np.testing.assert_allclose(found.temp_air_max, 30.0)
     assert any("middle of minimum and maximum" in line for line in found.attrs["conventions"])
+
+
+def test_extremes_are_known_by_their_cell_methods(tmp_path):
+    about = {"units": "K", "standard_name": "air_temperature"}
+    weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2"),
+                   low=(TRUE.irradiation * 0 + 290, {**about, "cell_methods": "time: minimum"}),
+                   high=(TRUE.irradiation * 0 + 300, {**about, "cell_methods": "time: maximum"}),
+                   mean=(TRUE.irradiation * 0 + 294, {**about, "cell_methods": "time: mean"}))
+    found = open_netcdf(whole(weather, tmp_path))
+    for name, value in (("temp_air_min", 16.85), ("temp_air_max", 26.85), ("temp_air", 20.85)):
+        np.testing.assert_allclose(found[name], value, err_msg=name)
 
 
 @pytest.mark.parametrize("sentinel", [-999.0, -9999.0, 1e15, 1e20, 9.96921e36, -1e34])

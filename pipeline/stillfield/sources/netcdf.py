@@ -176,11 +176,14 @@ def _shifted(values: xr.DataArray, hours: float) -> xr.DataArray:
 
 def _placed(joined: _Joined, step_hours: float) -> _Joined:
     """Bring daily stamps to the start of their day and mid-step stamps to the start of the step."""
+    import pandas as pd
+
     index = joined.values.indexes["time"]
     if joined.placed == "bounds":
         return joined
     if step_hours >= 24.0:
-        return _Joined(joined.found, None, joined.values.assign_coords(time=index.floor("D")), joined.where)
+        late = pd.Timedelta(seconds=1 if joined.found.stamp == "end" else 0)
+        return _Joined(joined.found, None, joined.values.assign_coords(time=(index - late).floor("D")), joined.where)
     seconds = (index - index.floor("D")).total_seconds()
     phase = float(seconds[0]) / 3600.0 % step_hours
     middle = joined.found.stamp == "middle" or (joined.found.stamp is None and np.isclose(phase, step_hours / 2.0))

@@ -66,8 +66,8 @@ _WIND_HEIGHTS = {**dict.fromkeys(["sfcwind", "ws10", "si10", "10si", "ws10m", "f
                                   "v10", "10v", "vas", "v10m"], 10.0),
                  **dict.fromkeys(["ws2m", "u2m", "v2m"], 2.0)}
 
-#: ECMWF mean rates are means of the period that ends at the stamp (ERA5 documentation, "Mean rates/fluxes").
-_END_STAMPED = {"msdwswrf", "avg_sdswrf"}
+#: Sub-daily ECMWF mean rates are means of the period that ends at the stamp (ERA5 documentation, "Mean rates/fluxes").
+END_STAMPED = frozenset({"msdwswrf", "avg_sdswrf"})
 
 
 @dataclass(frozen=True)
@@ -208,11 +208,10 @@ def _by_standard_name(variable: xr.DataArray) -> str | None:
 def _describe(weather: xr.Dataset, role: str, name: str, choice: Choice | None, how: str) -> Found:
     variable = weather[name]
     said = choice or Choice(name)
-    stamp = said.stamp or ("end" if name.lower() in _END_STAMPED else None)
     height = said.height_m if said.height_m is not None else _wind_height(weather, name)
     methods = str(variable.attrs.get("cell_methods", variable.attrs.get("cell_method", "")))
     units = said.units if said.units is not None else variable.attrs.get("units")
-    return Found(role, name, None if units is None else str(units), said.means, stamp,
+    return Found(role, name, None if units is None else str(units), said.means, said.stamp,
                  height if role.startswith("wind") else None, methods, how)
 
 

@@ -13,7 +13,7 @@ import numpy as np
 import xarray as xr
 
 from stillfield.errors import WeatherError
-from stillfield.sources.recognise import Found
+from stillfield.sources.recognise import END_STAMPED, Found
 from stillfield.sources.units import conversion, irradiation_kind
 
 _ACCUMULATIONS = {"hour-ending accumulation", "hour-starting accumulation", "since-00-UTC"}
@@ -155,7 +155,7 @@ def _rate(found: Found, factor: float, placed: str | None) -> Meaning:
         return Meaning(factor, 0, False, f"{found.name} is a mean over the time bounds of the file.")
     if placed == "middle":
         return Meaning(factor, 0, False, f"{found.name} is stamped in the middle of its step.")
-    if found.stamp == "end":
+    if found.stamp == "end" or (found.stamp is None and found.name.lower() in END_STAMPED):
         return Meaning(factor, -1, False, f"{found.name} is the mean of the step that ends at its stamp.")
     if found.stamp == "start":
         return Meaning(factor, 0, False, f"{found.name} is the mean of the step that starts at its stamp.")
