@@ -25,6 +25,11 @@ def _smaller(value: Any, ceiling: Any) -> Any:
     return lambda value, ceiling: ceiling if value > ceiling else value
 
 
+@overload(kernel.transfer, strict=False, jit_options={"forceinline": True})
+def _transfer(mean: Any, over_water: Any, over_cover: Any, cell: Any, k: Any) -> Any:
+    return kernel.moist_transfer
+
+
 @overload(kernel.note, strict=False, jit_options={"forceinline": True})
 def _note(record: Any, row: Any, i: Any, sub_step: Any, cell: Any, k: Any) -> Any:
     if isinstance(record, types.NoneType):
@@ -40,9 +45,9 @@ def _note_end(record: Any, row: Any, work: Any, start: Any, count: Any) -> Any:
 
 
 for _function in (
-    kernel.vapour, kernel.cube_root, kernel.transfer, kernel.flow, kernel.newton, kernel.full_newton,
-    kernel.dry_newton, kernel.move, kernel.after, kernel.distilled, kernel.around, kernel.refreshed,
-    kernel.ledger, kernel.clear, kernel.enter_step, kernel.advance,
+    kernel.vapour, kernel.cubic, kernel.cube_root, kernel.moist_transfer, kernel.flow, kernel.system,
+    kernel.passing, kernel.dry, kernel.aim, kernel.move, kernel.after, kernel.distilled, kernel.around,
+    kernel.refreshed, kernel.ledger, kernel.clear, kernel.cell_at, kernel.enter_step, kernel.advance,
 ):
     register_jitable(forceinline=True)(_function)
 

@@ -30,35 +30,20 @@ class Numbers(NamedTuple):
     zero: Any
     half: Any
     one: Any
-    two: Any
-    three: Any
+    third: Any
     four: Any
     eight: Any
+    twelfth: Any
     kelvin: Any  # 273.15
     vapour_low: Any  # ends of the range of the vapour polynomial [degC]
     vapour_high: Any
-    p0: Any  # vapour_pressure**(1/8) as a polynomial of degC
-    p1: Any
-    p2: Any
-    p3: Any
-    p4: Any
-    p5: Any
-    p6: Any
-    r0: Any  # first guess of the cube root as a polynomial of the fourth root
-    r1: Any
-    r2: Any
-    r3: Any
+    root: Any  # vapour pressure**(1/8) as a polynomial of degC, 7 numbers, lowest power first
+    guess: Any  # first guess of the cube root as a cubic of the fourth root, 4 numbers
     buoyancy_floor: Any  # [K]
     mean_low: Any  # ends of the range of the transfer polynomials [degC]
     mean_high: Any
-    h0: Any  # k_h as a polynomial of the mean temperature [W m-2 K-4/3]
-    h1: Any
-    h2: Any
-    h3: Any
-    e0: Any  # k_e likewise [K Pa-1]
-    e1: Any
-    e2: Any
-    e3: Any
+    convection: Any  # k_h as a cubic of the mean temperature, 4 numbers [W m-2 K-4/3]
+    evaporation: Any  # k_e likewise [K Pa-1]
     stefan: Any  # 1 where the flow of vapour counts, else 0
     radiation_inside: Any  # effective emittance times sigma [W m-2 K-4]
     radiation_outside: Any  # area ratio times emittance times sigma [W m-2 K-4]
@@ -66,9 +51,7 @@ class Numbers(NamedTuple):
     wind_base: Any  # h_w = wind_base + wind_slope v
     wind_slope: Any
     loss: Any  # U_b [W m-2 K-1]
-    latent_base: Any  # L = latent_base - latent_slope T [J kg-1]
-    latent_slope: Any
-    seconds: Any  # length of the sub-step times (1 - leak) [s]
+    distilling: Any  # (1 - leak) Δt / L(T) as a cubic of degC, 4 numbers [kg W-1]
 
 
 class Cell(NamedTuple):
@@ -144,40 +127,68 @@ def smaller(value: Any, ceiling: Any) -> Any:
 def vapour(temperature: Any, k: Numbers) -> Any:
     """Saturation pressure and its slope: eighth power of a polynomial. [Pa], [Pa K-1]."""
     t = smaller(larger(temperature, k.vapour_low), k.vapour_high)
-    root = k.p6 * t + k.p5
-    slope = k.p6 * t + root
-    root = root * t + k.p4
+    root = k.root[6] * t + k.root[5]
+    slope = k.root[6] * t + root
+    root = root * t + k.root[4]
     slope = slope * t + root
-    root = root * t + k.p3
+    root = root * t + k.root[3]
     slope = slope * t + root
-    root = root * t + k.p2
+    root = root * t + k.root[2]
     slope = slope * t + root
-    root = root * t + k.p1
+    root = root * t + k.root[1]
     slope = slope * t + root
-    root = root * t + k.p0
+    root = root * t + k.root[0]
     square = root * root
     seventh = square * square * square * root
     return seventh * root, k.eight * seventh * slope
 
 
+def cubic(coefficients: Any, x: Any) -> Any:
+    """Cubic in `x`, coefficients of the lowest power first."""
+    return ((coefficients[3] * x + coefficients[2]) * x + coefficients[1]) * x + coefficients[0]
+
+
 def cube_root(x: Any, k: Numbers) -> Any:
-    """Cube root by square roots: x^(1/4) gives x^(1/3) to 2 %, one Halley step to 1e-5."""
+    """Cube root and reciprocal, by square roots and one division.
+
+    A cubic of x^(1/4) gives x^(1/3) to 2 %, one Halley step makes that 5e-6.
+    """
     fourth = np.sqrt(np.sqrt(x))
-    root = ((k.r3 * fourth + k.r2) * fourth + k.r1) * fourth + k.r0
-    cube = root * root * root
-    return root * (cube + x + x) / (cube + cube + x)
+    guess = cubic(k.guess, fourth)
+    cube = guess * guess * guess
+    below = cube + cube + x
+    share = k.one / (below * x)
+    return guess * (cube + x + x) * x * share, below * share
 
 
 def transfer(mean: Any, over_water: Any, over_cover: Any, cell: Cell, k: Numbers) -> Any:
-    """k_h and k_e at a mean temperature; with the flow of vapour, 1/p_lm by (a + b + 4 sqrt(ab)) / 6."""
+    """k_h, k_e F and 1 / (2.654 p - P_w) at a mean temperature.
+
+    Without the flow of vapour the two are constants, which arrays take as a short cut; compiled code always
+    takes `moist_transfer`, as a choice in its innermost loop costs more than the arithmetic.
+    """
+    if k.stefan == k.zero:
+        lightness = k.one / (cell.buoyancy - over_water)
+        return cell.convection * k.convection[0], cell.evaporation * k.evaporation[0], lightness
+    return moist_transfer(mean, over_water, over_cover, cell, k)
+
+
+def moist_transfer(mean: Any, over_water: Any, over_cover: Any, cell: Cell, k: Numbers) -> Any:
+    """k_h and k_e as cubics of the mean temperature, with the Stefan factor F = p / p_lm.
+
+    1/p_lm is the mean of 1/p over the partial pressures of the air from water to cover, here by Gauss'
+    rule of two points: within 0.2 % where they differ by a factor of 2.
+    """
     t = smaller(larger(mean, k.mean_low), k.mean_high)
-    convection = cell.convection * (((k.h3 * t + k.h2) * t + k.h1) * t + k.h0)
-    evaporation = cell.evaporation * (((k.e3 * t + k.e2) * t + k.e1) * t + k.e0)
-    first = larger(cell.pressure - over_water, k.one)
-    second = larger(cell.pressure - over_cover, k.one)
-    log_mean = k.two * np.sqrt(first * second) + k.half * (first + second)
-    stefan = k.three * cell.pressure / log_mean - k.one
-    return convection, evaporation * (k.one + k.stefan * stefan)
+    convection = cell.convection * cubic(k.convection, t)
+    evaporation = cell.evaporation * cubic(k.evaporation, t)
+    air = cell.pressure - k.half * (over_water + over_cover)
+    difference = over_water - over_cover
+    square = larger(air * air - k.twelfth * difference * difference, cell.pressure)
+    lift = cell.buoyancy - over_water
+    share = k.one / (lift * square)
+    stefan = k.one + k.stefan * (cell.pressure * air * lift * share - k.one)
+    return convection, evaporation * stefan, square * share
 
 
 def flow(water: Any, cover: Any, ice: Any, cell: Cell, k: Numbers) -> Flow:
@@ -190,12 +201,13 @@ def flow(water: Any, cover: Any, ice: Any, cell: Cell, k: Numbers) -> Flow:
     cover_k = cover + k.kelvin
     warmth = water - cover
     moisture = over_water - over_cover
-    lightness = k.one / (cell.buoyancy - over_water)
+    mean = k.half * (water + cover)
+    convection, evaporation, lightness = transfer(mean, over_water, over_cover, cell, k)
     lift = moisture * water_k * lightness
     buoyancy = larger(warmth + lift, k.buoyancy_floor)
-    convection, evaporation = transfer(k.half * (water + cover), over_water, over_cover, cell, k)
-    h = convection * cube_root(buoyancy, k)
-    h_x = choose(warmth + lift > k.buoyancy_floor, h / (k.three * buoyancy), k.zero)
+    root, reciprocal = cube_root(buoyancy, k)
+    h = convection * root
+    h_x = choose(warmth + lift > k.buoyancy_floor, h * k.third * reciprocal, k.zero)
     h_w = h_x * (k.one + lightness * (over_water_w * (water_k + lift) + moisture))
     h_g = -h_x * (k.one + over_cover_g * water_k * lightness)
     evaporation = choose((moisture > k.zero) & (ice <= k.zero), evaporation, k.zero)
@@ -214,54 +226,75 @@ def flow(water: Any, cover: Any, ice: Any, cell: Cell, k: Numbers) -> Flow:
     )
 
 
-def newton(heat: Any, point: Any, state: State, weather: Weather, cell: Cell, k: Numbers) -> Any:
-    """Newton step from `point` (water, cover), with `heat` and its slopes passing between them. [K], [K]."""
-    between, between_w, between_g = heat
+class System(NamedTuple):
+    """Linear equations of a Newton step: a Δw + b Δg = right_w, -c Δw + d Δg = right_g."""
+
+    a: Any
+    b: Any
+    c: Any
+    d: Any
+    right_w: Any
+    right_g: Any
+
+
+def system(point: Any, state: State, weather: Weather, cell: Cell, k: Numbers) -> System:
+    """Equations at `point` (water, cover) with nothing passing between the two."""
     water, cover = point
     cover_k = cover + k.kelvin
     emission_g = k.radiation_outside * cover_k * cover_k * cover_k
-    a = between_w + k.loss + cell.inertia
-    d = weather.cover_slope + k.four * emission_g - between_g
-    excess_w = weather.water_gain - between - k.loss * water - cell.inertia * (water - state.water)
-    excess_g = weather.cover_gain + between - weather.cover_slope * cover - emission_g * cover_k
-    scale = k.one / (a * d + between_g * between_w)
-    return (excess_w * d - between_g * excess_g) * scale, (a * excess_g + between_w * excess_w) * scale
-
-
-def full_newton(f: Flow, point: Any, state: State, weather: Weather, cell: Cell, k: Numbers) -> Any:
-    """Newton step with all of the flow."""
-    heat = (
-        f.convected + f.radiated + f.evaporated,
-        f.convected_w + f.radiated_w + f.evaporated_w,
-        f.convected_g + f.radiated_g + f.evaporated_g,
+    return System(
+        k.loss + cell.inertia,
+        k.zero,
+        k.zero,
+        weather.cover_slope + k.four * emission_g,
+        weather.water_gain - k.loss * water - cell.inertia * (water - state.water),
+        weather.cover_gain - weather.cover_slope * cover - emission_g * cover_k,
     )
-    return newton(heat, point, state, weather, cell, k)
 
 
-def dry_newton(f: Flow, point: Any, state: State, weather: Weather, cell: Cell, k: Numbers) -> Any:
-    """Newton step without the vapour."""
-    heat = (f.convected + f.radiated, f.convected_w + f.radiated_w, f.convected_g + f.radiated_g)
-    return newton(heat, point, state, weather, cell, k)
+def passing(s: System, heat: Any, heat_w: Any, heat_g: Any) -> System:
+    """The equations with `heat` more passing from water to cover."""
+    return System(
+        s.a + heat_w, s.b + heat_g, s.c + heat_w, s.d - heat_g, s.right_w - heat, s.right_g + heat
+    )
 
 
-def move(state: State, weather: Weather, cell: Cell, k: Numbers) -> Move:
-    """Water and cover at the middle of a sub-step: trend, Newton, Newton.
+def dry(f: Flow, s: System) -> System:
+    """The equations with all of the flow but the vapour."""
+    return passing(
+        s, f.convected + f.radiated, f.convected_w + f.radiated_w, f.convected_g + f.radiated_g
+    )
 
-    Where the linearised evaporation would be negative, the last step is taken again without vapour.
-    """
+
+def aim(state: State, weather: Weather, cell: Cell, k: Numbers) -> Any:
+    """First guess of water and cover at the middle of a sub-step: the trend and a Newton step. [degC]."""
     water = state.water + k.half * state.change
     cover = state.cover + state.change
-    first = flow(water, cover, state.ice, cell, k)
-    water_move, cover_move = full_newton(first, (water, cover), state, weather, cell, k)
-    water = water + water_move
-    cover = cover + cover_move
     f = flow(water, cover, state.ice, cell, k)
-    water_move, cover_move = full_newton(f, (water, cover), state, weather, cell, k)
+    s = dry(f, system((water, cover), state, weather, cell, k))
+    s = passing(s, f.evaporated, f.evaporated_w, f.evaporated_g)
+    share = k.one / (s.a * s.d + s.b * s.c)
+    water = water + (s.right_w * s.d - s.b * s.right_g) * share
+    return water, cover + (s.a * s.right_g + s.c * s.right_w) * share
+
+
+def move(point: Any, state: State, weather: Weather, cell: Cell, k: Numbers) -> Move:
+    """Water and cover at the middle of a sub-step: a second Newton step, from `aim`.
+
+    Where the linearised evaporation would be negative, the step is taken without vapour instead.
+    """
+    water, cover = point
+    f = flow(water, cover, state.ice, cell, k)
+    s_dry = dry(f, system(point, state, weather, cell, k))
+    s = passing(s_dry, f.evaporated, f.evaporated_w, f.evaporated_g)
+    share = k.one / (s.a * s.d + s.b * s.c)
+    water_move = (s.right_w * s.d - s.b * s.right_g) * share
+    cover_move = (s.a * s.right_g + s.c * s.right_w) * share
     evaporated = f.evaporated + f.evaporated_w * water_move + f.evaporated_g * cover_move
-    water_dry, cover_dry = dry_newton(f, (water, cover), state, weather, cell, k)
     wet = evaporated > k.zero
-    water_move = choose(wet, water_move, water_dry)
-    cover_move = choose(wet, cover_move, cover_dry)
+    share = k.one / (s_dry.a * s_dry.d + s_dry.b * s_dry.c)
+    water_move = choose(wet, water_move, (s_dry.right_w * s_dry.d - s_dry.b * s_dry.right_g) * share)
+    cover_move = choose(wet, cover_move, (s_dry.a * s_dry.right_g + s_dry.c * s_dry.right_w) * share)
     evaporated = choose(wet, evaporated, k.zero * evaporated)
     return Move(f, water + water_move, cover + cover_move, water_move, cover_move, evaporated)
 
@@ -276,7 +309,7 @@ def after(m: Move, state: State, cell: Cell, k: Numbers) -> State:
 
 def distilled(m: Move, k: Numbers) -> Any:
     """Distillate of a sub-step. [kg m-2]."""
-    return m.evaporated * k.seconds / (k.latent_base - k.latent_slope * m.water)
+    return m.evaporated * cubic(k.distilling, m.water)
 
 
 def around(absorbed: Any, cover_absorbed: Any, temp_air: Any, wind: Any, temp_sky: Any, k: Numbers) -> Weather:
@@ -370,16 +403,21 @@ def enter_step(work: Any, forcing: Any, f: Any, start: Any, count: Any, k: Numbe
         work[6, c] = weather.cover_slope
 
 
+def cell_at(cells: Any, i: Any) -> Cell:
+    """Numbers of cell `i`."""
+    return Cell(
+        cells[0, i], cells[1, i], cells[2, i], cells[3, i], cells[4, i], cells[5, i], cells[6, i], cells[7, i]
+    )
+
+
 def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any, count: Any) -> None:
     """One sub-step of the cells of a block: the loop in which the processor takes several cells at once."""
     for c in range(count):
-        i = start + c
         old = State(work[0, c], work[1, c], work[2, c], work[3, c])
         weather = Weather(work[4, c], work[5, c], work[6, c])
-        cell = Cell(
-            cells[0, i], cells[1, i], cells[2, i], cells[3, i], cells[4, i], cells[5, i], cells[6, i], cells[7, i]
-        )
-        moved = move(old, weather, cell, k)
+        i = start + c
+        cell = cell_at(cells, i)
+        moved = move(aim(old, weather, cell, k), old, weather, cell, k)
         new = after(moved, old, cell, k)
         work[0, c] = new.water
         work[1, c] = new.change

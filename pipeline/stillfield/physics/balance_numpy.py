@@ -71,7 +71,7 @@ def _march_block(
         weather = kernel.around(absorbed, cover_absorbed, temp_air, wind, temp_sky, k)
         state = kernel.refreshed(state, temp_air, k)
         for _ in range(substeps):
-            moved = kernel.move(state, weather, cell, k)
+            moved = kernel.move(kernel.aim(state, weather, cell, k), state, weather, cell, k)
             new = kernel.after(moved, state, cell, k)
             if row >= 0:
                 daily[row] += kernel.distilled(moved, k)

@@ -37,7 +37,7 @@ from stillfield.physics.brine import (
 from stillfield.physics.convection import BUOYANCY_FLOOR, BUOYANCY_PRESSURE_RATIO, MEAN_RANGE_C, transfer
 from stillfield.physics.moist_air import STANDARD_PRESSURE_PA
 from stillfield.physics.still import Still
-from stillfield.physics.vapour import KELVIN, LATENT_BASE, LATENT_SLOPE, ROOT_POLYNOMIAL, ROOT_RANGE_C, Field
+from stillfield.physics.vapour import KELVIN, LATENT_RECIPROCAL, ROOT_POLYNOMIAL, ROOT_RANGE_C, Field
 from stillfield.physics.wind import WIND_BASE, WIND_SLOPE, wind_coefficient
 
 Array = NDArray[np.floating[Any]]
@@ -223,7 +223,7 @@ def simulate(  # noqa: PLR0913
     _march(engine)(
         fields,
         cells.astype(dtype),
-        Numbers(*(dtype.type(number) for number in k)),
+        _in_precision(k, dtype),
         (plan.order, rows, per_step),
         daily,
         frozen,
@@ -290,11 +290,26 @@ def _numbers(still: Still, pressure: float, seconds: float) -> Numbers:
     """Constants of a run."""
     relation = transfer(still.heat_transfer, pressure)
     area_ratio = still.cover_area_ratio
+    per_watt = seconds * (1.0 - still.state.leak)
     inside = 1.0 / (1.0 / still.water_emittance + 1.0 / still.cover.emittance - 1.0)
     return Numbers(
-        0.0, 0.5, 1.0, 2.0, 3.0, 4.0, 8.0,
-        KELVIN, *ROOT_RANGE_C, *ROOT_POLYNOMIAL, *CUBE_ROOT_GUESS,
-        BUOYANCY_FLOOR, *MEAN_RANGE_C, *relation.convection, *relation.evaporation,
+        zero=0.0,
+        half=0.5,
+        one=1.0,
+        third=1.0 / 3.0,
+        four=4.0,
+        eight=8.0,
+        twelfth=1.0 / 12.0,
+        kelvin=KELVIN,
+        vapour_low=ROOT_RANGE_C[0],
+        vapour_high=ROOT_RANGE_C[1],
+        root=ROOT_POLYNOMIAL,
+        guess=CUBE_ROOT_GUESS,
+        buoyancy_floor=BUOYANCY_FLOOR,
+        mean_low=MEAN_RANGE_C[0],
+        mean_high=MEAN_RANGE_C[1],
+        convection=relation.convection,
+        evaporation=relation.evaporation,
         stefan=float(relation.stefan),
         radiation_inside=inside * STEFAN_BOLTZMANN,
         radiation_outside=area_ratio * still.cover.emittance * STEFAN_BOLTZMANN,
@@ -302,9 +317,14 @@ def _numbers(still: Still, pressure: float, seconds: float) -> Numbers:
         wind_base=WIND_BASE,
         wind_slope=WIND_SLOPE,
         loss=still.state.loss_w_m2_k,
-        latent_base=LATENT_BASE,
-        latent_slope=LATENT_SLOPE,
-        seconds=seconds * (1.0 - still.state.leak),
+        distilling=tuple(per_watt * number for number in LATENT_RECIPROCAL),
+    )
+
+
+def _in_precision(numbers: Numbers, dtype: np.dtype[Any]) -> Numbers:
+    """Constants as scalars of `dtype`."""
+    return Numbers(
+        *(tuple(map(dtype.type, part)) if isinstance(part, tuple) else dtype.type(part) for part in numbers)
     )
 
 
