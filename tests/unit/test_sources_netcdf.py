@@ -348,6 +348,24 @@ def test_opening_reads_no_weather(tmp_path, monkeypatch):
     assert read.count((DAYS, 3, 4)) == 2
 
 
+def test_impossible_weather_is_refused_when_it_is_computed(tmp_path):
+    values = TRUE.irradiation.copy()
+    values[3, 2, 1] = 45.0
+    weather = grid(days(), rsds=(values, "MJ m-2"), tas=(TRUE.irradiation * 0 + 20, "degC"))
+    found = open_netcdf(whole(weather, tmp_path))
+    assert float(found.temp_air.mean()) == pytest.approx(20.0)
+    with pytest.raises(WeatherError, match=r"w\.nc, time 2010-03-13T00:00, latitude 9, longitude -0\.5: more sunshine "
+                                           r"than reaches the top of the atmosphere \(got 45\.00 MJ m-2 in the day"):
+        found.irradiation.compute()
+
+
+def test_a_total_taken_for_a_mean_is_refused_when_it_is_computed(tmp_path):
+    weather = grid(days(), rsds=(TRUE.irradiation / 0.0864 * 2, "W m-2"))  # a mean of daylight hours
+    found = open_netcdf(whole(weather, tmp_path), variables={"irradiation": {"name": "rsds", "means": "daily-mean"}})
+    with pytest.raises(WeatherError, match=r"check the units|Check the units and what the sunshine `means`"):
+        found.compute()
+
+
 def _long_sky(shift: float) -> xr.Dataset:
     """Twelve clear days of March, stamps moved by `shift` hours from the start of the hour they stand for."""
     hour = np.arange(12 * 24)

@@ -1,7 +1,7 @@
 """Physical gates: weather that cannot be true is refused, and the first breach is named.
 
-A gate works on weather in memory: a whole small dataset, or one block of a large one as it is read, so that
-nothing is read twice. Counts of several blocks add up.
+A gate works on weather in memory, a whole small dataset or one block of a large one as it is read, so that
+nothing is read twice; counts of several blocks add up. On lazy weather it becomes part of the computation.
 """
 
 from __future__ import annotations
@@ -74,7 +74,7 @@ def _added(first: dict[str, int], second: dict[str, int]) -> dict[str, int]:
 
 
 def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, GateCounts]:
-    """Check weather in memory against physical bounds and clip noise below zero.
+    """Check weather against physical bounds and clip noise below zero.
 
     Every variable of the vocabulary is held against its bounds, and the irradiation of each day against
     the extraterrestrial one at its latitude (with a margin of 5 % and 0.6 MJ m-2).
@@ -82,15 +82,17 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
     Parameters
     ----------
     weather : xarray.Dataset
-        Vocabulary names and units, coordinates ``time`` and ``latitude``; already computed.
+        Vocabulary names and units, coordinates ``time`` and ``latitude``.
     where : str
         File or block, for errors.
 
     Returns
     -------
     weather : xarray.Dataset
-        The same, small negative irradiance set to 0.
+        The same, small negative irradiance set to 0. Of lazy weather each block is checked when it is
+        computed, and days that lie across two blocks are held against the bounds of a step only.
     counts : GateCounts
+        Empty for lazy weather: gate its computed blocks again to count.
 
     Raises
     ------
@@ -101,6 +103,11 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
     table = DAY_WEATHER if daily else STEP_WEATHER
     counts = GateCounts()
     changed: dict[str, xr.DataArray] = {}
+    if any(variable.chunks is not None for variable in weather.data_vars.values()):
+        for name in (name for name in table if name in weather.data_vars):
+            one = weather[[name]]
+            changed[name] = xr.map_blocks(_gated_block, one, kwargs={"where": where}, template=one)[name]
+        return weather.assign(changed), counts
     for name in (name for name in table if name in weather.data_vars):
         values, clipped = _check_bounds(weather[name], table[name], where=where)
         counts += GateCounts(
@@ -111,6 +118,10 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
     if "latitude" in weather.coords:
         _check_sunshine(result, daily=daily, where=where)
     return result, counts
+
+
+def _gated_block(block: xr.Dataset, *, where: str) -> xr.Dataset:
+    return gate(block, where=where)[0]
 
 
 def _check_bounds(values: xr.DataArray, quantity: Quantity, *, where: str) -> tuple[xr.DataArray, int]:

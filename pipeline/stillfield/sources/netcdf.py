@@ -1,7 +1,7 @@
 """Gridded or station weather in CF NetCDF files, daily or sub-daily, opened lazily.
 
-Only headers, coordinates and a few days of a few cells are read here; the weather itself is read when the
-dataset is computed. Run `gates.gate` on each block that is.
+Only headers, coordinates and a few days of a few cells are read here; the weather itself is read, and held
+against the physical gates, when the dataset is computed.
 """
 
 from __future__ import annotations
@@ -18,6 +18,7 @@ from stillfield.errors import WeatherError
 from stillfield.physics.wind import wind_speed_at_2m
 from stillfield.sources.alignment import TOLERANCE_MINUTES, measure_sun_offset
 from stillfield.sources.file_proof import prove_whole
+from stillfield.sources.gates import gate
 from stillfield.sources.grid_axes import snapped
 from stillfield.sources.locate import locate
 from stillfield.sources.netcdf_pieces import Piece, join_pieces, read_pieces
@@ -365,7 +366,7 @@ def _assemble(
         "origin": f"{'Daily' if daily else f'{step_hours:g}-hourly'} weather read from {names}.",
         "conventions": [*notes, *said, *also, *gaps],
     }
-    return result
+    return gate(result, where=names)[0]
 
 
 def _gaps(weather: xr.Dataset, step_hours: float) -> list[str]:
