@@ -53,6 +53,7 @@ HOURLY = {
     "energy of the hour after": lambda: (grid(hours(), ssrd=(TRUE.ghi * 3600, "J m-2")),
                                          {"means": "hour-starting accumulation"}),
     "Wh of the hour": lambda: (grid(hours(), ghi=(TRUE.ghi, "Wh m-2")), {"means": "hour-starting accumulation"}),
+    "energy of the hour around": lambda: (grid(hours(0.5), ssrd=(TRUE.ghi * 3600, "J m-2")), {}),
     "since 00 UTC, stated": lambda: (grid(hours(1.0), ssrd=(_since_midnight(TRUE.ghi), "J m**-2")),
                                      {"means": "since-00-UTC"}),
     "since 00 UTC, seen": lambda: (grid(hours(1.0), ssrd=(_since_midnight(TRUE.ghi), "J m**-2")), {}),

@@ -125,17 +125,17 @@ def _hourly(
             raise _contradiction(found, kind, step_hours, place)
         factor = conversion(found.units, "W m-2", where=place)[0]
         return _rate(found, factor, placed)
-    if means is None and placed == "bounds":
-        means = "hour-starting accumulation"
     if means is None and grows:
         means = "since-00-UTC"
+    if means is None and placed is not None:
+        means = "hour-starting accumulation"
     if means is None:
         raise WeatherError(
             f"the units '{found.units}' at a {step_hours:g}-hourly step do not say of which period the energy is",
             where=place, wanted=_HOURLY_CHOICES,
             cure="Set variables.irradiation.means in the run file; the provider's documentation tells.",
         )
-    if means not in _ACCUMULATIONS:
+    if means not in _ACCUMULATIONS or (means == "since-00-UTC" and placed is not None):
         raise _contradiction(found, kind, step_hours, place)
     if grows is not None and grows != (means == "since-00-UTC"):
         raise WeatherError(
@@ -145,7 +145,7 @@ def _hourly(
     factor = conversion(found.units, "MJ m-2", where=place)[0] * 1e6 / (step_hours * 3600.0)
     if means == "since-00-UTC":
         return Meaning(factor, -1, True, f"{found.name} accumulates from 00 UTC; differences were taken.")
-    ends = means == "hour-ending accumulation" and placed != "bounds"
+    ends = means == "hour-ending accumulation" and placed is None
     sentence = f"{found.name} is the energy of the step that {'ends' if ends else 'starts'} at its stamp."
     return Meaning(factor, -1 if ends else 0, False, sentence)
 
