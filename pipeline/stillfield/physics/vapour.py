@@ -137,7 +137,7 @@ def saturation_pressure_fao56(temperature: Field) -> Field:
 def latent_heat(temperature: Field) -> Field:
     """Heat that evaporates a kilogram of water, L = 2501 - 2.361 T kJ/kg.
 
-    Within 1.5 kJ/kg of the steam tables from 0 to 60 degC, within 5 kJ/kg to 90 degC.
+    Within 1.7 kJ/kg of CoolProp from 0 to 60 degC, within 6.1 kJ/kg (0.3 %) to 90 degC.
 
     Source: FAO-56, eq. 3-1 of its Annex 3 (after Harrison 1963), in kJ.
 
