@@ -51,6 +51,13 @@ for _function in (
 ):
     register_jitable(forceinline=True)(_function)
 
-#: `balance_kernel.march_cells`, compiled at its first call and kept in numba's cache. Divisions are not
-#: checked, because a check per division would keep the processor from working on several cells at once.
-march = njit(error_model="numpy", nogil=True, cache=True)(kernel.march_cells)
+#: How the march is compiled. Divisions are not checked, because a check per division would keep the processor
+#: from working on several cells at once. The cache follows changes of `balance_kernel`, not of this module:
+#: after a change here, delete the ``*.nbi`` files beside it.
+OPTIONS = {"error_model": "numpy", "nogil": True}
+
+try:
+    #: `balance_kernel.march_cells`, compiled at its first call.
+    march = njit(cache=True, **OPTIONS)(kernel.march_cells)
+except RuntimeError:  # no folder to keep the cache in: compile anew in every process
+    march = njit(**OPTIONS)(kernel.march_cells)

@@ -430,7 +430,7 @@ def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any
 
 def note(record: Any, row: Any, i: Any, sub_step: Any, cell: Cell, k: Numbers) -> None:
     """Add a sub-step of cell `i` to the record; left out of the compiled code where there is none."""
-    if row >= 0:
+    if record is not None and row >= 0:
         moved, old, new = sub_step
         entries = ledger(moved, old, new, cell, k)
         for channel in range(7):
@@ -439,7 +439,7 @@ def note(record: Any, row: Any, i: Any, sub_step: Any, cell: Cell, k: Numbers) -
 
 def note_end(record: Any, row: Any, work: Any, start: Any, count: Any) -> None:
     """Write the state at the end of a step to the record; left out of the compiled code likewise."""
-    if row >= 0:
+    if record is not None and row >= 0:
         for c in range(count):
             record[7, row, start + c] = work[0, c]
             record[8, row, start + c] = work[3, c]
