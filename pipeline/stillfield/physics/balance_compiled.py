@@ -51,13 +51,10 @@ for _function in (
 ):
     register_jitable(forceinline=True)(_function)
 
-#: How the march is compiled. Divisions are not checked, because a check per division would keep the processor
-#: from working on several cells at once. The cache follows changes of `balance_kernel`, not of this module:
-#: after a change here, delete the ``*.nbi`` files beside it.
-OPTIONS = {"error_model": "numpy", "nogil": True}
-
 try:
-    #: `balance_kernel.march_cells`, compiled at its first call.
-    march = njit(cache=True, **OPTIONS)(kernel.march_cells)
+    #: `balance_kernel.march_cells`, compiled at its first call. Divisions are not checked, because a check per
+    #: division would keep the processor from working on several cells at once. The cache follows changes of
+    #: `balance_kernel`, not of this module: after a change here, delete the ``*.nbi`` files in ``__pycache__``.
+    march = njit(error_model="numpy", nogil=True, cache=True)(kernel.march_cells)
 except RuntimeError:  # no folder to keep the cache in: compile anew in every process
-    march = njit(**OPTIONS)(kernel.march_cells)
+    march = njit(error_model="numpy", nogil=True)(kernel.march_cells)

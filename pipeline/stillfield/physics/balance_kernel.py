@@ -312,7 +312,9 @@ def distilled(m: Move, k: Numbers) -> Any:
     return m.evaporated * cubic(k.distilling, m.water)
 
 
-def around(absorbed: Any, cover_absorbed: Any, temp_air: Any, wind: Any, temp_sky: Any, k: Numbers) -> Weather:
+def around(
+    absorbed: Any, cover_absorbed: Any, temp_air: Any, wind: Any, temp_sky: Any, k: Numbers
+) -> Weather:
     """Weather of a step in the form of the balance."""
     slope = k.area_ratio * (k.wind_base + k.wind_slope * wind)
     sky_k = temp_sky + k.kelvin

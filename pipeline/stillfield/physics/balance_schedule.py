@@ -78,7 +78,9 @@ def schedule(
     [-1, -1, -1, 0, 0, 1, 1]
     """
     if not 0.0 <= day_start_hour < 24.0:
-        raise MethodError("the yield day starts at an hour that does not exist", got=day_start_hour, wanted="0 to 24")
+        raise MethodError(
+            "the yield day starts at an hour that does not exist", got=day_start_hour, wanted="0 to 24"
+        )
     days = steps // steps_per_day
     skipped = round(day_start_hour * steps_per_day / 24.0)
     first_day, last_day = np.arange(steps_per_day), np.arange(steps - steps_per_day, steps)

@@ -36,7 +36,8 @@ def clear_sky_emissivity(temp_dew: Field, solar_hour: Field) -> Field:
     0.711
     """
     dew = np.maximum(temp_dew, -0.0056 / (2.0 * 7.3e-5))
-    emissivity = 0.711 + 0.0056 * dew + 7.3e-5 * dew**2 + 0.013 * np.cos(np.pi / 12.0 * np.asarray(solar_hour))
+    daily = 0.013 * np.cos(np.pi / 12.0 * np.asarray(solar_hour))
+    emissivity = 0.711 + 0.0056 * dew + 7.3e-5 * dew**2 + daily
     result: Field = np.minimum(emissivity, 1.0)
     return result
 

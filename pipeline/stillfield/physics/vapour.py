@@ -31,7 +31,7 @@ WAGNER_PRUSS = (
 #: L = LATENT_BASE - LATENT_SLOPE T. [J kg-1], [J kg-1 K-1]
 LATENT_BASE = 2.501e6
 LATENT_SLOPE = 2361.0
-#: 1/L as a cubic of the temperature in degC, relative least squares from -20 to 100 degC, within 3e-6. [kg J-1]
+#: 1/L as a cubic of the temperature in degC, within 3e-6 from -20 to 100 degC. [kg J-1]
 LATENT_RECIPROCAL = (3.99840527e-7, 3.77460902e-10, 3.53953807e-13, 3.93196756e-16)
 
 #: Range in which `ROOT_POLYNOMIAL` was fitted; colder or hotter is held at the end. [degC]
