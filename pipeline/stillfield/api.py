@@ -2,7 +2,7 @@
 
 >>> import stillfield as sf
 >>> weather = sf.open_weather("pvlib:data/12839.tm2")
->>> still = sf.load_still("single-slope-glass")
+>>> still = sf.load_still("config/stills/single-slope-glass.yaml")
 >>> monthly = sf.monthly_yield(weather, still, method="rule")
 >>> round(float(monthly["annual_yield"][0]))
 842

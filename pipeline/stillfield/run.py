@@ -7,7 +7,9 @@ from pathlib import Path
 from typing import Any
 
 import pandas as pd
+import xarray as xr
 
+from stillfield.methods import Method
 from stillfield.methods.baselines import ConstantEfficiency
 from stillfield.methods.registry import get_method
 from stillfield.physics.still import Still
@@ -19,7 +21,7 @@ from stillfield.stages.estimate import estimate
 from stillfield.stages.prepare import Prepared, prepare
 from stillfield.stages.rank import rank_places
 from stillfield.stages.read import Box, describe_inputs, read_places, read_weather
-from stillfield.stages.write import Results, write_results
+from stillfield.stages.write import Results, check_outputs, write_results
 
 log = logging.getLogger(__name__)
 
@@ -44,6 +46,11 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     StillfieldError
         With what, where, got, wanted and cure.
     """
+    folders = [
+        settings.folder if len(settings.stills) == 1 else settings.folder / still.name for still in settings.stills
+    ]
+    land = None if settings.map.land is None else settings.map.land.path
+    check_outputs(folders, land=land)
     places = None
     if settings.places is not None:
         places = read_places(settings.places.table.path, settings.places.columns.given())
@@ -58,8 +65,7 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     files += [str(named.path) for named in (settings.places and settings.places.table, settings.map.land) if named]
     inputs = describe_inputs([*files, *(str(choice.path) for choice in settings.still)], Path(run_file).parent)
     summaries = []
-    for still in settings.stills:
-        folder = settings.folder if len(settings.stills) == 1 else settings.folder / still.name
+    for still, folder in zip(settings.stills, folders, strict=True):
         summaries.append(_one_still(settings, still, prepared, places=places, inputs=inputs, folder=folder))
     return Summary(
         "\n".join(summary.text for summary in summaries),
@@ -72,8 +78,9 @@ def _one_still(
     inputs: dict[str, dict[str, Any]], folder: Path,
 ) -> Summary:
     log.info("estimating %s by method %s", still.name, settings.method)
+    method = get_method(settings.method)
     daily = estimate(
-        prepared.daily, still, get_method(settings.method), rule=ConstantEfficiency(settings.rule.efficiency),
+        prepared.daily, still, method, rule=ConstantEfficiency(settings.rule.efficiency),
         steps=prepared.steps,
     )
     monthly = aggregate(daily, min_valid_days_share=settings.missing.min_valid_days_share)
@@ -85,14 +92,28 @@ def _one_still(
             weights=settings.rank.weights.by_criterion(),
         )
     title = f"Solar still yield, {settings.name}"
-    line = f"Still {still.name}, {still.condition}; method {settings.method}."
-    remarks = (str(monthly.attrs.get("origin", "")), *map(str, monthly.attrs.get("conventions", [])))
+    condition = f", {still.condition}" if method.knows_condition else ""
+    line = f"Still {still.name}{condition}; method {method.name}."
+    remarks = _remarks(monthly, method)
     log.info("writing to %s", folder)
     files = write_results(
         folder,
         Results(
             monthly, ranked, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
-            inputs, land=settings.map.land and settings.map.land.path, remarks=tuple(filter(None, remarks)),
+            inputs, land=None if settings.map.land is None else settings.map.land.path, remarks=remarks,
         ),
     )
-    return summarise(monthly, ranked, title=title, method_line=line, folder=folder, files=files)
+    return summarise(
+        monthly, ranked, title=title, method_line=line, folder=folder, files=files,
+        remarks=[remark for remark in remarks if "WARNING" in remark],
+    )
+
+
+def _remarks(monthly: xr.Dataset, method: Method) -> tuple[str, ...]:
+    """Sentences that travel with the results: where they come from, what was assumed, what they cannot tell."""
+    remarks = [str(monthly.attrs.get("origin", "")), *map(str, monthly.attrs.get("conventions", []))]
+    if not method.knows_condition:
+        remarks.append(f"Method {method.name} knows no condition of the still: low and high equal the central figures.")
+    if monthly.attrs.get("record") == "typical-year":
+        remarks.append("A typical year holds no poor year, so these figures do not tell how low one falls.")
+    return tuple(filter(None, remarks))

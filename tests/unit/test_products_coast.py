@@ -10,7 +10,7 @@ import numpy as np
 import pytest
 from shapely.geometry import Point, Polygon
 
-from stillfield.errors import OutputError
+from stillfield.errors import StillfieldError
 from stillfield.products.coast import coastline, land_in, read_land, world_land
 
 DATA = files("stillfield.products") / "data"
@@ -118,5 +118,5 @@ def test_own_land_from_geojson(tmp_path):
 def test_what_is_no_land_is_refused_by_name(tmp_path, content):
     path = tmp_path / "land.geojson"
     path.write_text(content, encoding="utf-8")
-    with pytest.raises(OutputError, match=r"land\.geojson"):
+    with pytest.raises(StillfieldError, match=r"land\.geojson"):
         read_land(path)

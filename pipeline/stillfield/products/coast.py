@@ -17,7 +17,7 @@ from typing import Any, TypeAlias
 import numpy as np
 from numpy.typing import NDArray
 
-from stillfield.errors import OutputError
+from stillfield.errors import StillfieldError
 
 Ring: TypeAlias = NDArray[np.float64]
 #: Outer ring first, then the holes; each ring has shape (n, 2): longitude, latitude [deg].
@@ -124,7 +124,7 @@ def read_land(land: str | Path | Iterable[Any]) -> tuple[Polygon, ...]:
 
     Raises
     ------
-    OutputError
+    StillfieldError
         When the file is no GeoJSON or holds no polygon.
 
     Examples
@@ -137,7 +137,7 @@ def read_land(land: str | Path | Iterable[Any]) -> tuple[Polygon, ...]:
     polygons = [polygon for geometry in geometries for polygon in _parts(geometry)]
     if geometries and not polygons:
         where = str(land) if isinstance(land, str | Path) else "land"
-        raise OutputError("no land area to draw", where=where, wanted="polygons or multipolygons")
+        raise StillfieldError("no land area to draw", where=where, wanted="polygons or multipolygons")
     return tuple(
         tuple(np.asarray(ring.coords, dtype=float)[:, :2] for ring in (part.exterior, *part.interiors))
         for part in polygons
@@ -153,8 +153,8 @@ def _geojson_geometries(path: Path) -> list[Any]:
         features = content["features"] if content["type"] == "FeatureCollection" else [content]
         shapes = [shape(feature.get("geometry") or feature) for feature in features]
     except (ValueError, KeyError, TypeError, AttributeError, ShapelyError) as fault:
-        raise OutputError("not readable as GeoJSON", where=path.name, got=type(fault).__name__,
-                          cure="Give polygons in degrees, WGS 84.") from fault
+        raise StillfieldError("not readable as GeoJSON", where=path.name, got=type(fault).__name__,
+                              cure="Give polygons in degrees, WGS 84.") from fault
     return shapes
 
 

@@ -76,22 +76,26 @@ def _litres(monthly: xr.Dataset) -> list[str]:
     annual = monthly["annual_yield"].to_numpy().ravel()
     known = np.isfinite(annual)
     if not known.any():
-        return ["No cell has a whole year of yields; look at days_used."]
+        return ["No cell has litres for all twelve months; days_used in monthly_yield.nc tells which months lack days."]
     worst = monthly["worst_month_yield"].to_numpy().ravel()[known]
     low = monthly["annual_yield_low"].to_numpy().ravel()[known]
     high = monthly["annual_yield_high"].to_numpy().ravel()[known]
     rule = monthly["monthly_yield_rule"].sum("month", skipna=False).to_numpy().ravel()[known]
-    what = "sites" if "site" in monthly.dims else "cells"
+    what = "site" if "site" in monthly.dims else "cell"
+    over = f"median of {len(worst)} {what}s (range over them)" if len(worst) > 1 else f"1 {what}"
+    # A method that knows no condition gives the same at both ends; that is no band.
+    band = f"   condition band {np.median(low):.0f} to {np.median(high):.0f}" if (low < high).any() else ""
     return [
-        f"Litres per m2 of basin, median of {int(known.sum())} {what} (range over them):",
-        f"  a year        {_middle(annual[known])}   condition band {np.median(low):.0f} to {np.median(high):.0f}",
+        f"Litres per m2 of basin, {over}:",
+        f"  a year        {_middle(annual[known])}{band}",
         f"  worst month   {_middle(worst, 2)} a day",
         f"  rule, a year  {_middle(rule)}   constant efficiency, for comparison",
     ]
 
 
 def _middle(values: np.ndarray, decimals: int = 0) -> str:
-    return f"{np.median(values):.{decimals}f} ({values.min():.{decimals}f} to {values.max():.{decimals}f})"
+    spread = f" ({values.min():.{decimals}f} to {values.max():.{decimals}f})" if len(values) > 1 else ""
+    return f"{np.median(values):.{decimals}f}{spread}"
 
 
 def _places(ranked: pd.DataFrame) -> list[str]:
@@ -100,10 +104,12 @@ def _places(ranked: pd.DataFrame) -> list[str]:
     width = max([len(str(name)) for name in first["name"]] + [5])
     for row in first.to_dict("records"):
         month = MONTH_NAMES[int(row["worst_month"]) - 1]
+        least, most = row["area_per_person_at_high_yield_m2"], row["area_per_person_at_low_yield_m2"]
+        band = f" ({least:.1f} to {most:.1f})" if least < most else ""
         lines.append(
-            f"  {row['rank']:>2}  {row['name']:<{width}}  {row['worst_month_yield_l_m2_day']:.2f} L a day and m2 in {month}, "
-            f"{row['area_per_person_m2']:.1f} m2 a person "
-            f"({row['area_per_person_at_high_yield_m2']:.1f} to {row['area_per_person_at_low_yield_m2']:.1f})"
+            f"  {row['rank']:>2}  {row['name']:<{width}}  "
+            f"{row['worst_month_yield_l_m2_day']:.2f} L/m2 a day in {month}: "
+            f"{row['area_per_person_m2']:.1f} m2 a person{band}"
         )
     without = int(ranked["rank"].isna().sum())
     if without:

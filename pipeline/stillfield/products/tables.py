@@ -29,8 +29,10 @@ _DECIMALS: tuple[tuple[tuple[str, ...], int], ...] = (
     (("_m2", "_km"), 2),
     (("_m", "_percent", "_days"), 1),
     (("_share", "_probability"), 3),
+    (("score",), 4),
 )
-_OTHER_DECIMALS = 4
+#: Numbers without a unit above (people, grams per kilogram) stand as they are, to at most so many decimals.
+_MOST_DECIMALS = 4
 
 _MONTH_KEYS = tuple(name[:3].lower() for name in MONTH_NAMES)
 
@@ -161,9 +163,9 @@ def _rounded(values: NDArray[Any]) -> NDArray[np.float64]:
 def write_csv(frame: pd.DataFrame, path: str | Path, *, columns: Sequence[str] | None = None) -> None:
     """Write a table as plain CSV: UTF-8, commas, decimal points, one heading line.
 
-    Numbers get the decimals their unit deserves (litres 2, degrees 5); missing is empty; truth values are
-    yes and no. Text that a spreadsheet would run as a formula gets an apostrophe in front; numbers stay
-    numbers, negative ones too.
+    Numbers get the decimals their unit deserves (litres 2, degrees 5), people and the like as many as they
+    have; missing is empty; truth values are yes and no. Text that a spreadsheet would run as a formula gets
+    an apostrophe in front; numbers stay numbers, negative ones too.
 
     Parameters
     ----------
@@ -202,11 +204,11 @@ def write_csv(frame: pd.DataFrame, path: str | Path, *, columns: Sequence[str] |
 
 
 def _text_cells(column: pd.Series[Any], name: str) -> list[str]:
-    decimals = next((count for ends, count in _DECIMALS if name.endswith(ends)), _OTHER_DECIMALS)
+    decimals = next((count for ends, count in _DECIMALS if name.endswith(ends)), None)
     return [_cell(value, decimals) for value in column.tolist()]
 
 
-def _cell(value: object, decimals: int) -> str:
+def _cell(value: object, decimals: int | None) -> str:
     if value is None or value is pd.NA or value is pd.NaT:
         return ""
     if isinstance(value, bool | np.bool_):
@@ -216,7 +218,8 @@ def _cell(value: object, decimals: int) -> str:
     if isinstance(value, float | np.floating):
         if not np.isfinite(value):
             return ""
-        text = f"{float(value):.{decimals}f}"
+        text = f"{float(value):.{_MOST_DECIMALS if decimals is None else decimals}f}"
+        text = text.rstrip("0").rstrip(".") if decimals is None else text
         # A loss too small to print is zero, not minus zero.
         return text.lstrip("-") if float(text) == 0.0 else text
     return _harmless(str(value))

@@ -67,7 +67,7 @@ def rank_places(
     Returns
     -------
     pandas.DataFrame
-        Ranked, first to visit first, every place kept; the columns are explained in `stillfield.products.place_columns`.
+        Ranked, first to visit first, every place kept; `stillfield.products.place_columns` explains the columns.
 
     Raises
     ------
@@ -116,7 +116,9 @@ def _flat_cells(monthly: xr.Dataset) -> tuple[xr.Dataset, NDArray[np.bool_]]:
     valid = flat["worst_month"].notnull().to_numpy()
     if not valid.any():
         raise PlacesError(
-            "no cell of the region has a whole year of yields", cure="Look at days_used in the rasters."
+            "no cell has litres for all twelve months, so no place can be sized on its worst month",
+            where="weather",
+            cure="Give weather for every month of a year, lower missing.min_valid_days_share, or leave places out.",
         )
     return flat, valid
 

@@ -6,6 +6,8 @@ the files moved in, the manifest last. A folder with a manifest is therefore a f
 
 from __future__ import annotations
 
+import json
+import os
 import shutil
 from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
@@ -25,6 +27,8 @@ from stillfield.products.tables import CELL_COLUMNS, cells_frame, write_csv, wri
 from stillfield.vocabulary import WATER_CAUTION
 
 MANIFEST = "manifest.json"
+
+_CURE = "Free the disk or the permissions, or choose another output.folder."
 
 #: Variables that get a GeoTIFF of their own.
 RASTERS = ("monthly_yield", "monthly_yield_low", "monthly_yield_high", "annual_yield", "worst_month_yield")
@@ -68,13 +72,42 @@ class Results:
     facts: Mapping[str, Any] = field(default_factory=dict)
 
 
+def check_outputs(folders: Iterable[Path], *, land: Path | None = None) -> None:
+    """Find out before any weather is read whether the outputs could be written; writes nothing itself.
+
+    Parameters
+    ----------
+    folders : iterable of Path
+        Output folders; they need not exist.
+    land : Path, optional
+        Outline of the land for the maps.
+
+    Raises
+    ------
+    OutputError
+        If a folder could not be made or written to.
+    StillfieldError
+        If the outline cannot be read.
+    """
+    for folder in folders:
+        nearest = next(path for path in (folder, *folder.absolute().parents) if path.exists())
+        if not nearest.is_dir() or not os.access(nearest, os.W_OK | os.X_OK):
+            got = "no permission to write" if nearest.is_dir() else "a file, not a folder"
+            raise OutputError("cannot write the results", where=str(folder), got=f"{nearest}: {got}", cure=_CURE)
+    if land is not None:
+        from stillfield.products.coast import read_land
+
+        read_land(land)
+
+
 def write_results(folder: Path, results: Results) -> list[Path]:
     """Write every product of a run into its folder.
 
     Parameters
     ----------
     folder : Path
-        The run's own folder; made if need be. Files of the same names are replaced.
+        The run's own folder; made if need be. Files of an earlier run, known by its manifest, are replaced
+        or removed; others stay.
     results : Results
         What to write.
 
@@ -101,6 +134,7 @@ def write_results(folder: Path, results: Results) -> list[Path]:
             conventions=results.remarks,
             digests=_digests(stage, files, results),
             caution=WATER_CAUTION,
+            files=[path.as_posix() for path in files],
             **results.facts,
         )
     return [folder / path for path in (*files, Path(MANIFEST))]
@@ -110,6 +144,7 @@ def write_results(folder: Path, results: Results) -> list[Path]:
 def _staged(folder: Path) -> Iterator[Path]:
     """Give a temporary folder inside `folder` whose files are moved in when the block ends well."""
     stage = folder / ".unfinished"
+    made = [path for path in (folder, *folder.absolute().parents) if not path.exists()]
     try:
         folder.mkdir(parents=True, exist_ok=True)
         shutil.rmtree(stage, ignore_errors=True)
@@ -119,20 +154,35 @@ def _staged(folder: Path) -> Iterator[Path]:
             _move_in(stage, folder)
         finally:
             shutil.rmtree(stage, ignore_errors=True)
+            for path in made:  # a run that wrote nothing leaves no empty folder
+                if not any(path.iterdir()):
+                    path.rmdir()
     except OSError as error:
         raise OutputError(
-            "cannot write the results", where=str(folder), got=error.strerror or str(error),
-            cure="Free the disk or the permissions, or choose another output.folder.",
+            "cannot write the results", where=str(folder), got=error.strerror or str(error), cure=_CURE
         ) from error
 
 
 def _move_in(stage: Path, folder: Path) -> None:
+    earlier = _listed(folder / MANIFEST)
     (folder / MANIFEST).unlink(missing_ok=True)
+    for name in earlier:
+        if not (stage / name).exists():
+            (folder / name).unlink(missing_ok=True)
     paths = sorted(path for path in stage.rglob("*") if path.is_file() and path.name != MANIFEST)
     for path in (*paths, stage / MANIFEST):
         target = folder / path.relative_to(stage)
         target.parent.mkdir(parents=True, exist_ok=True)
         path.replace(target)
+
+
+def _listed(manifest: Path) -> list[str]:
+    """Files an earlier run left in the folder of its manifest; none where there is no manifest to be trusted."""
+    try:
+        names = json.loads(manifest.read_text(encoding="utf-8"))["files"]
+    except (OSError, ValueError, KeyError, TypeError):
+        return []
+    return [str(name) for name in names if not Path(str(name)).is_absolute() and ".." not in Path(str(name)).parts]
 
 
 def _write_rasters(stage: Path, results: Results) -> None:
