@@ -134,8 +134,8 @@ def monthly_yield(
     A still is no barrier to volatile contaminants; distillate must be disinfected, remineralised and tested
     before people drink it. See `stillfield.vocabulary.WATER_CAUTION`.
     """
-    chosen = get_method(method)
     prepared = prepare(weather, min_valid_hours=min_valid_hours)
+    chosen = get_method(method, hourly=prepared.steps is not None)
     daily = estimate(
         prepared.daily, still, chosen, rule=ConstantEfficiency(rule_efficiency), steps=prepared.steps
     )

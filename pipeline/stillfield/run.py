@@ -78,7 +78,9 @@ def _one_still(
     inputs: dict[str, dict[str, Any]], folder: Path,
 ) -> Summary:
     log.info("estimating %s by method %s", still.name, settings.method)
-    method = get_method(settings.method)
+    method = get_method(
+        settings.method, hourly=prepared.steps is not None, fits_folder=Path(settings.output.folder) / "fits"
+    )
     daily = estimate(
         prepared.daily, still, method, rule=ConstantEfficiency(settings.rule.efficiency),
         steps=prepared.steps,

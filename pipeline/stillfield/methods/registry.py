@@ -3,20 +3,37 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from pathlib import Path
 
 from stillfield.errors import MethodError
 from stillfield.methods import Method
 from stillfield.methods.baselines import ConstantEfficiency, PublishedLine
+from stillfield.methods.fitted import Fitted
+from stillfield.methods.heat_balance import HeatBalance
 from stillfield.vocabulary import METHODS
 
-_MAKERS: dict[str, Callable[[], Method]] = {
+_OTHERS: dict[str, Callable[[], Method]] = {
+    "heat-balance": HeatBalance,
     "rule": ConstantEfficiency,
     "nafey-2000": PublishedLine,
 }
 
 
-def get_method(name: str) -> Method:
+def get_method(name: str, *, hourly: bool = False, fits_folder: Path | None = None) -> Method:
     """Return the method called `name`.
+
+    Parameters
+    ----------
+    name : str
+        One of `vocabulary.METHODS`.
+    hourly : bool
+        Whether the weather has steps within the day; 'fitted' then uses them.
+    fits_folder : Path, optional
+        Where 'fitted' keeps the fits of stills that are not shipped.
+
+    Returns
+    -------
+    Method
 
     Raises
     ------
@@ -28,6 +45,8 @@ def get_method(name: str) -> Method:
     >>> get_method("rule").needs
     ('irradiation',)
     """
-    if name not in _MAKERS:
+    if name == Fitted.name:
+        return Fitted("hourly" if hourly else "daily", fits_folder)
+    if name not in _OTHERS:
         raise MethodError("no such yield method", got=repr(name), wanted=", ".join(METHODS))
-    return _MAKERS[name]()
+    return _OTHERS[name]()

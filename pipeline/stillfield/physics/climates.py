@@ -36,7 +36,7 @@ RANGES: dict[str, tuple[float, float]] = {
     "wind": (0.3, 6.5),  # mean wind speed at 2 m [m s-1]
     "breeze": (0.0, 0.7),  # daily swing of the wind over its mean, strongest in the afternoon [1]
     "persistence": (0.1, 0.7),  # correlation of one day's weather with the day before [1]
-    "brokenness": (0.3, 1.3),  # how much the sky of a half-clear day varies from hour to hour [1]
+    "brokenness": (0.4, 2.0),  # how much the sky of a half-clear day varies from hour to hour [1]
 }
 
 LOWEST_CLEARNESS, HIGHEST_CLEARNESS = 0.05, 0.79
@@ -95,7 +95,7 @@ def invented_climates(count: int = 96, seed: int = 20) -> ClimateSet:
     traits = {
         name: low + draws[:, column] * (high - low) for column, (name, (low, high)) in enumerate(RANGES.items())
     }
-    traits["dryness"] = 0.5 * traits["dryness"] + 0.5 * draws[:, list(RANGES).index("clearness")]
+    traits["dryness"] = 0.4 * traits["dryness"] + 0.6 * draws[:, list(RANGES).index("clearness")]
     days = np.arange(1, DAYS + 1)
     summer = np.cos(2.0 * np.pi * (days[:, None] - 196.0) / 365.0) * np.sign(traits["latitude"])
     clearness = _daily_clearness(traits, summer, random)
@@ -126,7 +126,7 @@ def _hours_of_sun(traits: dict[str, Array], clearness: Array, days: NDArray[Any]
     """Share each day's irradiation over its hours: low sun sees more air, half-clear skies are broken."""
     sun = sun_over_steps(traits["latitude"], days)
     outside = sun.normal_outside * sun.step_mean_cos_zenith
-    airy = np.maximum(sun.cos_zenith, 0.03) ** 0.18
+    airy = np.maximum(sun.cos_zenith, 0.03) ** 0.25
     daily = np.repeat(clearness, HOURS, axis=0)
     roughness = 4.0 * daily / HIGHEST_CLEARNESS * (1.0 - daily / HIGHEST_CLEARNESS)
     noise = _persistent(random, 0.55, outside.shape)
@@ -153,7 +153,7 @@ def _hours_of_air(
     spells = 2.2 * _persistent(random, 0.75, summer.shape)
     mean = np.clip(traits["temperature"] + traits["temperature_swing"] * summer + spells, -8.0, 42.0)
     swing = (4.0 + 13.0 * traits["dryness"]) * (0.35 + 0.65 * clearness / 0.6)
-    depression = (2.0 + 20.0 * traits["dryness"]) * (0.5 + 0.5 * clearness / 0.5)
+    depression = (1.5 + 17.0 * traits["dryness"] ** 1.5) * (0.5 + 0.5 * clearness / 0.5)
     depression = np.maximum(depression + 1.5 * _persistent(random, 0.6, summer.shape), 0.5)
     hour = (np.arange(HOURS) + 0.5)[:, None]
     # Warmest at 15:00 solar, coldest near sunrise: a day wave and a little of its second harmonic.

@@ -1,0 +1,129 @@
+"""Fits by the fingerprint of their still: shipped with the package, kept in a folder, or made now."""
+
+from __future__ import annotations
+
+import json
+import logging
+from collections.abc import Mapping
+from dataclasses import asdict
+from functools import lru_cache
+from importlib import resources
+from pathlib import Path
+from typing import Any
+
+from stillfield.physics.correlation import DailyCorrelation
+from stillfield.physics.fitting import FIT_VERSION, StillFit, fit_still
+from stillfield.physics.still import Still
+
+log = logging.getLogger(__name__)
+
+SHIPPED = "shipped_fits.json"
+
+
+def fit_for(still: Still, folder: Path | None = None) -> StillFit:
+    """Return the fit of a still in its central condition.
+
+    Taken from the package, from `folder`, or made: some seconds, then kept in `folder` where one is given.
+
+    Parameters
+    ----------
+    still : Still
+        Design and condition.
+    folder : Path, optional
+        Where fits of other runs are kept.
+
+    Returns
+    -------
+    StillFit
+    """
+    fingerprint = still.fingerprint()
+    shipped = _shipped()
+    if fingerprint in shipped:
+        return shipped[fingerprint]
+    path = None if folder is None else folder / f"fit-{fingerprint}.json"
+    if path is not None and (kept := _kept(path, fingerprint)) is not None:
+        return kept
+    fit = _made(still)
+    if path is not None:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        partial = path.with_suffix(".partial")
+        partial.write_text(fit_text([fit]), encoding="utf-8", newline="\n")
+        partial.replace(path)
+    return fit
+
+
+def _made(still: Still) -> StillFit:
+    return _made_once(still.fingerprint(), _Held(still))
+
+
+class _Held:
+    """Carries a still past the cache, which looks at the fingerprint alone."""
+
+    def __init__(self, still: Still) -> None:
+        self.still = still
+
+    def __eq__(self, other: object) -> bool:
+        return isinstance(other, _Held)
+
+    def __hash__(self) -> int:
+        return 0
+
+
+@lru_cache(maxsize=64)
+def _made_once(fingerprint: str, held: _Held) -> StillFit:
+    log.info("fitting %s, %s, to its hourly balance", held.still.name, held.still.condition)
+    return fit_still(held.still)
+
+
+@lru_cache(maxsize=1)
+def _shipped() -> Mapping[str, StillFit]:
+    source = resources.files("stillfield.methods") / SHIPPED
+    return _read(source.read_text(encoding="utf-8")) if source.is_file() else {}
+
+
+def _kept(path: Path, fingerprint: str) -> StillFit | None:
+    """Fit kept by an earlier run, if it is whole and of this version."""
+    try:
+        return _read(path.read_text(encoding="utf-8")).get(fingerprint)
+    except (OSError, ValueError, KeyError, TypeError):
+        return None
+
+
+def _read(text: str) -> dict[str, StillFit]:
+    content = json.loads(text)
+    if content["version"] != FIT_VERSION:
+        return {}
+    return {
+        fingerprint: StillFit(fingerprint, {variant: _correlation(kept) for variant, kept in variants.items()})
+        for fingerprint, variants in content["fits"].items()
+    }
+
+
+def _correlation(kept: dict[str, Any]) -> DailyCorrelation:
+    return DailyCorrelation(**{
+        **kept,
+        "coefficients": tuple(kept["coefficients"]),
+        "frost": tuple(kept["frost"]),
+        "ranges": {name: (low, high) for name, (low, high) in kept["ranges"].items()},
+    })
+
+
+def fit_text(fits: list[StillFit]) -> str:
+    """Text of a file of fits, numbers to nine significant digits."""
+    def short(value: Any) -> Any:
+        if isinstance(value, float):
+            return float(f"{value:.9g}")
+        if isinstance(value, dict):
+            return {key: short(item) for key, item in value.items()}
+        return [short(item) for item in value] if isinstance(value, list | tuple) else value
+
+    content = {
+        "version": FIT_VERSION,
+        "fits": {
+            fit.fingerprint: {
+                variant: short(asdict(correlation)) for variant, correlation in fit.correlations.items()
+            }
+            for fit in fits
+        },
+    }
+    return json.dumps(content, sort_keys=True, separators=(",", ":")) + "\n"

@@ -1,0 +1,66 @@
+"""The fitted daily correlation as a yield method: for every cell of a region and decades of days."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+from typing import ClassVar, Literal
+
+from stillfield.methods import Block, DailyYield
+from stillfield.methods.fit_store import fit_for
+from stillfield.physics.correlation import Day
+from stillfield.physics.day_shape import day_from_days, day_from_steps
+from stillfield.physics.forcing import step_forcing
+from stillfield.physics.gain import GainTable
+from stillfield.physics.still import Still
+
+
+@dataclass(frozen=True)
+class Fitted:
+    """Daily correlation fitted to the hourly balance of the still; see `stillfield.physics.correlation`.
+
+    Attributes
+    ----------
+    resolution : {'daily', 'hourly'}
+        'daily' takes daily weather; 'hourly' takes steps and knows when in the day the sun shone.
+    folder : Path, optional
+        Where fits of stills that are not shipped are kept.
+    """
+
+    resolution: Literal["daily", "hourly"] = "daily"
+    folder: Path | None = None
+
+    name: ClassVar[str] = "fitted"
+    knows_condition: ClassVar[bool] = True
+
+    @property
+    def needs(self) -> tuple[str, ...]:
+        """Weather it cannot do without."""
+        return ("irradiation" if self.resolution == "daily" else "ghi", "temp_air", "wind_speed")
+
+    @property
+    def uses(self) -> tuple[str, ...]:
+        """Weather that makes it better."""
+        if self.resolution == "daily":
+            return ("temp_air_min", "temp_air_max", "temp_dew", "relative_humidity")
+        return ("dni", "dhi", "temp_dew", "relative_humidity")
+
+    def daily_yield(self, block: Block, still: Still) -> DailyYield:
+        """Yield of every day; days with frost and days outside the range of the fit are flagged."""
+        day = self._day(block, still)
+        correlation = fit_for(still, self.folder).correlations[day.variant]
+        litres, frost, outside = correlation.litres(day, cyclic=block.cyclic)
+        return DailyYield(litres, frost=frost, outside=outside)
+
+    def _day(self, block: Block, still: Still) -> Day:
+        if self.resolution == "daily":
+            rows = GainTable(still).for_latitudes(block.latitude)
+            return day_from_days(block.weather, rows, latitude=block.latitude, day_of_year=block.day_of_year)
+        forcing, transmitted = step_forcing(
+            block.weather, still, latitude=block.latitude, day_of_year=block.day_of_year,
+            steps_per_day=block.steps_per_day, clock_to_solar_hours=block.clock_to_solar_hours,
+        )
+        return day_from_steps(
+            block.weather, forcing, transmitted, still, latitude=block.latitude,
+            day_of_year=block.day_of_year, steps_per_day=block.steps_per_day,
+        )

@@ -1,0 +1,31 @@
+"""The hourly heat balance as a yield method: reference, typical-year sites and, slower, whole grids."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import ClassVar, Literal
+
+from stillfield.methods import Block, DailyYield
+from stillfield.physics.forcing import step_forcing
+from stillfield.physics.heat_balance import simulate
+from stillfield.physics.still import Still
+
+
+@dataclass(frozen=True)
+class HeatBalance:
+    """Two-node hourly balance of water and cover; see `stillfield.physics.heat_balance`."""
+
+    name: ClassVar[str] = "heat-balance"
+    resolution: ClassVar[Literal["daily", "hourly"]] = "hourly"
+    needs: ClassVar[tuple[str, ...]] = ("ghi", "temp_air", "wind_speed")
+    uses: ClassVar[tuple[str, ...]] = ("dni", "dhi", "temp_dew", "relative_humidity")
+    knows_condition: ClassVar[bool] = True
+
+    def daily_yield(self, block: Block, still: Still) -> DailyYield:
+        """Yield of every day; days with missing weather are NaN, days with ice are flagged."""
+        forcing, _ = step_forcing(
+            block.weather, still, latitude=block.latitude, day_of_year=block.day_of_year,
+            steps_per_day=block.steps_per_day, clock_to_solar_hours=block.clock_to_solar_hours,
+        )
+        result = simulate(forcing, still, steps_per_day=block.steps_per_day, cyclic=block.cyclic)
+        return DailyYield(result.daily_yield, frost=result.frost)
