@@ -47,7 +47,8 @@ def read_weather(
     Returns
     -------
     xarray.Dataset
-        As described in `stillfield.sources.Source`.
+        As described in `stillfield.sources.Source`. A grid of one cell comes as a site: nothing tells how large
+        such a cell is, so it makes no map.
 
     Raises
     ------
@@ -55,7 +56,18 @@ def read_weather(
         If the weather cannot be read, or no cell lies in the region.
     """
     weather = open_source(kind, files, **options).open()
-    return weather if region is None else _cut(weather, region)
+    weather = weather if region is None else _cut(weather, region)
+    single = "site" not in weather.dims and weather.sizes["latitude"] == weather.sizes["longitude"] == 1
+    return _as_site(weather) if single else weather
+
+
+def _as_site(weather: xr.Dataset) -> xr.Dataset:
+    latitude, longitude = float(weather["latitude"][0]), float(weather["longitude"][0])
+    name = f"{abs(latitude):g}{'S' if latitude < 0 else 'N'} {abs(longitude):g}{'W' if longitude < 0 else 'E'}"
+    site = weather.isel(latitude=0, longitude=0).expand_dims(site=[name])
+    site = site.assign_coords({place: ("site", [float(site[place])]) for place in ("latitude", "longitude")})
+    said = [*weather.attrs.get("conventions", []), "The one cell is taken as a site."]
+    return site.transpose("time", "site", ...).assign_attrs(conventions=said)
 
 
 def _cut(weather: xr.Dataset, box: Box) -> xr.Dataset:
