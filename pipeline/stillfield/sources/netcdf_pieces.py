@@ -18,6 +18,8 @@ from stillfield.sources.recognise import Choice, Found, recognise
 #: Numbers that stand for "missing" in files that do not declare them.
 _SENTINELS = (-999.0, -9999.0)
 _IMPOSSIBLY_LARGE = 1e14
+#: Coordinates of stations that are kept where a file has them.
+_OF_SITES = ("elevation", "utc_offset_hours", "name")
 #: Size of the blocks weather is read in. [bytes]
 _BLOCK_BYTES = 64 * 2**20
 
@@ -69,14 +71,33 @@ def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
     """
     weather = _open(path)
     try:
-        return _take(weather, path, choices)
+        return take_pieces(weather, str(path), choices)
     except BaseException:
         weather.close()  # a refused file must not stay open: it may be about to be replaced
         raise
 
 
-def _take(weather: xr.Dataset, path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
-    where = str(path)
+def take_pieces(weather: xr.Dataset, where: str, choices: Mapping[str, Choice]) -> list[Piece]:
+    """Take the variables that play a role from an open dataset, whatever it was opened from.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        With CF axes and units.
+    where : str
+        Where it came from, for errors.
+    choices : mapping of str to Choice
+        What the run file says.
+
+    Returns
+    -------
+    list of Piece
+
+    Raises
+    ------
+    WeatherError
+        If its axes cannot be used.
+    """
     weather, notes = _one_version(weather)
     axes = find_axes(weather, where=where)
     if weather[axes.time].size == 0:
@@ -89,7 +110,7 @@ def _take(weather: xr.Dataset, path: Path, choices: Mapping[str, Choice]) -> lis
         and all(size == 1 or dim in keep for dim, size in variable.sizes.items())
     )
     found = recognise(weather, choices, usable, where=where)
-    return [_piece(weather, axes, one, path, notes) for one in found]
+    return [_piece(weather, axes, one, where, notes) for one in found]
 
 
 def _open(path: Path) -> xr.Dataset:
@@ -116,22 +137,22 @@ def _core_dims(weather: xr.Dataset, axes: Axes) -> set[str]:
     return {str(dim) for name in names for dim in weather[name].dims}
 
 
-def _piece(weather: xr.Dataset, axes: Axes, found: Found, path: Path, notes: tuple[str, ...]) -> Piece:
+def _piece(weather: xr.Dataset, axes: Axes, found: Found, where: str, notes: tuple[str, ...]) -> Piece:
     variable = weather.variables[found.name]
     core = _core_dims(weather, axes)
     spare = [dim for dim, size in variable.sizes.items() if dim not in core and size == 1]
     variable = variable.isel(dict.fromkeys(spare, 0))
-    time, placed, hours = _time_of(weather, axes, found, where=str(path))
+    time, placed, hours = _time_of(weather, axes, found, where=where)
     time_dim = str(next(iter(weather[axes.time].dims), "time"))
     if time_dim not in variable.dims:
         if weather[axes.time].size != 1:
-            raise WeatherError(f"variable '{found.name}' has no time", where=str(path))
+            raise WeatherError(f"variable '{found.name}' has no time", where=where)
         variable = xr.Variable((time_dim, *variable.dims), variable.chunk().data[np.newaxis], variable.attrs)
     chunked = variable.chunk(_chunks(variable, time_dim))
-    values, said = _on_cells(chunked, weather, axes, time_dim, where=str(path))
+    values, said = _on_cells(chunked, weather, axes, time_dim, where=where)
     valid = _valid_range(weather.variables[found.name])
     values = values.assign_coords(time=("time", time)).assign_attrs(bounds_hours=hours, valid_range=valid)
-    return Piece(found, str(path), placed, values, notes + said)
+    return Piece(found, where, placed, values, notes + said)
 
 
 def _valid_range(variable: xr.Variable) -> tuple[float, float]:
@@ -214,9 +235,11 @@ def _at_sites(variable: xr.Variable, weather: xr.Dataset, latitude: Any, longitu
     raw = np.arange(latitude.size) if names is None else names.values.ravel()
     ids = [one.decode() if isinstance(one, bytes) else str(one) for one in raw]
     wrapped = clean_degrees((longitude + 180.0) % 360.0 - 180.0)
+    more = {name: ("site", weather[name].values.ravel(), weather[name].attrs) for name in _OF_SITES
+            if name in weather.coords and weather[name].size == latitude.size}
     return xr.DataArray(
         variable.data, dims=("time", "site"),
-        coords={"site": ids, "latitude": ("site", latitude), "longitude": ("site", wrapped)},
+        coords={"site": ids, "latitude": ("site", latitude), "longitude": ("site", wrapped), **more},
     )
 
 
