@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -106,11 +107,25 @@ def describe_inputs(files: Iterable[str], base: Path) -> dict[str, dict[str, Any
     Returns
     -------
     dict
-        Name to ``{'sha256': str, 'bytes': int}``.
+        Name to ``{'sha256': str, 'bytes': int}``. Of absolute paths outside `base` only the end is told; equal
+        ends are numbered.
     """
     found: dict[str, dict[str, Any]] = {}
     for name in files:
         (path,) = locate([name])
-        shown = portable_name(name, base)
-        found[shown] = {"sha256": digest_file(path), "bytes": path.stat().st_size}
+        shown = told = _told(name, base)
+        number = 1
+        while told in found:
+            number += 1
+            told = f"{shown} ({number})"
+        found[told] = {"sha256": digest_file(path), "bytes": path.stat().st_size}
     return found
+
+
+def _told(name: str, base: Path) -> str:
+    """`name` counted from `base`, wherever the program was started; names inside packages as they are."""
+    if not Path(name).is_file():
+        return name
+    if Path(name).is_absolute():
+        return portable_name(name, base.absolute())
+    return Path(os.path.relpath(name, base)).as_posix()
