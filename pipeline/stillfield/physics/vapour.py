@@ -184,9 +184,63 @@ def dew_point(temperature: Field, relative_humidity: Field) -> Field:
     13.9
     """
     share = np.clip(relative_humidity, 1.0, 100.0) / 100.0
-    exponent = np.log(share * saturation_pressure_fao56(temperature) / 610.8)
+    dew: Field = dew_point_at_pressure(share * saturation_pressure_fao56(temperature))
+    return dew
+
+
+def dew_point_at_pressure(vapour_pressure: Field) -> Field:
+    """Dew point of air with a given vapour pressure, by inverting FAO-56 eq. 11.
+
+    Source: FAO-56, eq. 11 (Annex 2, Table 2.3 is the same relation tabulated).
+
+    Parameters
+    ----------
+    vapour_pressure : float or ndarray
+        Above 0. [Pa]
+
+    Returns
+    -------
+    float or ndarray, shape of `vapour_pressure`
+        [degC]
+
+    Examples
+    --------
+    FAO-56, Table 2.3: air saturated at 20 degC holds 2.338 kPa.
+
+    >>> round(float(dew_point_at_pressure(2338.0)), 2)
+    20.0
+    """
+    exponent = np.log(np.asarray(vapour_pressure) / 610.8)
     dew: Field = 237.3 * exponent / (17.27 - exponent)
     return dew
+
+
+def vapour_pressure_of_specific_humidity(specific_humidity: Field, pressure: Field = 101325.0) -> Field:
+    """Vapour pressure of air from its specific humidity: e = q p / (0.622 + 0.378 q).
+
+    Source: definition of specific humidity with the ratio of molar masses 0.622 (WMO Guide to Instruments and
+    Methods of Observation, WMO-No. 8, Annex 4.A, quoted from memory).
+
+    Parameters
+    ----------
+    specific_humidity : float or ndarray
+        Water vapour per moist air. [kg kg-1]
+    pressure : float or ndarray
+        Air pressure. [Pa]
+
+    Returns
+    -------
+    float or ndarray, broadcast of both
+        [Pa]
+
+    Examples
+    --------
+    >>> round(float(vapour_pressure_of_specific_humidity(0.010)))
+    1619
+    """
+    humidity = np.asarray(specific_humidity)
+    pressure_of_vapour: Field = humidity * pressure / (0.622 + 0.378 * humidity)
+    return pressure_of_vapour
 
 
 def relative_humidity(temperature: Field, temp_dew: Field) -> Field:

@@ -25,7 +25,7 @@ STAMPS = ("start", "middle", "end")
 #: Quantities that can be looked up in grid files: the sunshine under either name, and the wind by components.
 VARIABLES = (
     "irradiation", "ghi", "dni", "dhi", "temp_air", "temp_air_min", "temp_air_max", "temp_dew",
-    "relative_humidity", "wind_speed", "wind_u", "wind_v",
+    "relative_humidity", "specific_humidity", "vapour_pressure", "wind_speed", "wind_u", "wind_v",
 )
 _WINDS = ("wind_speed", "wind_u", "wind_v")
 

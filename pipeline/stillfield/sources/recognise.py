@@ -28,7 +28,7 @@ STAMPS = ("start", "middle", "end")
 
 #: Roles a variable can play. 'sun' is `irradiation` in daily and `ghi` in sub-daily weather.
 ROLES = ("sun", "dni", "dhi", "temp_air", "temp_air_min", "temp_air_max", "temp_dew", "relative_humidity",
-         "wind_speed", "wind_u", "wind_v")
+         "specific_humidity", "vapour_pressure", "wind_speed", "wind_u", "wind_v")
 _SUN_KEYS = {"irradiation", "ghi", "sun"}
 
 _STANDARD_NAMES = {
@@ -40,6 +40,8 @@ _STANDARD_NAMES = {
     "2-meter_air_temperature": "temp_air",
     "dew_point_temperature": "temp_dew",
     "relative_humidity": "relative_humidity",
+    "specific_humidity": "specific_humidity",
+    "water_vapor_partial_pressure_in_air": "vapour_pressure",
     "wind_speed": "wind_speed",
     "eastward_wind": "wind_u",
     "northward_wind": "wind_v",
@@ -54,6 +56,8 @@ _ALIASES = {
     **dict.fromkeys(["tasmax", "tx", "t2m_max", "t2mmax", "mx2t", "temp_air_max"], "temp_air_max"),
     **dict.fromkeys(["d2m", "2d", "tdps", "t2mdew", "temp_dew"], "temp_dew"),
     **dict.fromkeys(["hurs", "rh2m", "hu", "relative_humidity"], "relative_humidity"),
+    **dict.fromkeys(["huss", "qv2m", "spfh2m", "sh2", "specific_humidity"], "specific_humidity"),
+    **dict.fromkeys(["vap", "vp", "vapour_pressure", "vapor_pressure"], "vapour_pressure"),
     **dict.fromkeys(["sfcwind", "ws10", "si10", "10si", "ws10m", "ws2m", "fg", "wind_speed"], "wind_speed"),
     **dict.fromkeys(["u10", "10u", "uas", "u10m", "u2m"], "wind_u"),
     **dict.fromkeys(["v10", "10v", "vas", "v10m", "v2m"], "wind_v"),

@@ -44,6 +44,10 @@ _ALIASES: dict[str, str] = {
     **dict.fromkeys(["km h-1", "km/h", "kmh", "km/hr", "kph"], "km h-1"),
     **dict.fromkeys(["knot", "knots", "kt", "kts"], "knot"),
     **dict.fromkeys(["%", "percent", "pct"], "percent"),
+    **dict.fromkeys(["g/kg", "gr/kg", "g kg-1", "gm/kg"], "g kg-1"),
+    **dict.fromkeys(["kg/kg", "kg kg-1"], "1"),
+    **dict.fromkeys(["hpa", "mb", "mbar", "millibar", "millibars"], "hPa"),
+    **dict.fromkeys(["kpa"], "kPa"),
     **dict.fromkeys(["1", "", "(0-1)", "(0 - 1)", "0-1", "fraction", "dimensionless", "unitless"], "1"),
 }
 
@@ -59,6 +63,8 @@ _CHOICES: dict[str, str] = {
     "degC": "'degC', 'K' or 'degF'",
     "m s-1": "'m s-1', 'km h-1' or 'knot'",
     "%": "'%' or '1' for a fraction",
+    "1": "'kg kg-1' or 'g kg-1'",
+    "Pa": "'Pa', 'hPa' or 'kPa'",
     "W m-2": "'W m-2' or 'kW m-2'",
     "MJ m-2": "'J m-2', 'kJ m-2', 'MJ m-2', 'Wh m-2' or 'kWh m-2'",
 }
