@@ -99,6 +99,13 @@ def build_parser() -> argparse.ArgumentParser:
     )
     run.set_defaults(loudness="plain")
 
+    fit = commands.add_parser(
+        "fit", help="fit stills and tell how well the correlation follows the hourly balance", allow_abbrev=False,
+        description="Fit every condition of some stills to the hourly heat balance and print the errors.",
+    )
+    fit.add_argument("still_files", metavar="STILL.yaml", nargs="+", help="still files")
+    fit.add_argument("--into", metavar="FILE", help="keep the fits in FILE, beside those it holds")
+
     schema = commands.add_parser(
         "schema", help="print the JSON Schema of run files or still files", allow_abbrev=False,
         description="Print the JSON Schema of run files or still files, for editors that complete and check.",
@@ -110,7 +117,7 @@ def build_parser() -> argparse.ArgumentParser:
 def _guarded(arguments: argparse.Namespace) -> int:
     """Do the command; every failure ends in an exit code and the words that belong to it."""
     try:
-        return _run(arguments) if arguments.command == "run" else _schema(arguments)
+        return _COMMANDS[arguments.command](arguments)
     except StillfieldError as error:
         _complain(str(error))
         return error.exit_code
@@ -147,6 +154,16 @@ def _schema(arguments: argparse.Namespace) -> int:
 
     _say(schema_text(arguments.kind))
     return EXIT_OK
+
+
+def _fit(arguments: argparse.Namespace) -> int:
+    from stillfield.fit import fit
+
+    _say(fit(arguments.still_files, into=arguments.into))
+    return EXIT_OK
+
+
+_COMMANDS = {"run": _run, "schema": _schema, "fit": _fit}
 
 
 class _PlainLines(logging.Formatter):

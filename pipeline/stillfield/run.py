@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import logging
+from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
@@ -17,6 +18,7 @@ from stillfield.products.summary import Summary, summarise
 from stillfield.settings.load import resolved_yaml
 from stillfield.settings.model import RunSettings
 from stillfield.stages.aggregate import aggregate
+from stillfield.stages.audit import Audit, audit
 from stillfield.stages.estimate import estimate
 from stillfield.stages.prepare import Prepared, prepare
 from stillfield.stages.rank import rank_places
@@ -93,27 +95,34 @@ def _one_still(
             max_cell_distance_km=settings.places.max_cell_distance_km,
             weights=settings.rank.weights.by_criterion(),
         )
+    audited = None
+    if method.name == "fitted":
+        audited = audit(method, monthly, prepared.daily, still, steps=prepared.steps)
+        log.log(logging.INFO if audited.passed else logging.WARNING, "%s", audited.sentence())
     title = f"Solar still yield, {settings.name}"
     condition = f", {still.condition}" if method.knows_condition else ""
     line = f"Still {still.name}{condition}; method {method.name}."
-    remarks = _remarks(monthly, method)
+    remarks = _remarks(monthly, method, audited)
     log.info("writing to %s", folder)
     files = write_results(
         folder,
         Results(
             monthly, ranked, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
             inputs, land=None if settings.map.land is None else settings.map.land.path, remarks=remarks,
+            facts={"audit": None if audited is None else asdict(audited)},
         ),
     )
     return summarise(
         monthly, ranked, title=title, method_line=line, folder=folder, files=files,
-        remarks=[remark for remark in remarks if "WARNING" in remark],
+        remarks=[remark for remark in remarks if "WARNING" in remark or "udit" in remark],
     )
 
 
-def _remarks(monthly: xr.Dataset, method: Method) -> tuple[str, ...]:
+def _remarks(monthly: xr.Dataset, method: Method, audited: Audit | None) -> tuple[str, ...]:
     """Sentences that travel with the results: where they come from, what was assumed, what they cannot tell."""
     remarks = [str(monthly.attrs.get("origin", "")), *map(str, monthly.attrs.get("conventions", []))]
+    if audited is not None:
+        remarks.append(audited.sentence())
     if not method.knows_condition:
         remarks.append(f"Method {method.name} knows no condition of the still: low and high equal the central figures.")
     if monthly.attrs.get("record") == "typical-year":

@@ -41,8 +41,8 @@ def fit_for(still: Still, folder: Path | None = None) -> StillFit:
     if fingerprint in shipped:
         return shipped[fingerprint]
     path = None if folder is None else folder / f"fit-{fingerprint}.json"
-    if path is not None and (kept := _kept(path, fingerprint)) is not None:
-        return kept
+    if path is not None and fingerprint in (kept := kept_fits(path)):
+        return kept[fingerprint]
     fit = _made(still)
     if path is not None:
         path.parent.mkdir(parents=True, exist_ok=True)
@@ -81,12 +81,22 @@ def _shipped() -> Mapping[str, StillFit]:
     return _read(source.read_text(encoding="utf-8")) if source.is_file() else {}
 
 
-def _kept(path: Path, fingerprint: str) -> StillFit | None:
-    """Fit kept by an earlier run, if it is whole and of this version."""
+def kept_fits(path: Path) -> dict[str, StillFit]:
+    """Fits in a file, by fingerprint; none where the file is absent, torn or of another version.
+
+    Parameters
+    ----------
+    path : Path
+        A file written by `fit_text`.
+
+    Returns
+    -------
+    dict of str to StillFit
+    """
     try:
-        return _read(path.read_text(encoding="utf-8")).get(fingerprint)
+        return _read(path.read_text(encoding="utf-8"))
     except (OSError, ValueError, KeyError, TypeError):
-        return None
+        return {}
 
 
 def _read(text: str) -> dict[str, StillFit]:

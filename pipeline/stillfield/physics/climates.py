@@ -20,6 +20,7 @@ from scipy.stats import norm, qmc
 from stillfield.physics.sun import extraterrestrial_irradiation, sun_over_steps
 
 Array = NDArray[np.float64]
+AnyArray = NDArray[np.floating[Any]]
 
 HOURS = 24
 DAYS = 365
@@ -41,6 +42,7 @@ RANGES: dict[str, tuple[float, float]] = {
 
 LOWEST_CLEARNESS, HIGHEST_CLEARNESS = 0.05, 0.79
 HIGHEST_HOURLY_CLEARNESS = 0.84
+_SCALINGS = 12
 
 
 @dataclass(frozen=True)
@@ -99,7 +101,10 @@ def invented_climates(count: int = 96, seed: int = 20) -> ClimateSet:
     days = np.arange(1, DAYS + 1)
     summer = np.cos(2.0 * np.pi * (days[:, None] - 196.0) / 365.0) * np.sign(traits["latitude"])
     clearness = _daily_clearness(traits, summer, random)
-    ghi = _hours_of_sun(traits, clearness, days, random)
+    irradiation = clearness * extraterrestrial_irradiation(traits["latitude"], days)
+    ghi = hours_of_broken_sky(
+        traits["latitude"], days, irradiation, brokenness=traits["brokenness"], random=random
+    )
     temp_air, temp_dew = _hours_of_air(traits, clearness, summer, random)
     wind = _hours_of_wind(traits, random)
     return ClimateSet(traits["latitude"], days, ghi, temp_air, temp_dew, wind)
@@ -122,24 +127,52 @@ def _daily_clearness(traits: dict[str, Array], summer: Array, random: np.random.
     return np.asarray(LOWEST_CLEARNESS + (HIGHEST_CLEARNESS - LOWEST_CLEARNESS) * rank ** ((1.0 - place) / place))
 
 
-def _hours_of_sun(traits: dict[str, Array], clearness: Array, days: NDArray[Any], random: np.random.Generator) -> Array:
-    """Share each day's irradiation over its hours: low sun sees more air, half-clear skies are broken."""
-    sun = sun_over_steps(traits["latitude"], days)
+def hours_of_broken_sky(
+    latitude: AnyArray, day_of_year: NDArray[Any], irradiation: AnyArray, *, brokenness: AnyArray | float,
+    random: np.random.Generator, clock_to_solar_hours: AnyArray | float = 0.0,
+) -> Array:
+    """Share each day's irradiation over its hours: low sun sees more air, half-clear skies are broken.
+
+    A smooth course would make too little of a half-clear day: clouds leave the same energy in fewer hours, and
+    yield grows faster than sunshine.
+
+    Parameters
+    ----------
+    latitude : ndarray, shape (cell,)
+        [deg north]
+    day_of_year : ndarray of int, shape (day,)
+        1 to 366.
+    irradiation : ndarray, shape (day, cell)
+        [MJ m-2]
+    brokenness : float or ndarray, shape (cell,)
+        How much the sky of a half-clear day varies from hour to hour; 1.2 is usual. [1]
+    random : Generator
+        Source of the clouds.
+    clock_to_solar_hours : float or ndarray, shape (cell,)
+        Hours from the clock to local mean solar time. [h]
+
+    Returns
+    -------
+    ndarray, shape (day * 24, cell)
+        Global horizontal irradiance; a day's sum is its irradiation unless the clearest sky cannot give it.
+        [W m-2]
+    """
+    sun = sun_over_steps(latitude, day_of_year, HOURS, clock_to_solar_hours)
     outside = sun.normal_outside * sun.step_mean_cos_zenith
     airy = np.maximum(sun.cos_zenith, 0.03) ** 0.25
-    daily = np.repeat(clearness, HOURS, axis=0)
-    roughness = 4.0 * daily / HIGHEST_CLEARNESS * (1.0 - daily / HIGHEST_CLEARNESS)
+    above = np.maximum(extraterrestrial_irradiation(latitude, day_of_year), 1e-6)
+    clearness = np.clip(irradiation / above / HIGHEST_CLEARNESS, 0.0, 1.0)
+    roughness = np.repeat(4.0 * clearness * (1.0 - clearness), HOURS, axis=0)
     noise = _persistent(random, 0.55, outside.shape)
-    shape = airy * np.exp(0.55 * traits["brokenness"] * roughness * noise)
-    wanted = clearness * extraterrestrial_irradiation(traits["latitude"], days) * 1e6 / SECONDS_PER_HOUR
-    return _scaled_to_day(outside, shape, wanted)
+    shape = airy * np.exp(0.55 * brokenness * roughness * noise)
+    return _scaled_to_day(outside, shape, irradiation * 1e6 / SECONDS_PER_HOUR)
 
 
-def _scaled_to_day(outside: Array, shape: Array, wanted: Array) -> Array:
+def _scaled_to_day(outside: Array, shape: Array, wanted: AnyArray) -> Array:
     """Scale hours to the day's sum, holding every hour below the clearest sky."""
     ceiling = outside * HIGHEST_HOURLY_CLEARNESS
     hours = outside * shape
-    for _ in range(12):
+    for _ in range(_SCALINGS):
         day = hours.reshape(-1, HOURS, hours.shape[1]).sum(axis=1)
         factor = np.where(day > 0.0, wanted / np.maximum(day, 1e-9), 0.0)
         hours = np.minimum(hours * np.repeat(factor, HOURS, axis=0), ceiling)

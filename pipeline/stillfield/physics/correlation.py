@@ -239,7 +239,9 @@ def remembered(values: Array, memory: float, *, cyclic: bool) -> Array:
     array([1., 1., 2.])
     """
     out = np.empty_like(values)
-    state = np.where(np.isfinite(values[0]), values[0], np.nanmean(values, axis=0) if values.size else 0.0)
+    # Before the first day the basin remembers that day, or where it is missing the first that is not.
+    first = np.argmax(np.isfinite(values), axis=0)
+    state = np.nan_to_num(np.take_along_axis(values, first[None], axis=0)[0])
     warm_up = values[-30:] if cyclic else values[:0]
     for today in warm_up:
         state = np.where(np.isfinite(today), memory * state + (1.0 - memory) * today, state)

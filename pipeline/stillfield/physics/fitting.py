@@ -159,7 +159,11 @@ def _fit_frost(day: Day, predictors: Mapping[str, Array], sample: _Sample, raw: 
     without, wanted = raw[cold], sample.litres[cold]
     start = np.zeros(len(FROST_TERMS))
     start[:2] = 2.0
-    result = least_squares(lambda x: thaw(matrix @ x) * without - wanted, start, method="lm")
+
+    def misfit(x: Array) -> Array:
+        return np.asarray(thaw(matrix @ x) * without - wanted)
+
+    result = least_squares(misfit, start, method="lm")
     return tuple(float(value) for value in result.x)
 
 
@@ -181,8 +185,8 @@ def _monthly_error(litres: Array, sample: _Sample) -> float:
     span = slice(SETTLING_DAYS, SETTLING_DAYS + 30 * blocks)
 
     def sums(values: Array) -> Array:
-        return values[span].reshape(blocks, 30, -1).sum(axis=1)
+        return np.asarray(values[span].reshape(blocks, 30, -1).sum(axis=1))
 
     true, ours = sums(sample.litres), sums(litres)
-    fine = (sums(sample.frost.astype(float)) == 0) & (sums(sample.usable.astype(float)) == 30) & (true > 3.0)  # noqa: PLR2004
+    fine = (sums(sample.frost.astype(float)) == 0) & (sums(sample.usable.astype(float)) == 30) & (true > 3.0)
     return float(np.mean(np.abs(ours[fine] / true[fine] - 1.0)))

@@ -110,14 +110,14 @@ def sky_over_steps(
     """
     temp_air = weather["temp_air"]
     if "temp_dew" in weather:
-        dew: Array | None = weather["temp_dew"]
+        dew: Any = weather["temp_dew"]
     elif "relative_humidity" in weather:
         dew = dew_point(temp_air, weather["relative_humidity"])
     else:
         dew = None
     days = len(day_of_year)
     if dew is None:
-        clear = ((sky_temperature_swinbank(temp_air) + KELVIN) / (temp_air + KELVIN)) ** 4
+        clear: Any = ((sky_temperature_swinbank(temp_air) + KELVIN) / (temp_air + KELVIN)) ** 4
     else:
         hour = np.tile((np.arange(steps_per_day) + 0.5) * (24.0 / steps_per_day), days)[:, None]
         clear = clear_sky_emissivity(dew, hour + clock_to_solar_hours)

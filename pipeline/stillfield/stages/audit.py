@@ -1,0 +1,186 @@
+"""Audit: the hourly balance on a sample of the run's own cells and days, against what the run said there."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from stillfield.methods import Block, Method
+from stillfield.methods.heat_balance import HeatBalance
+from stillfield.physics.climates import hours_of_broken_sky
+from stillfield.physics.irradiance import disaggregate_day
+from stillfield.physics.still import Still
+
+Array = NDArray[np.floating[Any]]
+
+CELLS = 12
+MOST_DAYS = 730
+#: Mean monthly error above which the run warns. [1]
+WARN_ABOVE = 0.05
+#: Months with fewer litres per square metre than this are left out: a share of next to nothing says nothing.
+LEAST_MONTH_L_M2 = 3.0
+USUAL_BROKENNESS = 1.2
+SEED = 7
+
+
+@dataclass(frozen=True)
+class Audit:
+    """How far the method was from the hourly balance on a sample of its own cells and days.
+
+    Attributes
+    ----------
+    cells, days, months : int
+        Size of the sample; months without frost that were compared.
+    mean_error, p95_error : float
+        Mean and 95th percentile of the relative error of a month. [1]
+    bias : float
+        Relative error of all compared months together. [1]
+    hours : str
+        Where the hours of the balance came from: 'the weather' or 'daily values spread over the day'.
+    """
+
+    cells: int
+    days: int
+    months: int
+    mean_error: float
+    p95_error: float
+    bias: float
+    hours: str
+
+    @property
+    def passed(self) -> bool:
+        """Whether the mean error is within what the run tolerates; True where nothing could be compared."""
+        return not self.mean_error > WARN_ABOVE
+
+    def sentence(self) -> str:
+        """The audit in words."""
+        if self.months == 0:
+            return "Self-audit: no month without frost and gaps to compare with the hourly balance."
+        text = (
+            f"Self-audit against the hourly balance, {self.cells} cells, {self.days} days, {self.months} months, "
+            f"hours from {self.hours}: monthly error {100 * self.mean_error:.1f} % on average, "
+            f"{100 * self.p95_error:.1f} % at the 95th percentile, bias {100 * self.bias:+.1f} %."
+        )
+        return text if self.passed else f"WARNING: {text} The correlation does not fit this weather well."
+
+
+def audit(
+    method: Method, monthly: xr.Dataset, daily: xr.Dataset, still: Still, *, steps: xr.Dataset | None = None
+) -> Audit:
+    """Run the hourly balance on a sample and compare the months.
+
+    The sample is spread over the cells from the least to the most productive and takes the first two years of
+    the record. Daily weather is spread over the hours with the cloudiness of broken skies.
+
+    Parameters
+    ----------
+    method : Method
+        The method to audit.
+    monthly : xarray.Dataset
+        The run's monthly yields, which tell the productive cells from the others.
+    daily : xarray.Dataset
+        Weather of local days.
+    still : Still
+        The design in its central condition.
+    steps : xarray.Dataset, optional
+        The same days in steps.
+
+    Returns
+    -------
+    Audit
+    """
+    space = [dim for dim in daily["irradiation"].dims if dim != "time"]
+    picked = _spread(_flat(monthly["annual_yield"], space))
+    hours = "daily values spread over the day" if steps is None else "the weather"
+    if picked.size == 0:
+        return Audit(0, 0, 0, float("nan"), float("nan"), float("nan"), hours)
+    by_days = _sample(daily, picked, space)
+    by_steps = _spread_over_hours(by_days) if steps is None else _sample(steps, picked, space)
+    said = method.daily_yield(by_days if method.resolution == "daily" else by_steps, still).litres
+    truth = HeatBalance().daily_yield(by_steps, still)
+    frost = np.zeros_like(truth.litres, dtype=bool) if truth.frost is None else truth.frost
+    time = daily["time"].isel(time=slice(0, MOST_DAYS)).dt
+    months = _months(truth.litres, said, frost, time.year.to_numpy() * 12 + time.month.to_numpy())
+    return _compared(*months, picked.size, len(truth.litres), hours)
+
+
+def _sample(source: xr.Dataset, picked: NDArray[np.intp], space: list[Any]) -> Block:
+    """Weather of the picked cells over the first days, as a method takes it."""
+    some = source.isel(time=slice(0, MOST_DAYS))
+    steps = some.sizes.get("step", 1)
+    weather = {
+        str(name): _flat(values, space)[..., picked].reshape(-1, picked.size)
+        for name, values in some.data_vars.items() if "time" in values.dims
+    }
+    return Block(
+        weather,
+        latitude=_per_cell(source, "latitude", space)[picked],
+        day_of_year=some["time"].dt.dayofyear.to_numpy(),
+        steps_per_day=steps,
+        clock_to_solar_hours=_per_cell(source, "clock_to_solar_hours", space)[picked],
+    )
+
+
+def _flat(values: xr.DataArray, space: list[Any]) -> Array:
+    lead = [dim for dim in values.dims if dim not in space]
+    data = values.transpose(*lead, *space).to_numpy()
+    return np.asarray(data.reshape(*data.shape[: len(lead)], -1), dtype=np.float64)
+
+
+def _per_cell(source: xr.Dataset, name: str, space: list[Any]) -> Array:
+    template = xr.DataArray(np.zeros([source.sizes[dim] for dim in space]), dims=space)
+    if name not in source.coords:
+        return template.to_numpy().ravel()
+    return np.asarray((source[name].drop_vars(list(source[name].coords)) + template).transpose(*space)).ravel()
+
+
+def _spread(annual: Array) -> NDArray[np.intp]:
+    """Cells evenly spread by rank of their annual yield, of those that have one."""
+    order: NDArray[np.intp] = np.argsort(annual, kind="stable")
+    order = order[np.isfinite(annual[order])]
+    if order.size <= CELLS:
+        return order
+    return np.asarray(order[np.round(np.linspace(0, order.size - 1, CELLS)).astype(int)])
+
+
+def _spread_over_hours(days: Block) -> Block:
+    """Spread daily weather over the hours of local solar days."""
+    sample = days.weather
+    span = None
+    if "temp_air_min" in sample and "temp_air_max" in sample:
+        span = sample["temp_air_max"] - sample["temp_air_min"]
+    smooth = disaggregate_day(
+        sample["irradiation"], days.latitude, days.day_of_year, temp_air=sample["temp_air"],
+        wind_speed=sample["wind_speed"], temp_air_range=span,
+    )
+    ghi = hours_of_broken_sky(
+        days.latitude, days.day_of_year, sample["irradiation"], brokenness=USUAL_BROKENNESS,
+        random=np.random.default_rng(SEED),
+    )
+    weather = {"ghi": ghi, "temp_air": smooth.temp_air, "wind_speed": smooth.wind_speed}
+    for name in ("temp_dew", "relative_humidity"):
+        if name in sample:
+            weather[name] = np.repeat(sample[name], 24, axis=0)
+    return Block(weather, days.latitude, days.day_of_year, steps_per_day=24)
+
+
+def _months(true: Array, said: Array, frost: NDArray[np.bool_], month: NDArray[Any]) -> tuple[Array, Array]:
+    """Sums of the months that have every day in both and no frost."""
+    starts = np.concatenate([[0], np.flatnonzero(np.diff(month)) + 1])
+    whole = np.isfinite(true) & np.isfinite(said) & ~frost
+    fine = np.logical_and.reduceat(whole, starts, axis=0)
+    sums = [np.add.reduceat(np.where(whole, values, 0.0), starts, axis=0) for values in (true, said)]
+    fine &= sums[0] > LEAST_MONTH_L_M2
+    return sums[0][fine], sums[1][fine]
+
+
+def _compared(true: Array, said: Array, cells: int, days: int, hours: str) -> Audit:
+    if true.size == 0:
+        return Audit(cells, days, 0, float("nan"), float("nan"), float("nan"), hours)
+    error = np.abs(said / true - 1.0)
+    bias = float(said.sum() / true.sum() - 1.0)
+    return Audit(cells, days, true.size, float(error.mean()), float(np.quantile(error, 0.95)), bias, hours)
