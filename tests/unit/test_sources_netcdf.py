@@ -30,6 +30,7 @@ from stillfield.errors import UnitsError, WeatherError
 from stillfield.sources import guess_kind, open_source
 from stillfield.sources.gates import gate
 from stillfield.sources.netcdf import open_netcdf
+from stillfield.sources.tally import totals
 from typical_year_samples import clear_sky
 
 TRUE = truth()
@@ -157,7 +158,7 @@ def test_single_and_double_precision_coordinates_are_the_same_cells(tmp_path):
         part.to_netcdf(tmp_path / f"{name}.nc")
     found = open_netcdf([str(tmp_path / "*.nc")])
     assert found.latitude.values.tolist() == tenths.tolist()
-    assert dict(found.sizes) == {"time": DAYS, "latitude": 3, "longitude": 4}
+    assert dict(found.drop_dims("count").sizes) == {"time": DAYS, "latitude": 3, "longitude": 4}
     assert int(found.temp_air.isnull().sum()) == 0
 
 
@@ -207,7 +208,7 @@ def test_one_cell_one_row_and_one_column(tmp_path, cells):
 def test_a_point_with_scalar_coordinates_is_a_grid_of_one_cell(tmp_path):
     weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2")).isel(latitude=1, longitude=2)
     found = open_netcdf(whole(weather, tmp_path))
-    assert dict(found.sizes) == {"time": DAYS, "latitude": 1, "longitude": 1}
+    assert dict(found.drop_dims("count").sizes) == {"time": DAYS, "latitude": 1, "longitude": 1}
     np.testing.assert_allclose(found.irradiation.values.ravel(), TRUE.irradiation[:, 1, 2])
 
 
@@ -319,7 +320,7 @@ def test_a_window_of_the_grid_is_cut_to(tmp_path):
     weather.to_netcdf(tmp_path / "a.nc")
     wind.to_netcdf(tmp_path / "b.nc")
     found = open_netcdf([str(tmp_path / "*.nc")])
-    assert dict(found.sizes) == {"time": DAYS, "latitude": 2, "longitude": 3}
+    assert dict(found.drop_dims("count").sizes) == {"time": DAYS, "latitude": 2, "longitude": 3}
     assert any("irradiation was cut from 3 to the 2 shared values of latitude" in c for c in found.attrs["conventions"])
 
 
@@ -533,13 +534,42 @@ def test_times_that_cannot_be_used_are_refused(tmp_path):
     _refused(tmp_path, plain.isel(time=0, drop=True), "no time axis was found")
 
 
-def test_overlapping_and_unlike_files_are_refused(tmp_path):
+@pytest.mark.parametrize("write", [whole, packed])
+def test_records_that_come_twice_with_the_same_values_count_once(tmp_path, write):
+    weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2"))
+    (tmp_path / "b").mkdir()
+    files = write(weather.isel(time=slice(0, 3)), tmp_path) + write(weather.isel(time=[3, 2, 1]), tmp_path / "b")
+    found = open_netcdf(files)
+    _check(found, "irradiation", TRUE.irradiation, days())
+    assert "2 records of rsds come twice and count once." in found.attrs["conventions"]
+    assert "Records of rsds do not stand in the order of time; they were sorted." in found.attrs["conventions"] \
+        or write is packed  # which writes times in two halves, each of them in another file
+    assert totals(found["count"].values, found["counts"].values)["irradiation"]["repeated"] == 2 * 12
+
+
+def test_a_copy_that_lacks_a_value_takes_it_from_the_other(tmp_path):
+    weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2"))
+    weather.where(weather.latitude > 8.2).isel(time=slice(0, 3)).to_netcdf(tmp_path / "a.nc")
+    weather.isel(time=slice(0, 4)).to_netcdf(tmp_path / "b.nc")
+    weather.isel(time=slice(1, 4)).to_netcdf(tmp_path / "c.nc")
+    _check(open_netcdf([str(tmp_path / "*.nc")]), "irradiation", TRUE.irradiation, days())
+
+
+def test_copies_that_contradict_each_other_are_refused_by_name_when_they_are_read(tmp_path):
     weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2"))
     weather.isel(time=slice(0, 3)).to_netcdf(tmp_path / "a.nc")
-    weather.isel(time=slice(2, 4)).to_netcdf(tmp_path / "b.nc")
-    with pytest.raises(WeatherError, match=r"a\.nc and .*b\.nc: a time comes twice \(got 2010-03-12"):
-        open_netcdf([str(tmp_path / "*.nc")])
-    (tmp_path / "b.nc").unlink()
+    other = weather.isel(time=slice(2, 4)).copy(deep=True)
+    other.rsds[0, 1, 2] += 0.5
+    other.to_netcdf(tmp_path / "b.nc")
+    found = open_netcdf([str(tmp_path / "*.nc")])
+    with pytest.raises(WeatherError, match=r"2010-03-12 00:00 \(.*a\.nc, .*b\.nc\): a time comes twice with different "
+                                           r"values \(got .* and .*; 1 such values\)\. Leave out one"):
+        found.irradiation.compute()
+
+
+def test_unlike_files_are_refused(tmp_path):
+    weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2"))
+    weather.isel(time=slice(0, 3)).to_netcdf(tmp_path / "a.nc")
     weather.isel(time=slice(3, 4), latitude=[0, 1]).to_netcdf(tmp_path / "b.nc")
     with pytest.raises(WeatherError, match=r"files lie on different cells \(latitude\) \(got 3 and 2 values\)"):
         open_netcdf([str(tmp_path / "*.nc")])

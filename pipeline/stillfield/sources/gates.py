@@ -6,7 +6,9 @@ nothing is read twice; counts of several blocks add up. On lazy weather it becom
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -15,6 +17,8 @@ from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
 from stillfield.physics.sun import extraterrestrial_irradiation
+from stillfield.sources.calendars import solar_day_of_year
+from stillfield.sources.tally import cell_counts, sentences, with_counts
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER, Quantity
 
 Array = NDArray[np.floating[Any]]
@@ -63,10 +67,10 @@ class GateCounts:
         >>> GateCounts({"ghi": 3}, {"ghi": 0}, {"ghi": 100}).sentences()
         ['3 of 100 values of ghi were slightly negative and set to 0.']
         """
-        told = [f"{n} of {self.values[name]} values of {name} were slightly negative and set to 0."
-                for name, n in self.clipped.items() if n]
-        return told + [f"{n} of {self.values[name]} values of {name} are missing."
-                       for name, n in self.missing.items() if n]
+        return sentences({
+            name: {"clipped": self.clipped[name], "missing": self.missing[name], "values": self.values[name]}
+            for name in self.values
+        })
 
 
 def _added(first: dict[str, int], second: dict[str, int]) -> dict[str, int]:
@@ -89,10 +93,11 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
     Returns
     -------
     weather : xarray.Dataset
-        The same, small negative irradiance set to 0. Of lazy weather each block is checked when it is
-        computed, and days that lie across two blocks are held against the bounds of a step only.
+        The same, small negative irradiance set to 0, and variable ``counts`` (`tally`) with what was clipped or
+        missing in each cell. Of lazy weather each block is checked and counted when it is computed, and days
+        that lie across two blocks are held against the bounds of a step only.
     counts : GateCounts
-        Empty for lazy weather: gate its computed blocks again to count.
+        Of all cells together. Empty for lazy weather, which is counted when it is computed.
 
     Raises
     ------
@@ -101,27 +106,55 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
     """
     daily = float(weather.attrs.get("step_hours", 24.0)) >= 24.0
     table = DAY_WEATHER if daily else STEP_WEATHER
-    counts = GateCounts()
-    changed: dict[str, xr.DataArray] = {}
-    if any(variable.chunks is not None for variable in weather.data_vars.values()):
+    if any(weather[name].chunks is not None for name in table if name in weather.data_vars):
+        changed = {}
         for name in (name for name in table if name in weather.data_vars):
             one = weather[[name]]
-            changed[name] = xr.map_blocks(_gated_block, one, kwargs={"where": where}, template=one)[name]
-        return weather.assign(changed), counts
-    for name in (name for name in table if name in weather.data_vars):
-        values, clipped = _check_bounds(weather[name], table[name], where=where)
+            changed[name] = xr.map_blocks(_checked_block, one, kwargs={"where": where}, template=one)[name]
+        return _counted(weather, table).assign(changed), GateCounts()
+    checked, counts = _checked(weather, where=where)
+    return _counted(weather, table).assign(checked.data_vars), counts
+
+
+def _checked_block(block: xr.Dataset, *, where: str) -> xr.Dataset:
+    return _checked(block, where=where)[0]
+
+
+def _checked(weather: xr.Dataset, *, where: str) -> tuple[xr.Dataset, GateCounts]:
+    """Variables of the vocabulary in `weather`, in memory, held against their bounds."""
+    daily = float(weather.attrs.get("step_hours", 24.0)) >= 24.0
+    table = DAY_WEATHER if daily else STEP_WEATHER
+    counts = GateCounts()
+    result = weather[[name for name in table if name in weather.data_vars]]
+    for name in result.data_vars:
+        values, clipped = _check_bounds(weather[name], table[str(name)], where=where)
         counts += GateCounts(
-            {name: clipped}, {name: int(np.isnan(values.values).sum())}, {name: int(values.size)}
+            {str(name): clipped}, {str(name): int(np.isnan(values.values).sum())}, {str(name): int(values.size)}
         )
-        changed[name] = values
-    result = weather.assign(changed)
+        result = result.assign({name: values})
     if "latitude" in weather.coords:
         _check_sunshine(result, daily=daily, where=where)
     return result, counts
 
 
-def _gated_block(block: xr.Dataset, *, where: str) -> xr.Dataset:
-    return gate(block, where=where)[0]
+def _counted(weather: xr.Dataset, table: Mapping[str, Quantity]) -> xr.Dataset:
+    """Weather with what is small and negative, and what is missing, counted in each cell."""
+    counted = weather
+    for name in (name for name in table if name in weather.data_vars and "time" in weather[name].dims):
+        floor = _NOISE_FLOOR.get(name)
+        values = weather[name].transpose("time", ...)
+        rows = cell_counts(values, partial(_count_block, noise=floor is not None), ("clipped", "missing"))
+        counted = with_counts(counted, name, {**rows, "values": values.sizes["time"]})
+    return counted
+
+
+def _count_block(block: NDArray[Any], *, noise: bool) -> NDArray[np.int64]:
+    counts = np.zeros((2, *block.shape[1:]), dtype=np.int64)
+    if noise:
+        with np.errstate(invalid="ignore"):
+            counts[0] = np.count_nonzero(block < 0.0, axis=0)
+    counts[1] = np.count_nonzero(np.isnan(block), axis=0)
+    return counts
 
 
 def _check_bounds(values: xr.DataArray, quantity: Quantity, *, where: str) -> tuple[xr.DataArray, int]:
@@ -159,7 +192,7 @@ def _check_sunshine(weather: xr.Dataset, *, daily: bool, where: str) -> None:
     if sun is None:
         return
     latitude = np.atleast_1d(weather["latitude"].values).astype(float)
-    day_of_year = np.atleast_1d(sun["time"].dt.dayofyear.values)
+    day_of_year = np.atleast_1d(solar_day_of_year(sun["time"]))
     outside = xr.DataArray(
         extraterrestrial_irradiation(latitude, day_of_year), dims=("time", weather["latitude"].dims[0])
     )

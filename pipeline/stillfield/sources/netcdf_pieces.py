@@ -1,8 +1,8 @@
-"""One variable of one NetCDF file on canonical axes, and the joining of such pieces along time."""
+"""One variable of one NetCDF file on canonical axes."""
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 from math import prod
 from pathlib import Path
@@ -12,12 +12,9 @@ import numpy as np
 import xarray as xr
 
 from stillfield.errors import WeatherError
-from stillfield.sources.grid_axes import Axes, clean_degrees, find_axes, latitude_order, longitude_order, snapped
+from stillfield.sources.grid_axes import Axes, clean_degrees, find_axes, latitude_order, longitude_order
 from stillfield.sources.recognise import Choice, Found, recognise
 
-#: Numbers that stand for "missing" in files that do not declare them.
-_SENTINELS = (-999.0, -9999.0)
-_IMPOSSIBLY_LARGE = 1e14
 #: Coordinates of stations that are kept where a file has them.
 _OF_SITES = ("elevation", "utc_offset_hours", "name")
 #: Size of the blocks weather is read in. [bytes]
@@ -40,6 +37,8 @@ class Piece:
         Dims time and latitude, longitude or site; lazy; undeclared sentinels still in it.
     notes : tuple of str
         Sentences for the conventions.
+    files : tuple of str
+        All files, where several were opened as one; `path` is the first of them.
     """
 
     found: Found
@@ -47,6 +46,7 @@ class Piece:
     placed: str | None
     values: xr.DataArray
     notes: tuple[str, ...]
+    files: tuple[str, ...] = ()
 
 
 def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
@@ -69,7 +69,7 @@ def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
     WeatherError
         If the file cannot be opened or its axes cannot be used.
     """
-    weather = _open(path)
+    weather = open_one(path)
     try:
         return take_pieces(weather, str(path), choices)
     except BaseException:
@@ -113,7 +113,14 @@ def take_pieces(weather: xr.Dataset, where: str, choices: Mapping[str, Choice]) 
     return [_piece(weather, axes, one, where, notes) for one in found]
 
 
-def _open(path: Path) -> xr.Dataset:
+def open_one(path: Path) -> xr.Dataset:
+    """Open one file lazily, its values decoded when they are read.
+
+    Raises
+    ------
+    WeatherError
+        If the file cannot be opened.
+    """
     try:
         return xr.open_dataset(path, engine="netcdf4", decode_timedelta=False, cache=False)
     except Exception as fault:  # netCDF4, HDF5 and the time decoder each raise their own kinds
@@ -148,10 +155,11 @@ def _piece(weather: xr.Dataset, axes: Axes, found: Found, where: str, notes: tup
         if weather[axes.time].size != 1:
             raise WeatherError(f"variable '{found.name}' has no time", where=where)
         variable = xr.Variable((time_dim, *variable.dims), variable.chunk().data[np.newaxis], variable.attrs)
-    chunked = variable.chunk(_chunks(variable, time_dim))
+    chunked = variable if variable.chunks else variable.chunk(block_sizes(variable, time_dim))
     values, said = _on_cells(chunked, weather, axes, time_dim, where=where)
     valid = _valid_range(weather.variables[found.name])
-    values = values.assign_coords(time=("time", time)).assign_attrs(bounds_hours=hours, valid_range=valid)
+    values = values.assign_coords(time=("time", time)).assign_attrs(
+        bounds_hours=hours, valid_range=valid, resolution=_resolution(weather.variables[found.name]))
     return Piece(found, where, placed, values, notes + said)
 
 
@@ -161,6 +169,11 @@ def _valid_range(variable: xr.Variable) -> tuple[float, float]:
         return (-np.inf, np.inf)
     both = variable.attrs.get("valid_range", (-np.inf, np.inf))
     return float(variable.attrs.get("valid_min", both[0])), float(variable.attrs.get("valid_max", both[1]))
+
+
+def _resolution(variable: xr.Variable) -> float:
+    """Smallest difference the file can hold: its packing, or the last digits of single precision near 0."""
+    return abs(float(variable.encoding.get("scale_factor", 0.0)))
 
 
 def _time_of(weather: xr.Dataset, axes: Axes, found: Found, *, where: str) -> tuple[Any, str | None, float]:
@@ -184,10 +197,25 @@ def _hours(span: Any) -> float:
     return float(seconds) / 3600.0
 
 
-def _chunks(variable: xr.Variable, time_dim: str) -> dict[Any, int]:
-    """Blocks of whole stored chunks, about `_BLOCK_BYTES` each, growing along time first."""
+def block_sizes(variable: xr.Variable, time_dim: str, sizes: Mapping[Any, int] | None = None) -> dict[Any, int]:
+    """Blocks of whole stored chunks, about 64 MiB each, growing along time first.
+
+    Parameters
+    ----------
+    variable : xarray.Variable
+        As opened from a file.
+    time_dim : str
+        Its dimension of time.
+    sizes : mapping, optional
+        Sizes of all files together, where `variable` is that of the first.
+
+    Returns
+    -------
+    dict
+        Size of a block along each dimension.
+    """
     stored = variable.encoding.get("chunksizes") or None
-    sizes = dict(variable.sizes)
+    sizes = dict(variable.sizes if sizes is None else sizes)
     if stored is None or len(stored) != len(sizes):
         row = variable.dtype.itemsize * prod(size for dim, size in sizes.items() if dim != time_dim)
         return {**sizes, time_dim: max(1, min(sizes[time_dim], _BLOCK_BYTES // max(row, 1)))}
@@ -241,77 +269,3 @@ def _at_sites(variable: xr.Variable, weather: xr.Dataset, latitude: Any, longitu
         variable.data, dims=("time", "site"),
         coords={"site": ids, "latitude": ("site", latitude), "longitude": ("site", wrapped), **more},
     )
-
-
-def _masked(values: xr.DataArray, valid: tuple[float, float]) -> xr.DataArray:
-    """Values as floats; undeclared sentinels and values outside the stated range are missing."""
-    kind = values.dtype if np.issubdtype(values.dtype, np.floating) else np.dtype(np.float64)
-    return values.copy(data=values.data.map_blocks(_mask_block, valid=valid, dtype=kind))
-
-
-def _mask_block(block: Any, *, valid: tuple[float, float]) -> Any:
-    block = block if np.issubdtype(block.dtype, np.floating) else block.astype(np.float64)
-    with np.errstate(invalid="ignore"):
-        bad = np.abs(block) >= _IMPOSSIBLY_LARGE
-        for sentinel in _SENTINELS:
-            bad |= block == sentinel
-        if np.isfinite(valid).any():
-            bad |= (block < valid[0]) | (block > valid[1])
-    return np.where(bad, block.dtype.type(np.nan), block) if bad.any() else block
-
-
-def join_pieces(pieces: Sequence[Piece]) -> xr.DataArray:
-    """Join pieces of one role along time.
-
-    Parameters
-    ----------
-    pieces : sequence of Piece
-        Of one role, any order.
-
-    Returns
-    -------
-    DataArray
-
-    Raises
-    ------
-    WeatherError
-        If the pieces differ in unit, kind of stamp or cells, or a time comes twice.
-    """
-    ordered = sorted(pieces, key=lambda piece: piece.values.indexes["time"].min())
-    first = ordered[0]
-    parts = [first.values, *(snapped(other.values, first.values) for other in ordered[1:])]
-    for other, values in zip(ordered[1:], parts[1:], strict=True):
-        _check_alike(first, other, values)
-    joined = first.values if len(ordered) == 1 else xr.concat(
-        parts, dim="time", join="exact", combine_attrs="override",
-        coords="minimal", compat="override", data_vars="all",
-    )
-    index = joined.indexes["time"]
-    if not index.is_monotonic_increasing:
-        joined = joined.sortby("time")
-        index = joined.indexes["time"]
-    if index.has_duplicates:
-        twice = index[index.duplicated()][0]
-        holders = [piece.path for piece in ordered if twice in piece.values.indexes["time"]]
-        raise WeatherError("a time comes twice", where=" and ".join(holders[:2]), got=str(twice)[:16],
-                           cure="Leave out one of the overlapping files.")
-    return _masked(joined, first.values.attrs["valid_range"])
-
-
-def _check_alike(first: Piece, other: Piece, values: xr.DataArray) -> None:
-    where = f"{first.path} and {other.path}"
-    if first.found.units != other.found.units or first.found.name != other.found.name:
-        raise WeatherError(
-            f"files disagree about {first.found.role}", where=where,
-            got=f"'{first.found.name}' in '{first.found.units}' and '{other.found.name}' in '{other.found.units}'",
-            wanted="one variable in one unit", cure="Run them apart, or choose the variable under `variables`.",
-        )
-    if first.values.attrs["valid_range"] != other.values.attrs["valid_range"]:
-        raise WeatherError("files state different valid ranges", where=where, cure="Run them apart.")
-    if first.placed != other.placed:
-        raise WeatherError("only some of the files have time bounds", where=where, cure="Make them alike.")
-    for axis in set(first.values.dims) - {"time"}:
-        if not first.values.indexes[axis].equals(values.indexes[axis]):
-            raise WeatherError(f"files lie on different cells ({axis})", where=where,
-                               got=f"{first.values.sizes[axis]} and {values.sizes[axis]} values",
-                               cure="Cut or regrid them to one grid first.")
