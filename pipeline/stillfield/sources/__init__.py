@@ -34,7 +34,9 @@ class Source(Protocol):
     - attributes ``record`` ('series' or 'typical-year'), ``step_hours`` (24.0 for daily),
       ``clock`` ('UTC', 'local-standard', or 'own-days' for daily weather whose days are the source's own),
       ``origin`` (one sentence: what was read from where) and ``conventions`` (list of str: every
-      assumption made about the file, one sentence each).
+      assumption made about the file, one sentence each) and ``recognised`` (list of str, each the text of a JSON
+      object: ``name`` in the file or null, ``quantity`` by stillfield's name, ``units`` in the file, ``how`` it
+      was recognised).
     """
 
     def open(self) -> xr.Dataset:

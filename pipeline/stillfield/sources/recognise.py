@@ -6,6 +6,7 @@ what its numbers are.
 
 from __future__ import annotations
 
+import json
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -97,6 +98,12 @@ class Found:
     height_m: float | None
     cell_methods: str
     how: str
+
+    def told(self, *, daily: bool) -> str:
+        """What was recognised, as text of a JSON object, for the attribute ``recognised`` of a source."""
+        sun = "irradiation" if daily else "ghi"
+        return json.dumps({"name": self.name, "quantity": sun if self.role == "sun" else self.role,
+                           "units": self.units, "how": self.how})
 
 
 def read_mapping(mapping: Mapping[str, str | Mapping[str, Any]] | None) -> dict[str, Choice]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -205,8 +206,16 @@ def _assemble(ids: Sequence[str], sites: Sequence[_Site], paths: Sequence[Path])
             "step_hours": 1.0,
             "clock": "local-standard",
             "origin": f"Typical years read from {', '.join(path.name for path in paths)}.",
+            "recognised": _recognised(shared, sites),
         },
     )
     weather, counts = gate(weather, where=", ".join(path.name for path in paths))
     weather.attrs["conventions"] = conventions + counts.sentences()
     return weather
+
+
+def _recognised(shared: Sequence[str], sites: Sequence[_Site]) -> list[str]:
+    """What every file gives; the columns and units are those of its format."""
+    formats = ", ".join(sorted({site.rows.format for site in sites}))
+    return [json.dumps({"name": None, "quantity": name, "units": None, "how": f"the format ({formats})"})
+            for name in shared]
