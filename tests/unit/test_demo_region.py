@@ -115,7 +115,7 @@ def test_villages_stand_on_land_at_the_height_of_the_relief(villages):
 
 
 def test_some_villages_lie_on_missing_cells_with_land_within_reach(villages):
-    weather = SyntheticSource(land=COAST, south=17.5, north=22.5, west=-42.5, east=-37.5, years=1).open()
+    weather = SyntheticSource(land=COAST, south=17.5, north=22.5, west=-42.5, east=-37.5, years=1).open().load()
     missing = 0
     latitude, longitude = weather.latitude.values, weather.longitude.values
     rows, columns = np.nonzero(weather.elevation.notnull().values)

@@ -12,6 +12,7 @@ import pytest
 import xarray as xr
 
 from stillfield.errors import WeatherError
+from stillfield.sources import synthetic
 from stillfield.sources.synthetic import SyntheticSource, cell_centres, ground_at, read_land
 from stillfield.sources.synthetic_fields import (
     Season,
@@ -37,7 +38,7 @@ def source(**changes) -> SyntheticSource:
 
 @pytest.fixture(scope="module")
 def weather() -> xr.Dataset:
-    return source().open()
+    return source().open().load()
 
 
 @pytest.fixture(scope="module")
@@ -277,7 +278,7 @@ def test_the_sea_softens_the_day_and_feeds_damp_and_wind(weather, coast_km):
 
 
 def test_years_differ_so_that_poor_years_exist():
-    record = source(shape=(10, 10), years=8).open()
+    record = source(shape=(10, 10), years=8).open().load()
     monthly = record.irradiation.resample(time="MS").mean().mean(("latitude", "longitude"))
     yearly = monthly.groupby("time.year").mean()
     assert 0.005 < float(yearly.std() / yearly.mean()) < 0.06
@@ -349,3 +350,21 @@ def test_a_land_file_that_is_none_is_refused(tmp_path, text, words):
     path.write_text(text)
     with pytest.raises(WeatherError, match=words):
         read_land(path)
+
+
+def test_nothing_is_made_before_a_value_is_asked_for(monkeypatch):
+    made = []
+    monkeypatch.setattr(synthetic, "_weather_on_grid", lambda *_: made.append(1) or {})
+    laid_out = source().open()
+    assert not made
+    assert {values.dtype for values in laid_out.data_vars.values()} == {np.dtype("float32")}
+
+
+def test_one_making_serves_every_variable_and_every_question(monkeypatch):
+    real, made = synthetic._weather_on_grid, []
+    monkeypatch.setattr(synthetic, "_weather_on_grid", lambda *given: made.append(1) or real(*given))
+    laid_out = source(years=1, shape=(4, 4)).open()
+    laid_out.load()
+    laid_out = source(years=1, shape=(4, 4)).open()
+    assert float(laid_out["irradiation"].max()) > float(laid_out["irradiation"].min())
+    assert len(made) == 2

@@ -7,10 +7,13 @@ gridded record: sea cells are missing, years differ, and every place has a heigh
 from __future__ import annotations
 
 import json
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
+from threading import Lock
 from typing import TYPE_CHECKING, Any
+from uuid import uuid4
 
 import numpy as np
 import xarray as xr
@@ -77,13 +80,13 @@ class SyntheticSource:
     seed: int = 1
 
     def open(self) -> xr.Dataset:
-        """Make the weather, a year at a time.
+        """Lay out the weather; it is made, a year at a time, when its first value is asked for, and kept.
 
         Returns
         -------
         xarray.Dataset
-            Daily weather with dims time, latitude, longitude in single precision, and the coordinate
-            elevation (latitude, longitude) [m].
+            Lazy daily weather with dims time, latitude, longitude in single precision, and the coordinate
+            elevation (latitude, longitude) [m], missing at sea.
 
         Raises
         ------
@@ -104,7 +107,7 @@ class SyntheticSource:
         ground = ground_at(land, grid_lat[is_land], grid_lon[is_land])
         first, end = f"{self.first_year:04d}-01-01", f"{self.first_year + self.years:04d}-01-01"
         days = np.arange(np.datetime64(first, "D"), np.datetime64(end, "D"))
-        weather = _weather_on_grid(ground, is_land, days, self.seed)
+        weather = _made_later(partial(_weather_on_grid, ground, is_land, days, self.seed), (days.size, *is_land.shape))
         elevation = np.full(is_land.shape, np.nan, dtype=np.float32)
         elevation[is_land] = np.round(ground.elevation_m, 1)
         dataset = _labelled(weather, days, latitude, longitude, elevation)
@@ -143,6 +146,10 @@ class SyntheticSource:
             "origin": f"Invented daily weather of {self.first_year} to {last} (seed {self.seed}) on"
             f" {land_cells} land cells of {self.land.name}.",
             "conventions": list(CONVENTIONS),
+            "recognised": [
+                json.dumps({"name": None, "quantity": name, "units": DAY_WEATHER[name].unit, "how": "invention"})
+                for name in DECIMALS
+            ],
         }
 
 
@@ -261,6 +268,36 @@ def ground_at(land: BaseGeometry, latitude: Floats, longitude: Floats) -> Ground
     return Ground(latitude, east_km, north_km, coast_km, relief_elevation(east_km, north_km, coast_km))
 
 
+class _Once:
+    """Grids that are made once, by whichever thread asks first."""
+
+    def __init__(self, make: Callable[[], dict[str, Floats]]) -> None:
+        self._make = make
+        self._lock = Lock()
+        self._grids: dict[str, Floats] | None = None
+
+    def grid(self, name: str) -> Floats:
+        """One variable."""
+        with self._lock:
+            if self._grids is None:
+                self._grids = self._make()
+            return self._grids[name]
+
+
+def _made_later(make: Callable[[], dict[str, Floats]], shape: tuple[int, ...]) -> dict[str, Any]:
+    """Lazy arrays of the variables `make` gives; all are made together at the first computation."""
+    import dask.array as da
+
+    once = _Once(make)
+    chunks = tuple((size,) for size in shape)
+    like = np.empty((0,) * len(shape), dtype=np.float32)
+    return {
+        name: da.map_blocks(partial(once.grid, name), chunks=chunks, dtype=like.dtype, meta=like,
+                            name=f"{name}-{uuid4().hex}")
+        for name in DECIMALS
+    }
+
+
 def _weather_on_grid(
     ground: Ground, is_land: NDArray[np.bool_], days: NDArray[np.datetime64], seed: int
 ) -> dict[str, Floats]:
@@ -279,7 +316,7 @@ def _weather_on_grid(
 
 
 def _labelled(
-    weather: Mapping[str, Floats],
+    weather: Mapping[str, Any],
     days: NDArray[np.datetime64],
     latitude: Floats,
     longitude: Floats,
