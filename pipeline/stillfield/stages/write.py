@@ -167,8 +167,8 @@ def _move_in(stage: Path, folder: Path) -> None:
     earlier = _listed(folder / MANIFEST)
     (folder / MANIFEST).unlink(missing_ok=True)
     for name in earlier:
-        if not (stage / name).exists():
-            (folder / name).unlink(missing_ok=True)
+        if (folder / name).is_file() and not (stage / name).exists():
+            (folder / name).unlink()
     paths = sorted(path for path in stage.rglob("*") if path.is_file() and path.name != MANIFEST)
     for path in (*paths, stage / MANIFEST):
         target = folder / path.relative_to(stage)
@@ -179,7 +179,7 @@ def _move_in(stage: Path, folder: Path) -> None:
 def _listed(manifest: Path) -> list[str]:
     """Files an earlier run left in the folder of its manifest; none where there is no manifest to be trusted."""
     try:
-        names = json.loads(manifest.read_text(encoding="utf-8"))["files"]
+        names = list(json.loads(manifest.read_text(encoding="utf-8"))["files"])
     except (OSError, ValueError, KeyError, TypeError):
         return []
     return [str(name) for name in names if not Path(str(name)).is_absolute() and ".." not in Path(str(name)).parts]
