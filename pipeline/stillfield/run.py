@@ -7,12 +7,11 @@ from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
-import pandas as pd
 import xarray as xr
 
 from stillfield.methods import Method
 from stillfield.methods.baselines import ConstantEfficiency
-from stillfield.methods.registry import get_method
+from stillfield.opening import Opened, open_run
 from stillfield.physics.still import Still
 from stillfield.products.summary import Summary, summarise
 from stillfield.settings.load import resolved_yaml
@@ -20,10 +19,9 @@ from stillfield.settings.model import RunSettings
 from stillfield.stages.aggregate import aggregate
 from stillfield.stages.audit import Audit, audit
 from stillfield.stages.estimate import estimate
-from stillfield.stages.prepare import Prepared, prepare
 from stillfield.stages.rank import rank_places
-from stillfield.stages.read import Box, describe_inputs, read_places, read_weather
-from stillfield.stages.write import Results, check_outputs, write_results
+from stillfield.stages.read import describe_inputs
+from stillfield.stages.write import Results, write_results
 
 log = logging.getLogger(__name__)
 
@@ -48,27 +46,13 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     StillfieldError
         With what, where, got, wanted and cure.
     """
-    folders = [
-        settings.folder if len(settings.stills) == 1 else settings.folder / still.name for still in settings.stills
-    ]
-    land = None if settings.map.land is None else settings.map.land.path
-    check_outputs(folders, land=land)
-    places = None
-    if settings.places is not None:
-        places = read_places(settings.places.table.path, settings.places.columns.given())
-    log.info("reading the weather")
-    region = None if settings.region is None else Box(**settings.region.model_dump())
-    weather = read_weather(
-        settings.weather.kind, settings.weather.names, region=region, **settings.weather.options()
-    )
-    log.info("%s", weather.attrs.get("origin", ""))
-    prepared = prepare(weather, min_valid_hours=settings.missing.min_valid_hours)
+    opened = open_run(settings)
     files = list(settings.weather.names)
     files += [str(named.path) for named in (settings.places and settings.places.table, settings.map.land) if named]
     inputs = describe_inputs([*files, *(str(choice.path) for choice in settings.still)], Path(run_file).parent)
     summaries = []
-    for still, folder in zip(settings.stills, folders, strict=True):
-        summaries.append(_one_still(settings, still, prepared, places=places, inputs=inputs, folder=folder))
+    for still, folder in zip(settings.stills, opened.folders, strict=True):
+        summaries.append(_one_still(settings, still, opened, inputs=inputs, folder=folder))
     return Summary(
         "\n".join(summary.text for summary in summaries),
         tuple(file for summary in summaries for file in summary.files),
@@ -76,13 +60,10 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
 
 
 def _one_still(
-    settings: RunSettings, still: Still, prepared: Prepared, *, places: pd.DataFrame | None,
-    inputs: dict[str, dict[str, Any]], folder: Path,
+    settings: RunSettings, still: Still, opened: Opened, *, inputs: dict[str, dict[str, Any]], folder: Path
 ) -> Summary:
     log.info("estimating %s by method %s", still.name, settings.method)
-    method = get_method(
-        settings.method, hourly=prepared.steps is not None, fits_folder=Path(settings.output.folder) / "fits"
-    )
+    method, prepared, places = opened.method, opened.prepared, opened.places
     daily = estimate(
         prepared.daily, still, method, rule=ConstantEfficiency(settings.rule.efficiency),
         steps=prepared.steps,

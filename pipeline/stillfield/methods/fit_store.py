@@ -9,7 +9,7 @@ from dataclasses import asdict
 from functools import lru_cache
 from importlib import resources
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 from stillfield.physics.correlation import DailyCorrelation
 from stillfield.physics.fitting import FIT_VERSION, StillFit, fit_still
@@ -40,7 +40,7 @@ def fit_for(still: Still, folder: Path | None = None) -> StillFit:
     shipped = _shipped()
     if fingerprint in shipped:
         return shipped[fingerprint]
-    path = None if folder is None else folder / f"fit-{fingerprint}.json"
+    path = None if folder is None else _kept_in(folder, fingerprint)
     if path is not None and fingerprint in (kept := kept_fits(path)):
         return kept[fingerprint]
     fit = _made(still)
@@ -50,6 +50,30 @@ def fit_for(still: Still, folder: Path | None = None) -> StillFit:
         partial.write_text(fit_text([fit]), encoding="utf-8", newline="\n")
         partial.replace(path)
     return fit
+
+
+def fit_state(still: Still, folder: Path | None = None) -> Literal["shipped", "kept", "to be made"]:
+    """Tell where `fit_for` would take the fit from, without making it.
+
+    Parameters
+    ----------
+    still : Still
+        Design and condition.
+    folder : Path, optional
+        Where fits of other runs are kept.
+
+    Returns
+    -------
+    {'shipped', 'kept', 'to be made'}
+    """
+    fingerprint = still.fingerprint()
+    if fingerprint in _shipped():
+        return "shipped"
+    return "kept" if folder is not None and fingerprint in kept_fits(_kept_in(folder, fingerprint)) else "to be made"
+
+
+def _kept_in(folder: Path, fingerprint: str) -> Path:
+    return folder / f"fit-{fingerprint}.json"
 
 
 def _made(still: Still) -> StillFit:

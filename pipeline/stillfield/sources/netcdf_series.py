@@ -126,9 +126,7 @@ def _described(path: Path, file: netCDF4.Dataset) -> _Header | None:
     said = attributes[time]
     raw, bounds = file.variables[time][:], str(said.get("bounds", ""))
     edges = file.variables[bounds][:] if bounds in file.variables else None
-    if not raw.size or not np.isfinite(raw).all() or (np.diff(raw) <= 0).any() or _OWN & set(said):
-        return None
-    if edges is not None and edges.shape != (raw.size, 2):
+    if not _plain_times(raw, said) or (edges is not None and edges.shape != (raw.size, 2)):
         return None
     parts: list[Any] = [tuple((name, len(size)) for name, size in file.dimensions.items() if name != time)]
     for name, variable in file.variables.items():
@@ -144,6 +142,14 @@ def _described(path: Path, file: netCDF4.Dataset) -> _Header | None:
     return _Header(
         path, tuple(parts), time, bounds if edges is not None else "", stamps, rest[0] if rest else None, scales
     )
+
+
+def _plain_times(raw: NDArray[Any], said: Mapping[str, Any]) -> bool:
+    """Whether times are there, rise, and are neither packed nor missing."""
+    absent = [said[key] for key in ("_FillValue", "missing_value") if key in said]
+    packed = "scale_factor" in said or "add_offset" in said
+    known = np.isfinite(raw).all() and not np.isin(raw, absent).any()
+    return bool(raw.size and not packed and known and (np.diff(raw) > 0).all())
 
 
 def _content(variable: Any) -> Any:

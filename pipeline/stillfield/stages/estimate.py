@@ -65,7 +65,7 @@ def estimate(
     MethodError
         If the weather lacks what the method needs.
     """
-    weather = _inputs(daily, steps, method)
+    weather = weather_for(method, daily, steps)
     space = [dim for dim in daily["irradiation"].dims if dim != "time"]
     cells = _cell_numbers(weather, space)
     inputs = {name: weather[name] for name in (*method.needs, *method.uses) if name in weather}
@@ -91,7 +91,26 @@ def estimate(
     return _labelled(stacked, daily, space, still, method)
 
 
-def _inputs(daily: xr.Dataset, steps: xr.Dataset | None, method: Method) -> xr.Dataset:
+def weather_for(method: Method, daily: xr.Dataset, steps: xr.Dataset | None = None) -> xr.Dataset:
+    """Choose the weather a method works on, days or steps, and check that it holds what the method needs.
+
+    Parameters
+    ----------
+    method : Method
+        Yield method.
+    daily, steps : xarray.Dataset
+        As for `estimate`.
+
+    Returns
+    -------
+    xarray.Dataset
+        One of the two, untouched.
+
+    Raises
+    ------
+    MethodError
+        If the weather lacks what the method needs.
+    """
     if method.resolution == "hourly" and steps is None:
         raise MethodError(
             f"method '{method.name}' works on steps of at most 6 h, and the weather is daily",

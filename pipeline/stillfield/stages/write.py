@@ -19,7 +19,7 @@ import pandas as pd
 import xarray as xr
 
 from stillfield.errors import OutputError
-from stillfield.products.grid import is_grid
+from stillfield.products.grid import is_grid, north_up
 from stillfield.products.manifest import digest_dataset, digest_file, write_manifest
 from stillfield.products.netcdf import MONTH_NAMES, write_netcdf
 from stillfield.products.place_columns import PLACE_COLUMNS
@@ -32,6 +32,8 @@ _CURE = "Free the disk or the permissions, or choose another output.folder."
 
 #: Variables that get a GeoTIFF of their own.
 RASTERS = ("monthly_yield", "monthly_yield_low", "monthly_yield_high", "annual_yield", "worst_month_yield")
+#: Variables that get a map of their own.
+SINGLE_MAPS = ("annual_yield", "worst_month_yield", "worst_month")
 
 
 @dataclass(frozen=True)
@@ -98,6 +100,49 @@ def check_outputs(folders: Iterable[Path], *, land: Path | None = None) -> None:
         from stillfield.products.coast import read_land
 
         read_land(land)
+
+
+def check_raster(weather: xr.Dataset) -> None:
+    """Find out before any yield is computed whether the cells make a raster; sites always pass.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        On the cells of the result.
+
+    Raises
+    ------
+    OutputError
+        If the spacing is uneven or unknown.
+    """
+    if is_grid(weather):
+        north_up(weather)
+
+
+def file_names(*, grid: bool, ranked: bool) -> tuple[str, ...]:
+    """Files `write_results` writes into a run's folder, as paths below it, in the order it gives them.
+
+    Parameters
+    ----------
+    grid : bool
+        Cells of a grid; sites otherwise.
+    ranked : bool
+        Whether there are places.
+
+    Returns
+    -------
+    tuple of str
+
+    Examples
+    --------
+    >>> file_names(grid=False, ranked=False)
+    ('READ-ME-FIRST.txt', 'cells.csv', 'maps/site_months.png', 'monthly_yield.nc', 'run.yaml', 'manifest.json')
+    """
+    maps = ["monthly_yield", *SINGLE_MAPS] if grid else ["site_months"]
+    names = ["READ-ME-FIRST.txt", "cells.csv", "monthly_yield.nc", "run.yaml", *(f"maps/{name}.png" for name in maps)]
+    names += [f"{name}.tif" for name in RASTERS] if grid else []
+    names += ["places.csv"] if ranked else []
+    return (*(path.as_posix() for path in sorted(map(Path, names))), MANIFEST)
 
 
 def write_results(folder: Path, results: Results) -> list[Path]:
@@ -219,7 +264,7 @@ def _write_maps(stage: Path, results: Results) -> None:
     write_map_twelve_months(
         results.monthly, maps / "monthly_yield.png", words=words, land=results.land, places=places
     )
-    for name in ("annual_yield", "worst_month_yield", "worst_month"):
+    for name in SINGLE_MAPS:
         write_map_single(
             results.monthly, name, maps / f"{name}.png", words=words, land=results.land, places=places
         )

@@ -1,0 +1,91 @@
+"""What a run opens and checks before it computes anything; a plan does the same and stops there.
+
+Because both go through here, a plan finds the faults a run would find, in the same order and words.
+"""
+
+from __future__ import annotations
+
+import logging
+from dataclasses import dataclass
+from pathlib import Path
+
+import pandas as pd
+import xarray as xr
+
+from stillfield.methods import Method
+from stillfield.methods.registry import get_method
+from stillfield.settings.model import RunSettings
+from stillfield.stages.estimate import weather_for
+from stillfield.stages.prepare import Prepared, prepare
+from stillfield.stages.read import Box, read_places, read_weather
+from stillfield.stages.write import check_outputs, check_raster
+
+log = logging.getLogger(__name__)
+
+
+@dataclass(frozen=True)
+class Opened:
+    """Everything a run needs, opened and found fit.
+
+    Attributes
+    ----------
+    folders : tuple of Path
+        Output folder of each still, in the order of the settings.
+    places : pandas.DataFrame or None
+        The villages.
+    weather : xarray.Dataset
+        As the source gives it, cut to the region.
+    prepared : Prepared
+        The same on local days; lazy where the source is.
+    method : Method
+        Yield method.
+    """
+
+    folders: tuple[Path, ...]
+    places: pd.DataFrame | None
+    weather: xr.Dataset
+    prepared: Prepared
+    method: Method
+
+
+def fits_folder(settings: RunSettings) -> Path:
+    """Folder in which fits of stills that are not shipped are kept."""
+    return Path(settings.output.folder) / "fits"
+
+
+def open_run(settings: RunSettings) -> Opened:
+    """Open and check what a run needs; nothing is written, and of lazy weather next to nothing is read.
+
+    Parameters
+    ----------
+    settings : RunSettings
+        A checked run.
+
+    Returns
+    -------
+    Opened
+
+    Raises
+    ------
+    StillfieldError
+        If an output could not be written, the table of places or the weather cannot be used, or the weather
+        lacks what the method needs.
+    """
+    folders = tuple(
+        settings.folder if len(settings.stills) == 1 else settings.folder / still.name for still in settings.stills
+    )
+    check_outputs(folders, land=None if settings.map.land is None else settings.map.land.path)
+    places = None
+    if settings.places is not None:
+        places = read_places(settings.places.table.path, settings.places.columns.given())
+    log.info("reading the weather")
+    region = None if settings.region is None else Box(**settings.region.model_dump())
+    weather = read_weather(
+        settings.weather.kind, settings.weather.names, region=region, **settings.weather.options()
+    )
+    log.info("%s", weather.attrs.get("origin", ""))
+    prepared = prepare(weather, min_valid_hours=settings.missing.min_valid_hours)
+    method = get_method(settings.method, hourly=prepared.steps is not None, fits_folder=fits_folder(settings))
+    weather_for(method, prepared.daily, prepared.steps)
+    check_raster(prepared.daily)
+    return Opened(folders, places, weather, prepared, method)
