@@ -13,7 +13,7 @@ from stillfield.physics.correlation import (
     DailyCorrelation,
     Day,
     design_matrix,
-    polynomial,
+    polynomials,
     remembered,
     scaled_predictors,
     thaw,
@@ -38,7 +38,7 @@ def some_days(count: int = 40, cells: int = 6, seed: int = 3) -> Day:
     )
 
 
-def test_nested_polynomial_is_the_sum_of_its_terms() -> None:
+def test_shared_products_give_the_sum_of_the_terms() -> None:
     random = np.random.default_rng(1)
     day = replace(
         some_days(), temp_range=random.uniform(2, 18, (40, 6)), dew_depression=random.uniform(0, 25, (40, 6)),
@@ -48,9 +48,10 @@ def test_nested_polynomial_is_the_sum_of_its_terms() -> None:
     predictors = scaled_predictors(day, 0.3, cyclic=False)
     flat = {letter: values.ravel() for letter, values in predictors.items()}
     for terms in VARIANTS.values():
-        coefficients = tuple(random.normal(size=len(terms)))
-        plain = design_matrix(flat, terms) @ np.array(coefficients)
-        np.testing.assert_allclose(polynomial(predictors, terms, coefficients).ravel(), plain, rtol=1e-10, atol=1e-10)
+        coefficients = random.normal(size=(3, len(terms)))
+        plain = design_matrix(flat, terms) @ coefficients.T
+        ours = polynomials(predictors, terms, coefficients)
+        np.testing.assert_allclose(ours.reshape(3, -1), plain.T, rtol=1e-10, atol=1e-10)
 
 
 def test_terms_are_unique_and_use_known_predictors() -> None:
@@ -168,7 +169,7 @@ def test_variant_follows_what_is_known() -> None:
 
 def test_coefficients_must_match_the_terms() -> None:
     wrong = DailyCorrelation("daily", (1.0,), (1.0,) * 9, 0.0, 0.3, {}, 0.0, 0.0)
-    with pytest.raises(ValueError, match="zip"):
+    with pytest.raises(ValueError, match="coefficients"):
         wrong.litres(some_days())
 
 

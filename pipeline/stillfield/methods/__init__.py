@@ -6,7 +6,7 @@ block, a list of stations and a distributed worker.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any, Literal, Protocol
 
@@ -98,4 +98,8 @@ class Method(Protocol):
 
     def daily_yield(self, block: Block, still: Still) -> DailyYield:
         """Yield of every day and cell of `block` for `still` in its central condition."""
+        ...
+
+    def daily_yields(self, block: Block, still: Still, conditions: Sequence[str]) -> list[DailyYield]:
+        """The same in each of `conditions`, sharing what they have in common."""
         ...

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import ClassVar, Literal
 
@@ -30,6 +31,10 @@ class ConstantEfficiency:
         litres = yield_from_efficiency(block.weather["irradiation"], self.efficiency)
         return DailyYield(np.asarray(litres))
 
+    def daily_yields(self, block: Block, still: Still, conditions: Sequence[str]) -> list[DailyYield]:
+        """The same in every condition."""
+        return [self.daily_yield(block, still)] * len(conditions)
+
 
 @dataclass(frozen=True)
 class PublishedLine:
@@ -53,3 +58,7 @@ class PublishedLine:
         irradiation, temp_air, wind_speed = (block.weather[name] for name in self.needs)
         litres = np.maximum(self.fit.litres(irradiation, temp_air, wind_speed, tilt), 0.0)
         return DailyYield(litres, outside=self.fit.outside(irradiation, temp_air, wind_speed, tilt))
+
+    def daily_yields(self, block: Block, still: Still, conditions: Sequence[str]) -> list[DailyYield]:
+        """The same in every condition."""
+        return [self.daily_yield(block, still)] * len(conditions)

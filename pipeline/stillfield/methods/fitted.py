@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import ClassVar, Literal
 
 from stillfield.methods import Block, DailyYield
 from stillfield.methods.fit_store import fit_for
-from stillfield.physics.correlation import Day
+from stillfield.physics.correlation import Day, daily_litres
 from stillfield.physics.day_shape import day_from_days, day_from_steps
 from stillfield.physics.forcing import step_forcing
 from stillfield.physics.gain import GainTable
@@ -47,10 +48,14 @@ class Fitted:
 
     def daily_yield(self, block: Block, still: Still) -> DailyYield:
         """Yield of every day; days with frost and days outside the range of the fit are flagged."""
+        return self.daily_yields(block, still, (still.condition,))[0]
+
+    def daily_yields(self, block: Block, still: Still, conditions: Sequence[str]) -> list[DailyYield]:
+        """The same in each of `conditions`; predictors and their products are made once."""
         day = self._day(block, still)
-        correlation = fit_for(still, self.folder).correlations[day.variant]
-        litres, frost, outside = correlation.litres(day, cyclic=block.cyclic)
-        return DailyYield(litres, frost=frost, outside=outside)
+        fits = [fit_for(still.in_condition(condition), self.folder) for condition in conditions]
+        found = daily_litres([fit.correlations[day.variant] for fit in fits], day, cyclic=block.cyclic)
+        return [DailyYield(litres, frost=frost, outside=outside) for litres, frost, outside in found]
 
     def _day(self, block: Block, still: Still) -> Day:
         if self.resolution == "daily":

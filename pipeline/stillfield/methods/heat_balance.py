@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 from typing import ClassVar, Literal
 
 from stillfield.methods import Block, DailyYield
@@ -23,9 +24,19 @@ class HeatBalance:
 
     def daily_yield(self, block: Block, still: Still) -> DailyYield:
         """Yield of every day; days with missing weather are NaN, days with ice are flagged."""
+        return self.daily_yields(block, still, (still.condition,))[0]
+
+    def daily_yields(self, block: Block, still: Still, conditions: Sequence[str]) -> list[DailyYield]:
+        """The same in each of `conditions`; optics, wind and sky are worked once."""
         forcing, _ = step_forcing(
             block.weather, still, latitude=block.latitude, day_of_year=block.day_of_year,
             steps_per_day=block.steps_per_day, clock_to_solar_hours=block.clock_to_solar_hours,
         )
-        result = simulate(forcing, still, steps_per_day=block.steps_per_day, cyclic=block.cyclic)
-        return DailyYield(result.daily_yield, frost=result.frost)
+        found = []
+        for condition in conditions:
+            one = still.in_condition(condition)
+            share = one.state.absorptance / still.state.absorptance
+            driven = replace(forcing, absorbed=forcing.absorbed * forcing.absorbed.dtype.type(share))
+            result = simulate(driven, one, steps_per_day=block.steps_per_day, cyclic=block.cyclic)
+            found.append(DailyYield(result.daily_yield, frost=result.frost))
+        return found

@@ -27,8 +27,9 @@ weather has them; P, q, k and v from steps within the day. What the basin rememb
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -159,12 +160,7 @@ class DailyCorrelation:
             [L m-2]; NaN where a predictor is.
         frost, outside : ndarray of bool, same shape
         """
-        predictors = scaled_predictors(day, self.memory, cyclic=cyclic)
-        raw = polynomial(predictors, VARIANTS[self.variant], self.coefficients)
-        factor = frost_factor(day.temp_air, predictors, self.frost)
-        most = self.ceiling * (day.transmitted + 2.0 * self.memory * 20.0 * (predictors["E"] + predictors["S"]))
-        litres = np.minimum(np.maximum(raw, 0.0) * factor, np.maximum(most, 0.0))
-        return litres, factor < FROST_FLAG, self.outside(day)
+        return daily_litres((self,), day, cyclic=cyclic)[0]
 
     def outside(self, day: Day) -> NDArray[np.bool_]:
         """Tell which days lie outside the range of the fit."""
@@ -173,6 +169,48 @@ class DailyCorrelation:
         for name, (low, high) in self.ranges.items():
             flags |= (values[name] < low) | (values[name] > high)
         return flags
+
+
+def daily_litres(
+    correlations: Sequence[DailyCorrelation], day: Day, *, cyclic: bool = False
+) -> list[tuple[Array, NDArray[np.bool_], NDArray[np.bool_]]]:
+    """Daily yields by several correlations of one variant and memory, as the conditions of a still are.
+
+    The products of predictors are made once for all of them.
+
+    Parameters
+    ----------
+    correlations : sequence of DailyCorrelation
+        Same variant, same memory.
+    day : Day
+        Predictors of consecutive days.
+    cyclic : bool
+        True for a typical year.
+
+    Returns
+    -------
+    list of (litres, frost, outside)
+        As `DailyCorrelation.litres` gives them.
+
+    Raises
+    ------
+    ValueError
+        If variants or memories differ, or coefficients do not match the terms.
+    """
+    first = correlations[0]
+    if any((one.variant, one.memory) != (first.variant, first.memory) for one in correlations):
+        raise ValueError("correlations of different variants or memories")
+    predictors = scaled_predictors(day, first.memory, cyclic=cyclic)
+    raw = polynomials(predictors, VARIANTS[first.variant], np.array([one.coefficients for one in correlations]))
+    sunshine = day.transmitted + 2.0 * first.memory * 20.0 * (predictors["E"] + predictors["S"])
+    factors = frost_factors(day.temp_air, predictors, np.array([one.frost for one in correlations]))
+    found = []
+    for one, litres, factor in zip(correlations, raw, factors, strict=True):
+        np.maximum(litres, 0.0, out=litres)
+        litres *= factor
+        np.minimum(litres, np.maximum(one.ceiling * sunshine, 0.0), out=litres)
+        found.append((litres, factor < FROST_FLAG, one.outside(day)))
+    return found
 
 
 def scaled_predictors(day: Day, memory: float, *, cyclic: bool) -> dict[str, Array]:
@@ -257,50 +295,79 @@ def _tomorrow(values: Array, *, cyclic: bool) -> Array:
     return np.where(np.isfinite(after), after, values)
 
 
-def polynomial(predictors: Mapping[str, Array], terms: tuple[str, ...], coefficients: tuple[float, ...]) -> Array:
-    """Sum of coefficient times product of predictors, nested in powers of S.
+def polynomials(predictors: Mapping[str, Array], terms: tuple[str, ...], coefficients: Array) -> Array:
+    """Sums of coefficient times product of predictors, for several sets of coefficients at once.
+
+    Worked through in pieces that stay in the cache: each product is made once, from a shorter one, and one
+    matrix product serves all sets.
 
     Parameters
     ----------
-    predictors : mapping of str to ndarray
+    predictors : mapping of str to ndarray, shape (day, cell)
         By letter.
     terms : tuple of str
         Products of predictors, '1' for the constant.
-    coefficients : tuple of float
-        Per term.
+    coefficients : ndarray, shape (set, term)
+        [any]
 
     Returns
     -------
-    ndarray, broadcast of the predictors
+    ndarray, shape (set, day, cell)
+
+    Raises
+    ------
+    ValueError
+        If there is not one coefficient per term.
 
     Examples
     --------
-    >>> float(polynomial({"S": np.array(2.0), "T": np.array(3.0)}, ("1", "S", "SST"), (1.0, 10.0, 100.0)))
-    1221.0
+    >>> day = {"S": np.array([[2.0]]), "T": np.array([[3.0]])}
+    >>> polynomials(day, ("1", "S", "SST"), np.array([[1.0, 10.0, 100.0], [0.0, 0.0, 1.0]])).ravel()
+    array([1221.,   12.])
     """
-    by_power: dict[int, list[tuple[str, float]]] = {}
-    for term, coefficient in zip(terms, coefficients, strict=True):
-        by_power.setdefault(term.count("S"), []).append((term.replace("S", "").replace("1", ""), coefficient))
-    S = predictors["S"]
-    total = np.zeros(np.shape(S))
-    products: dict[str, Array] = {}
-    for power in range(max(by_power), -1, -1):
-        total *= S
-        for rest, coefficient in by_power.get(power, ()):
-            if not rest:
-                total += coefficient
-                continue
-            if rest not in products:
-                products[rest] = _product(predictors, rest)
-            total += coefficient * products[rest]
-    return total
+    plan, rows = _plan(terms)
+    if coefficients.shape[1] != len(terms):
+        raise ValueError(f"{coefficients.shape[1]} coefficients for {len(terms)} terms")
+    spread = np.zeros((len(coefficients), len(plan)))
+    spread[:, rows] = coefficients
+    days, cells = predictors["S"].shape
+    out = np.empty((len(coefficients), days, cells))
+    length = max(1, _PIECE // max(cells, 1))
+    work = np.empty((len(plan), length * cells))
+    for start in range(0, days, length):
+        piece = slice(start, min(start + length, days))
+        some = {letter: np.ravel(values[piece]) for letter, values in predictors.items()}
+        products = work[:, : some["S"].size]
+        for row, (parent, letter) in enumerate(plan):
+            if not letter:
+                products[row] = 1.0
+            elif parent < 0:
+                products[row] = some[letter]
+            else:
+                np.multiply(products[parent], some[letter], out=products[row])
+        out[:, piece] = (spread @ products).reshape(len(coefficients), -1, cells)
+    return out
 
 
-def _product(predictors: Mapping[str, Array], letters: str) -> Array:
-    product = predictors[letters[0]]
-    for letter in letters[1:]:
-        product = product * predictors[letter]
-    return product
+#: Values of a predictor worked on at a time: with the products of all terms about a megabyte.
+_PIECE = 4096
+
+
+@lru_cache(maxsize=16)
+def _plan(terms: tuple[str, ...]) -> tuple[tuple[tuple[int, str], ...], tuple[int, ...]]:
+    """How to make the products: (row of the shorter product or -1, letter) per row; and the row of each term."""
+    rows: dict[str, int] = {}
+    plan: list[tuple[int, str]] = []
+
+    def row_of(term: str) -> int:
+        if term not in rows:
+            parent = -1 if len(term) <= 1 else row_of(term[:-1])
+            plan.append((parent, term[-1:]))
+            rows[term] = len(plan) - 1
+        return rows[term]
+
+    order = tuple(row_of(term.replace("1", "")) for term in terms)
+    return tuple(plan), order
 
 
 def design_matrix(predictors: Mapping[str, Array], terms: tuple[str, ...]) -> Array:
@@ -317,33 +384,33 @@ def design_matrix(predictors: Mapping[str, Array], terms: tuple[str, ...]) -> Ar
     -------
     ndarray, shape (sample, term)
     """
-    ones = np.ones(np.shape(predictors["S"]))
-    return np.stack([ones if term == "1" else _product(predictors, term) for term in terms], axis=-1)
+    rows = {letter: values[None] for letter, values in predictors.items()}
+    return polynomials(rows, terms, np.eye(len(terms)))[:, 0].T
 
 
-def frost_factor(temp_air: Array, predictors: Mapping[str, Array], coefficients: tuple[float, ...]) -> Array:
+def frost_factors(temp_air: Array, predictors: Mapping[str, Array], coefficients: Array) -> Array:
     """Share of the litres that is left when part of the brine may be frozen, 1 on warm days.
 
     Parameters
     ----------
-    temp_air : ndarray
+    temp_air : ndarray, shape (day, cell)
         Mean of the day. [degC]
-    predictors : mapping of str to ndarray
+    predictors : mapping of str to ndarray, shape (day, cell)
         By letter.
-    coefficients : tuple of float
+    coefficients : ndarray, shape (set, term)
         Per term of `FROST_TERMS`.
 
     Returns
     -------
-    ndarray, shape of `temp_air`
+    ndarray, shape (set, day, cell)
         0 to 1. [1]
     """
+    factors = np.ones((len(coefficients), *temp_air.shape))
     cold = temp_air < FROST_BELOW_DEGC
-    factor = np.ones(np.shape(temp_air))
     if np.any(cold):
-        some = {letter: np.broadcast_to(values, cold.shape)[cold] for letter, values in predictors.items()}
-        factor[cold] = thaw(polynomial(some, FROST_TERMS, coefficients))
-    return factor
+        some = {letter: values[cold][None] for letter, values in predictors.items()}
+        factors[:, cold] = thaw(polynomials(some, FROST_TERMS, coefficients)[:, 0])
+    return factors
 
 
 def thaw(score: Array) -> Array:

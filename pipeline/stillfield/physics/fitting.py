@@ -19,7 +19,7 @@ from stillfield.physics.correlation import (
     DailyCorrelation,
     Day,
     design_matrix,
-    polynomial,
+    polynomials,
     scaled_predictors,
     thaw,
 )
@@ -133,7 +133,7 @@ def _fit_variant(variant: str, sample: _Sample, *, memory: float, ceiling: float
     warm = sample.usable & ~sample.frost
     picked = {letter: values[warm] for letter, values in predictors.items()}
     coefficients = _least_squares(design_matrix(picked, VARIANTS[variant]), sample.litres[warm])
-    raw = np.maximum(polynomial(predictors, VARIANTS[variant], coefficients), 0.0)
+    raw = np.maximum(polynomials(predictors, VARIANTS[variant], np.array([coefficients]))[0], 0.0)
     frost = _fit_frost(day, predictors, sample, raw)
     fitted = DailyCorrelation(
         variant=variant, coefficients=coefficients, frost=frost, memory=memory, ceiling=ceiling,

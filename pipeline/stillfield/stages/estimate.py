@@ -16,6 +16,8 @@ from stillfield.methods import Block, Method
 from stillfield.methods.baselines import ConstantEfficiency
 from stillfield.physics.rule import yield_from_efficiency
 from stillfield.physics.still import Still
+from stillfield.sources.calendars import solar_day_of_year
+from stillfield.sources.tally import COUNTS
 from stillfield.vocabulary import YIELD
 
 #: Cells worked on at a time: big enough for long inner loops, small enough that a block stays near the cache.
@@ -58,7 +60,7 @@ def estimate(
     -------
     xarray.Dataset
         Lazy; dimensions ``time`` and space. ``daily_yield``, ``daily_yield_low``, ``daily_yield_high``,
-        ``daily_yield_rule`` [L m-2], ``frost`` and ``outside_fit`` (1 where flagged).
+        ``daily_yield_rule`` [L m-2], ``frost`` and ``outside_fit`` (1 where flagged); the counts of the weather.
 
     Raises
     ------
@@ -168,7 +170,7 @@ def _chunked(arrays: Mapping[str, xr.DataArray], space: list[Any]) -> tuple[list
 
 
 def _day_of_year(daily: xr.Dataset) -> NDArray[np.int64]:
-    return daily["time"].dt.dayofyear.to_numpy().astype(np.int64)
+    return solar_day_of_year(daily["time"])
 
 
 def _block_yield(
@@ -195,13 +197,10 @@ def _block_yield(
         cyclic=cyclic,
     )
     out = np.empty((len(_OUTPUTS) + len(_FLAGS), shape[0], latitude.size), dtype=np.float32)
-    central = method.daily_yield(block, still)
-    out[0] = central.litres
-    if method.knows_condition:
-        out[1] = method.daily_yield(block, still.in_condition(still.condition_low)).litres
-        out[2] = method.daily_yield(block, still.in_condition(still.condition_high)).litres
-    else:
-        out[1:3] = central.litres
+    conditions = (still.condition, still.condition_low, still.condition_high)
+    central, *_ = band = method.daily_yields(block, still, conditions)
+    for row, one in enumerate(band):
+        out[row] = one.litres
     out[3] = yield_from_efficiency(irradiation.reshape(shape[0], -1), rule.efficiency)
     out[4] = 0.0 if central.frost is None else central.frost
     out[5] = 0.0 if central.outside is None else central.outside
@@ -220,4 +219,5 @@ def _labelled(stacked: Any, daily: xr.Dataset, space: list[Any], still: Still, m
     for row, (name, meaning) in enumerate(_FLAGS.items(), start=len(_OUTPUTS)):
         variables[name] = (dims, stacked[row], {"units": "1", "long_name": meaning})
     attrs = {**daily.attrs, "still": still.name, "condition": still.condition, "method": method.name}
-    return xr.Dataset(variables, coords=coords, attrs=attrs)
+    result = xr.Dataset(variables, coords=coords, attrs=attrs)
+    return result.assign({COUNTS: daily[COUNTS]}) if COUNTS in daily else result
