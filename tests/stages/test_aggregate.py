@@ -36,6 +36,21 @@ def test_months_agree_with_pandas_on_whole_years() -> None:
     np.testing.assert_allclose(monthly["monthly_yield_low"], 0.8 * expected.mean(axis=0), rtol=1e-12)
 
 
+def test_poor_year_is_numpys_quantile_over_the_years_there_are() -> None:
+    random = np.random.default_rng(5)
+    values = random.uniform(0.5, 6.0, (7 * 365, 3))
+    values[400:470, 1] = np.nan  # some months of one year
+    values[:, 2] = np.nan
+    monthly = aggregate(daily(values, calendar="noleap"))
+    by_year = monthly["monthly_yield_by_year"].to_numpy()
+    for month in range(12):
+        for site in range(2):
+            years = by_year[:, month, site]
+            expected = np.quantile(years[np.isfinite(years)], 0.1)
+            assert float(monthly["monthly_yield_poor_year"][month, site]) == pytest.approx(expected)
+    assert np.isnan(monthly["monthly_yield_poor_year"][:, 2]).all()
+
+
 def test_worst_month_counts_litres_per_day_not_per_month() -> None:
     values = np.full((365, 1), 3.0)
     values[59:90] = 2.9  # March, 31 days: 89.9 L in the month, more than February's 84 L

@@ -6,14 +6,17 @@ happen to be there; with too few valid days it is missing, not small.
 
 from __future__ import annotations
 
+import json
 from functools import partial
 from typing import Any
 
 import dask.array as da
 import numpy as np
 import xarray as xr
+from dask.base import compute
 from numpy.typing import NDArray
 
+from stillfield.sources.tally import COUNT, COUNTS, sentences, totals
 from stillfield.vocabulary import YIELD
 
 MONTHS = 12
@@ -43,11 +46,12 @@ def aggregate(daily: xr.Dataset, *, min_valid_days_share: float = 0.8) -> xr.Dat
         reached or passed in 9 of 10 years (absent for typical years); ``annual_yield`` [L m-2 year-1];
         ``worst_month`` (1 to 12, fewest litres per day) and ``worst_month_yield`` [L m-2 d-1];
         ``days_used`` and ``days_expected`` (all years together), ``frost_days_share``,
-        ``outside_fit_share`` of the days used.
+        ``outside_fit_share`` of the days used. Attribute ``counts`` (JSON: quantity, kind, number; see
+        `stillfield.sources.tally`) says what was clipped, filled, missing or dropped in the weather.
     """
     years, month_of, starts, ends = _calendar(daily["time"])
     expected = _days_in_month(daily["time"], starts)
-    sums = _month_sums(daily, starts, ends)
+    sums, counted = _month_sums(daily, starts, ends)
     counts = sums["count"]
     enough = counts >= min_valid_days_share * expected[(slice(None), *[None] * (counts.ndim - 1))]
     space = [dim for dim in daily["daily_yield"].dims if dim != "time"]
@@ -67,7 +71,14 @@ def aggregate(daily: xr.Dataset, *, min_valid_days_share: float = 0.8) -> xr.Dat
     if not typical and shape[0] > 1:
         result["monthly_yield_poor_year"] = _quantile(by_year["daily_yield"], 1.0 - POOR_YEAR_REACHED)
     year_axis = np.unique(np.arange(years[0], years[-1] + 1))
-    return _labelled(result, daily, space, year_axis)
+    labelled = _labelled(result, daily, space, year_axis)
+    return _with_counts(labelled, totals(daily[COUNT].to_numpy(), counted)) if COUNTS in daily else labelled
+
+
+def _with_counts(result: xr.Dataset, counted: dict[str, dict[str, int]]) -> xr.Dataset:
+    """Result with the counts of its weather, in figures and, where something happened, in words."""
+    said = dict.fromkeys([*result.attrs.get("conventions", []), *sentences(counted)])
+    return result.assign_attrs(counts=json.dumps(counted), conventions=list(said))
 
 
 def _calendar(time: xr.DataArray) -> tuple[NDArray[Any], NDArray[Any], NDArray[Any], NDArray[Any]]:
@@ -87,8 +98,10 @@ def _stretch(expected: NDArray[np.float64], like: NDArray[Any]) -> NDArray[np.fl
     return expected.reshape(-1, *[1] * (like.ndim - 1))
 
 
-def _month_sums(daily: xr.Dataset, starts: NDArray[Any], ends: NDArray[Any]) -> dict[str, NDArray[np.float64]]:
-    """Sums over the valid days of each month, and their count; one pass over lazy data."""
+def _month_sums(
+    daily: xr.Dataset, starts: NDArray[Any], ends: NDArray[Any]
+) -> tuple[dict[str, NDArray[np.float64]], NDArray[Any]]:
+    """Sums over the valid days of each month, and their count, and the counts of the weather; one pass over all."""
     kernel = partial(_block_sums, starts=starts, ends=ends)
     names = [*_MEANT, *_COUNTED]
     arrays = [da.asarray(daily[name].data) for name in names]
@@ -99,8 +112,9 @@ def _month_sums(daily: xr.Dataset, starts: NDArray[Any], ends: NDArray[Any]) -> 
         new_axes={"o": len(names) + 1, "m": len(starts)}, concatenate=True, dtype=np.float64,
         meta=np.empty((0,) * (arrays[0].ndim + 1)),
     )
-    sums = stacked.compute(scheduler="threads")
-    return dict(zip([*names, "count"], sums, strict=True))
+    counts = daily[COUNTS].data if COUNTS in daily else np.empty(0)
+    sums, counted = compute(stacked, counts, scheduler="threads")
+    return dict(zip([*names, "count"], sums, strict=True)), counted
 
 
 def _block_sums(*arrays: NDArray[Any], starts: NDArray[Any], ends: NDArray[Any]) -> NDArray[np.float64]:
@@ -132,10 +146,18 @@ def _mean_of_years(values: NDArray[Any]) -> NDArray[np.float64]:
 
 
 def _quantile(values: NDArray[Any], q: float) -> NDArray[np.float64]:
-    """Quantile over years, NaN where no year is valid (linear between ranks, numpy's default)."""
-    none = ~np.isfinite(values).any(axis=0)
-    filled = np.where(none[None], 0.0, values)
-    return np.where(none, np.nan, np.nanquantile(filled, q, axis=0))
+    """Quantile over the valid years, linear between ranks as numpy's default; NaN where there is none.
+
+    By one sort, which puts NaN last: numpy's nanquantile calls Python for every cell.
+    """
+    ranked = np.sort(values, axis=0)
+    count = np.isfinite(values).sum(axis=0)
+    place = q * np.maximum(count - 1, 0)
+    below = np.floor(place).astype(int)
+    above = np.minimum(below + 1, np.maximum(count - 1, 0))
+    low = np.take_along_axis(ranked, below[None], axis=0)[0]
+    high = np.take_along_axis(ranked, above[None], axis=0)[0]
+    return np.where(count > 0, low + (place - below) * (high - low), np.nan)
 
 
 def _climatology(
