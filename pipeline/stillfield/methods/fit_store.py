@@ -46,7 +46,7 @@ def fit_for(still: Still, folder: Path | None = None) -> StillFit:
     fit = _made(still)
     if path is not None:
         path.parent.mkdir(parents=True, exist_ok=True)
-        partial = path.with_suffix(".partial")
+        partial = path.with_suffix(f".{get_ident()}.partial")
         partial.write_text(fit_text([fit]), encoding="utf-8", newline="\n")
         partial.replace(path)
     return fit
@@ -77,26 +77,17 @@ def _kept_in(folder: Path, fingerprint: str) -> Path:
 
 
 def _made(still: Still) -> StillFit:
-    return _made_once(still.fingerprint(), _Held(still))
+    """Fit made in this process, once, whichever thread asks first."""
+    fingerprint = still.fingerprint()
+    with _MAKING:
+        if fingerprint not in _MADE:
+            log.info("fitting %s, %s, to its hourly balance", still.name, still.condition)
+            _MADE[fingerprint] = fit_still(still)
+        return _MADE[fingerprint]
 
 
-class _Held:
-    """Carries a still past the cache, which looks at the fingerprint alone."""
-
-    def __init__(self, still: Still) -> None:
-        self.still = still
-
-    def __eq__(self, other: object) -> bool:
-        return isinstance(other, _Held)
-
-    def __hash__(self) -> int:
-        return 0
-
-
-@lru_cache(maxsize=64)
-def _made_once(fingerprint: str, held: _Held) -> StillFit:
-    log.info("fitting %s, %s, to its hourly balance", held.still.name, held.still.condition)
-    return fit_still(held.still)
+_MADE: dict[str, StillFit] = {}
+_MAKING = Lock()
 
 
 @lru_cache(maxsize=1)
