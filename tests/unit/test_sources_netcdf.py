@@ -485,7 +485,8 @@ def test_no_sunshine_is_refused_with_what_is_there(tmp_path):
 
 def test_a_mapped_name_that_no_file_has_is_refused(tmp_path):
     _refused(tmp_path, grid(days(), rsds=(TRUE.irradiation, "MJ m-2")),
-             r"variables\.temp_air\.name: no file has this variable \(got tas; wanted one of rsds\)", temp_air="tas")
+             r"weather\.variables\.temp_air\.name: no such variable in .*\.nc \(got tas; wanted one of rsds\)",
+             temp_air="tas")
 
 
 def test_a_mapping_is_checked(tmp_path):

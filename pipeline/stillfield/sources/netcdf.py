@@ -107,7 +107,7 @@ def weather_from_pieces(
     WeatherError, UnitsError
         As `open_netcdf`.
     """
-    _check_choices(choices, pieces, available)
+    _check_choices(choices, pieces, available, labels)
     joined, notes = _join_roles(pieces)
     notes += estimated_sun(joined, radiation_from_temperature)
     step_hours = _common_step(joined, labels, available)
@@ -158,13 +158,16 @@ def _common_step(joined: Mapping[str, Joined], labels: Sequence[str], available:
     return step_hours
 
 
-def _check_choices(choices: Mapping[str, Choice], pieces: Sequence[Piece], available: Callable[[], str]) -> None:
+def _check_choices(
+    choices: Mapping[str, Choice], pieces: Sequence[Piece], available: Callable[[], str], labels: Sequence[str]
+) -> None:
     seen = {(piece.found.role, piece.found.name) for piece in pieces}
     for role, choice in choices.items():
         if choice.name and (role, choice.name) not in seen:
-            raise WeatherError("no file has this variable",
-                               where=f"variables.{'irradiation' if role == 'sun' else role}.name", got=choice.name,
-                               wanted=f"one of {available()}", cure="Correct the run file.")
+            files = labels[0] if len(labels) == 1 else f"any of the {len(labels)} files from {labels[0]}"
+            raise WeatherError(f"no such variable in {files}",
+                               where=f"weather.variables.{'irradiation' if role == 'sun' else role}.name",
+                               got=choice.name, wanted=f"one of {available()}", cure="Correct the run file.")
 
 
 def _variable_names(paths: Sequence[Path]) -> str:

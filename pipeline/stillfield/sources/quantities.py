@@ -108,6 +108,10 @@ def _shifted(values: xr.DataArray, hours: float) -> xr.DataArray:
         time=values.indexes["time"] + pd.Timedelta(seconds=round(hours * 3600)))
 
 
+def _kind(joined: Joined) -> str:
+    return irradiation_kind(joined.found.units, where=f"{joined.found.name} in {joined.where}")
+
+
 def _placed(joined: Joined, step_hours: float) -> Joined:
     """Bring daily stamps to the start of their day and mid-step stamps to the start of the step."""
     import pandas as pd
@@ -136,7 +140,7 @@ def sunshine(joined: Joined, step_hours: float) -> tuple[xr.DataArray, list[str]
     """
     placed = _placed(joined, step_hours)
     grows = None
-    if step_hours < 24.0 and irradiation_kind(joined.found.units, where=joined.where) == "energy":
+    if step_hours < 24.0 and _kind(joined) == "energy":
         grows = grows_from_midnight(_sample(joined.values, step_hours), step_hours)
     meaning = settle_meaning(joined.found, step_hours=step_hours, placed=placed.placed, grows=grows,
                              where=joined.where)
