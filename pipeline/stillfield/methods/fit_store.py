@@ -9,6 +9,7 @@ from dataclasses import asdict
 from functools import lru_cache
 from importlib import resources
 from pathlib import Path
+from threading import Lock
 from typing import Any, Literal
 
 from stillfield.physics.correlation import DailyCorrelation
