@@ -27,6 +27,16 @@ FILES = {
     "tmy_45.000_8.000_2005_2023.json": ("pvlib", "0.16.1", "tests/data", "809a8fcd1ce73caf"),
     "NLD_Amsterdam062400_IWEC.epw": ("pvlib", "0.16.1", "tests/data", "3f013af88b8b4ee6"),
     "test_read_psm4.csv": ("pvlib", "0.16.1", "tests/data", "c624b85bbf72c265"),
+    "CAN_ON_Toronto.716240_CWEC.epw": ("uwg", "5.8.13", "tests/epw", "caf30b11f1aeb5df"),
+    "CHN_Beijing.Beijing.545110_IWEC.epw": ("uwg", "5.8.13", "tests/epw", "e7f37f41215d7959"),
+    "SGP_Singapore.486980_IWEC.epw": ("uwg", "5.8.13", "tests/epw", "24c2fc197f6a2f46"),
+    "USA_MA_Boston-Logan.Intl.AP.725090_TMY3.epw": ("uwg", "5.8.13", "tests/epw", "abea629217397836"),
+    "USA_PA_Philadelphia.Intl.AP.724080_TMY3.epw": ("uwg", "5.8.13", "tests/epw", "914c245d5516fd8f"),
+    "ESP_AN_Sevilla.AP.083910_TMYx.2011-2025.epw": (
+        "openbes", "0.3.3", "src/openbes/simulations/epw_data", "4ae48e3779919cdf"),
+    "ESP_MD_Madrid-Barajas-Suarez.AP.082210_TMYx.2011-2025.epw": (
+        "openbes", "0.3.3", "src/openbes/simulations/epw_data", "d52f4176f826c61c"),
+    "USA_Denver_725650TYCST.epw": ("openbes", "0.3.3", "src/openbes/simulations/epw_data", "b3d6d975b4f02031"),
 }
 
 
