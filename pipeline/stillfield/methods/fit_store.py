@@ -10,6 +10,7 @@ from functools import lru_cache
 from importlib import resources
 from pathlib import Path
 from threading import Lock
+from threading import Lock, get_ident
 from typing import Any, Literal
 
 from stillfield.physics.correlation import DailyCorrelation
