@@ -9,7 +9,6 @@ from dataclasses import asdict
 from functools import lru_cache
 from importlib import resources
 from pathlib import Path
-from threading import Lock
 from threading import Lock, get_ident
 from typing import Any, Literal
 
