@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import argparse
 import errno
+import json
 import logging
 import os
 import sys
@@ -41,6 +42,7 @@ exit codes:
   {EXIT_INTERRUPTED}  interrupted
 
 example:
+  stillfield plan config/demo.yaml
   stillfield run config/demo.yaml
 """
 
@@ -99,6 +101,14 @@ def build_parser() -> argparse.ArgumentParser:
     )
     run.set_defaults(loudness="plain")
 
+    plan = commands.add_parser(
+        "plan", help="tell what a run would read, assume, write and cost, without doing it", allow_abbrev=False,
+        description="Check a run file and its inputs as a run does, and tell what the run would do. Writes nothing.",
+    )
+    plan.add_argument("run_file", metavar="RUN.yaml", help="the run file")
+    plan.add_argument("--output", metavar="FOLDER", help="as for run")
+    plan.add_argument("--json", action="store_true", help="print one JSON object for other programs")
+
     fit = commands.add_parser(
         "fit", help="fit stills and tell how well the correlation follows the hourly balance", allow_abbrev=False,
         description="Fit every condition of some stills to the hourly heat balance and print the errors.",
@@ -149,6 +159,22 @@ def _run(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
+def _plan(arguments: argparse.Namespace) -> int:
+    _log_to_stderr("quiet")
+    from stillfield.settings.load import load_run
+
+    settings = load_run(arguments.run_file)
+    if arguments.output is not None:
+        settings = settings.with_output(arguments.output)
+
+    from stillfield.plan import plan
+    from stillfield.products.plan_text import plan_text
+
+    facts = plan(settings, run_file=arguments.run_file)
+    _say(f"{json.dumps(facts, indent=2, allow_nan=False)}\n" if arguments.json else plan_text(facts))
+    return EXIT_OK
+
+
 def _schema(arguments: argparse.Namespace) -> int:
     from stillfield.settings.load import schema_text
 
@@ -163,7 +189,7 @@ def _fit(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
-_COMMANDS = {"run": _run, "schema": _schema, "fit": _fit}
+_COMMANDS = {"run": _run, "plan": _plan, "schema": _schema, "fit": _fit}
 
 
 class _PlainLines(logging.Formatter):

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import ClassVar, Literal
+
+import numpy as np
 
 from stillfield.methods import Block, DailyYield
 from stillfield.methods.fit_store import fit_for
@@ -56,6 +58,27 @@ class Fitted:
         fits = [fit_for(still.in_condition(condition), self.folder) for condition in conditions]
         found = daily_litres([fit.correlations[day.variant] for fit in fits], day, cyclic=block.cyclic)
         return [DailyYield(litres, frost=frost, outside=outside) for litres, frost, outside in found]
+
+    def variant(self, known: Iterable[str], still: Still) -> str:
+        """Name the predictors of the correlation that weather with the variables `known` allows.
+
+        Parameters
+        ----------
+        known : iterable of str
+            Vocabulary names of the weather there is; all of `needs` must be among them.
+        still : Still
+            The design.
+
+        Returns
+        -------
+        str
+            A key of `stillfield.physics.correlation.VARIANTS`.
+        """
+        steps = 1 if self.resolution == "daily" else 24
+        there = set(known)
+        any_day = {name: np.full((steps, 1), 10.0) for name in (*self.needs, *self.uses) if name in there}
+        block = Block(any_day, latitude=np.zeros(1), day_of_year=np.array([80]), steps_per_day=steps)
+        return self._day(block, still).variant
 
     def _day(self, block: Block, still: Still) -> Day:
         if self.resolution == "daily":

@@ -1,0 +1,145 @@
+"""What a run would do, found out without doing it: the same opening and checks, then labels and sizes only."""
+
+from __future__ import annotations
+
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pandas as pd
+import xarray as xr
+from numpy.typing import NDArray
+
+from stillfield import __version__
+from stillfield.methods.fit_store import fit_state
+from stillfield.methods.fitted import Fitted
+from stillfield.opening import Opened, fits_folder, open_run
+from stillfield.physics.still import Still
+from stillfield.settings.model import RunSettings
+from stillfield.stages.estimate import weather_for
+from stillfield.stages.forecast import Job, forecast
+from stillfield.stages.rank import great_circle_km
+from stillfield.stages.survey import outside_box, survey_places, survey_space, survey_time, survey_variables
+from stillfield.stages.write import file_names
+
+#: Changes when a key of the plan is renamed or removed; new keys may come without.
+PLAN_VERSION = 1
+
+
+def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
+    """Tell what a run would read, assume, compute and write, and roughly what it would cost.
+
+    Nothing is written. Of gridded weather only headers, axes and, where the sunshine has to be understood, some
+    values of a few cells are read; typical years are small and are read whole.
+
+    Parameters
+    ----------
+    settings : RunSettings
+        A checked run.
+    run_file : path
+        The file it came from.
+
+    Returns
+    -------
+    dict
+        Text, numbers, lists and dicts only, ready for JSON. A key that does not apply is None.
+
+        - ``plan_version``, ``stillfield`` (version), ``name``, ``run_file``;
+        - ``weather``: ``kind``, ``origin``, ``files``, ``bytes``, ``variables`` (list of ``name``, ``units``,
+          ``quantity``, ``unit``, ``recognised_by``), ``conventions`` (list of sentences), ``time`` (``record``,
+          ``clock``, ``step_hours``, ``first``, ``last``, ``first_day``, ``last_day``, ``days``, ``years``,
+          ``calendar``), ``space`` (``kind``, ``cells``, ``land_cells``, ``rows``, ``columns``,
+          ``resolution_deg``, ``sites``, ``box``), ``region`` (box of the run file);
+        - ``method``: ``name``, ``resolution``, ``variables`` it takes, ``variant`` of the correlation, ``has_band``;
+        - ``stills``: list of ``name``, ``condition``, ``condition_low``, ``condition_high``, ``fits`` (condition
+          to 'shipped', 'kept' or 'to be made'), ``folder``;
+        - ``places``: ``table``, ``count``, ``outside``, ``outside_names``, ``max_cell_distance_km``;
+        - ``outputs``: every file, as paths from the working directory;
+        - ``estimate``: ``bytes_to_read``, ``memory_bytes``, ``disk_bytes``, ``seconds``, ``basis``.
+
+    Raises
+    ------
+    StillfieldError
+        What a run would raise before it computes, in the same words.
+    """
+    opened = open_run(settings)
+    daily, steps = opened.prepared.daily, opened.prepared.steps
+    used = weather_for(opened.method, daily, steps)
+    taken = [name for name in (*opened.method.needs, *opened.method.uses) if name in used]
+    space, time = survey_space(daily), survey_time(opened.weather, daily)
+    stills = [_still(settings, still, opened, folder)
+              for still, folder in zip(settings.stills, opened.folders, strict=True)]
+    files = tuple(getattr(settings.weather, "paths", ()))
+    cost = forecast(Job(
+        opened.method.name, steps is not None, sum(path.stat().st_size for path in files),
+        sum(used[name].nbytes for name in taken), space["land_cells"] or space["cells"], time["days"], time["years"],
+        len(stills), sum(state == "to be made" for told in stills for state in (told["fits"] or {}).values()),
+        space["kind"] == "grid",
+    ))
+    return {
+        "plan_version": PLAN_VERSION, "stillfield": __version__, "name": settings.name, "run_file": str(run_file),
+        "weather": {
+            "kind": settings.weather.kind, "origin": str(opened.weather.attrs.get("origin", "")),
+            "files": len(files), "bytes": cost.bytes_to_read, "variables": survey_variables(opened.weather),
+            "conventions": [str(said) for said in opened.weather.attrs.get("conventions", [])],
+            "time": time, "space": space,
+            "region": None if settings.region is None else settings.region.model_dump(),
+        },
+        "method": {
+            "name": opened.method.name, "resolution": opened.method.resolution, "variables": taken,
+            "variant": _variant(opened, taken, settings.stills[0]), "has_band": opened.method.knows_condition,
+        },
+        "stills": stills,
+        "places": _places(settings, opened, space),
+        "outputs": _outputs(settings, opened, stills, grid=space["kind"] == "grid"),
+        "estimate": asdict(cost),
+    }
+
+
+def _variant(opened: Opened, taken: list[str], still: Still) -> str | None:
+    return opened.method.variant(taken, still) if isinstance(opened.method, Fitted) else None
+
+
+def _still(settings: RunSettings, still: Still, opened: Opened, folder: Path) -> dict[str, Any]:
+    fits = None
+    if isinstance(opened.method, Fitted):
+        conditions = dict.fromkeys((still.condition, still.condition_low, still.condition_high))
+        fits = {
+            condition: fit_state(still.in_condition(condition), fits_folder(settings)) for condition in conditions
+        }
+    return {
+        "name": still.name, "condition": still.condition, "condition_low": still.condition_low,
+        "condition_high": still.condition_high, "fits": fits, "folder": folder.as_posix(),
+    }
+
+
+def _places(settings: RunSettings, opened: Opened, space: dict[str, Any]) -> dict[str, Any] | None:
+    if opened.places is None or settings.places is None:
+        return None
+    farthest = settings.places.max_cell_distance_km
+    outside = (
+        outside_box(opened.places, space["box"]) if space["kind"] == "grid"
+        else _nearest_site_km(opened.places, opened.prepared.daily) > farthest
+    )
+    return {"table": settings.places.table.given, **survey_places(opened.places, outside, farthest)}
+
+
+def _nearest_site_km(places: pd.DataFrame, sites: xr.Dataset) -> NDArray[np.float64]:
+    distance = great_circle_km(
+        places["latitude"].to_numpy()[:, np.newaxis], places["longitude"].to_numpy()[:, np.newaxis],
+        sites["latitude"].to_numpy()[np.newaxis], sites["longitude"].to_numpy()[np.newaxis],
+    )
+    return np.asarray(distance.min(axis=1))
+
+
+def _outputs(settings: RunSettings, opened: Opened, stills: list[dict[str, Any]], *, grid: bool) -> list[str]:
+    names = file_names(grid=grid, ranked=opened.places is not None)
+    outputs = [(folder / name).as_posix() for folder in opened.folders for name in names]
+    for still, told in zip(settings.stills, stills, strict=True):
+        made = [condition for condition, state in (told["fits"] or {}).items() if state == "to be made"]
+        outputs += [
+            (fits_folder(settings) / f"fit-{still.in_condition(condition).fingerprint()}.json").as_posix()
+            for condition in made
+        ]
+    return outputs
