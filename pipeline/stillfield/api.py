@@ -99,6 +99,7 @@ def monthly_yield(
     *,
     rule_efficiency: float = USUAL_EFFICIENCY,
     min_valid_hours: float = 20.0,
+    fill_hours: float = 3.0,
     min_valid_days_share: float = 0.8,
 ) -> xr.Dataset:
     """Litres per square metre of basin for every month of the year and every cell or site.
@@ -115,6 +116,8 @@ def monthly_yield(
         Efficiency of the rule printed beside every result. [1]
     min_valid_hours : float
         Hours a daily mean needs. [h]
+    fill_hours : float
+        Longest gap in temperature, humidity or wind that is bridged. [h]
     min_valid_days_share : float
         Share of its days a month needs. [1]
 
@@ -134,7 +137,7 @@ def monthly_yield(
     A still is no barrier to volatile contaminants; distillate must be disinfected, remineralised and tested
     before people drink it. See `stillfield.vocabulary.WATER_CAUTION`.
     """
-    prepared = prepare(weather, min_valid_hours=min_valid_hours)
+    prepared = prepare(weather, min_valid_hours=min_valid_hours, fill_hours=fill_hours)
     chosen = get_method(method, hourly=prepared.steps is not None)
     daily = estimate(
         prepared.daily, still, chosen, rule=ConstantEfficiency(rule_efficiency), steps=prepared.steps

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import logging
 from dataclasses import asdict
 from pathlib import Path
@@ -69,6 +70,9 @@ def _one_still(
         steps=prepared.steps,
     )
     monthly = aggregate(daily, min_valid_days_share=settings.missing.min_valid_days_share)
+    counts = json.loads(monthly.attrs.get("counts", "{}"))
+    for sentence in monthly.attrs.get("conventions", [])[len(prepared.daily.attrs.get("conventions", [])):]:
+        log.info("%s", sentence)  # what was counted on the way
     ranked = None
     if places is not None and settings.places is not None:
         ranked = rank_places(
@@ -90,7 +94,7 @@ def _one_still(
         Results(
             monthly, ranked, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
             inputs, land=None if settings.map.land is None else settings.map.land.path, remarks=remarks,
-            facts={"audit": None if audited is None else asdict(audited)},
+            facts={"counts": {"weather": counts}, "audit": None if audited is None else asdict(audited)},
         ),
     )
     return summarise(

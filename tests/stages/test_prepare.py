@@ -8,6 +8,7 @@ import pytest
 import xarray as xr
 
 from stillfield.errors import WeatherError
+from stillfield.sources.tally import totals
 from stillfield.stages.prepare import align_to_local_days, prepare
 
 LONGITUDES = np.array([-179.0, -150.0, -75.0, 0.0, 52.5, 150.0, 179.0])
@@ -81,7 +82,10 @@ def test_edge_days_are_missing_and_counted() -> None:
     greenwich = prepared.daily["irradiation"].isel(latitude=0).sel(longitude=0.0)
     assert int(greenwich.notnull().sum()) == 10
     assert int(east.notnull().sum()) == 9
-    assert prepared.daily.attrs["edge_days"] > 0
+    counted = totals(prepared.daily["count"].values, prepared.daily["counts"].values)["days"]
+    # Days reach from the first local day that is whole anywhere to the last: 10 of UTC. A shift of -12, -10, -5,
+    # 0, 4, 10 or 12 h leaves the columns away from Greenwich one of them in part; two rows of cells.
+    assert counted == {"edge": 2 * 6, "incomplete": 0, "values": 10 * 14}
 
 
 @pytest.mark.parametrize("calendar", ["noleap", "360_day", "all_leap", "proleptic_gregorian"])
@@ -124,7 +128,7 @@ def test_local_standard_days_are_kept_and_the_sun_is_told_the_rest() -> None:
         attrs={"record": "typical-year", "step_hours": 1.0, "clock": "local-standard"},
     )
     steps = align_to_local_days(weather, 1.0)
-    assert steps.sizes == {"time": 2, "step": 24, "site": 1}
+    assert steps["ghi"].sizes == {"time": 2, "step": 24, "site": 1}
     assert float(steps["clock_to_solar_hours"][0]) == pytest.approx(103.98 / 15 - 8 + 2 / 60)
 
 

@@ -153,6 +153,10 @@ class Missing(Group):
         0.8, gt=0, le=1, description="Share of the days of a month that must have weather [1]"
     )
     min_valid_hours: float = Field(20.0, ge=1, le=24, description="Hours of a day that must have weather [h]")
+    fill_hours: float = Field(
+        3.0, ge=0, le=6, description="Longest gap in temperature, humidity or wind that is bridged [h]; "
+                                     "sunshine is never invented"
+    )
 
 
 class Output(Group):

@@ -13,8 +13,11 @@ from typing import Any
 
 import numpy as np
 import xarray as xr
+from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
+from stillfield.sources.gaps import fill_gaps
+from stillfield.sources.tally import COUNTS, cell_counts, with_counts
 from stillfield.vocabulary import DAY_WEATHER, STEP_HOURS_DAILY, STEP_WEATHER
 
 MJ_PER_WH = 3600.0 / 1e6
@@ -38,7 +41,7 @@ class Prepared:
     steps: xr.Dataset | None = None
 
 
-def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0) -> Prepared:
+def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0, fill_hours: float = 3.0) -> Prepared:
     """Bring weather of any step to local days.
 
     Parameters
@@ -48,10 +51,13 @@ def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0) -> Prepared:
     min_valid_hours : float
         A day's mean temperature, wind and humidity need at least this many valid hours; its irradiation
         needs every step, because an hour of sunshine cannot be averaged away. [h]
+    fill_hours : float
+        Longest gap in temperature, humidity or wind that is bridged by a straight line. [h]
 
     Returns
     -------
     Prepared
+        `Prepared.daily` carries the counts of `stillfield.sources.tally`.
 
     Raises
     ------
@@ -61,8 +67,19 @@ def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0) -> Prepared:
     step_hours = float(weather.attrs["step_hours"])
     if step_hours == STEP_HOURS_DAILY:
         return Prepared(_pass_daily(weather))
-    steps = align_to_local_days(weather, step_hours)
-    return Prepared(_daily_from_steps(steps, step_hours, min_valid_hours), steps)
+    steps = align_to_local_days(weather, step_hours, fill_hours=fill_hours)
+    edge = steps["edge_days_of_cell"].reset_coords(drop=True)
+    steps = steps.drop_vars("edge_days_of_cell")
+    daily = _daily_from_steps(steps.drop_vars(COUNTS, errors="ignore"), step_hours, min_valid_hours)
+    gaps = cell_counts(daily["irradiation"], _count_missing, ("missing",))["missing"] - edge
+    lost: dict[str, xr.DataArray | int] = {"edge": edge, "incomplete": gaps.clip(min=0), "values": daily.sizes["time"]}
+    if COUNTS in steps:
+        daily = daily.assign({COUNTS: steps[COUNTS]})
+    return Prepared(with_counts(daily, "days", lost), steps.drop_vars(COUNTS, errors="ignore"))
+
+
+def _count_missing(block: NDArray[Any]) -> NDArray[np.int64]:
+    return np.asarray(np.count_nonzero(np.isnan(block), axis=0), dtype=np.int64)[np.newaxis]
 
 
 def _pass_daily(weather: xr.Dataset) -> xr.Dataset:
@@ -70,10 +87,12 @@ def _pass_daily(weather: xr.Dataset) -> xr.Dataset:
     if "valid_hours" not in daily and "irradiation" in daily:
         hours = daily["irradiation"].notnull() * np.float32(STEP_HOURS_DAILY)
         daily = daily.assign(valid_hours=hours.astype(np.float32))
+    if COUNTS in weather:
+        daily = daily.assign({COUNTS: weather[COUNTS]})
     return daily.assign_attrs(weather.attrs)
 
 
-def align_to_local_days(weather: xr.Dataset, step_hours: float) -> xr.Dataset:
+def align_to_local_days(weather: xr.Dataset, step_hours: float, *, fill_hours: float = 0.0) -> xr.Dataset:
     """Cut step weather into local days: dimensions ``time`` (day), ``step`` and space.
 
     Parameters
@@ -82,13 +101,14 @@ def align_to_local_days(weather: xr.Dataset, step_hours: float) -> xr.Dataset:
         Steps shorter than a day; regular in time apart from gaps.
     step_hours : float
         Length of a step; must divide 24. [h]
+    fill_hours : float
+        As for `prepare`. [h]
 
     Returns
     -------
     xarray.Dataset
-        Every day that is whole for at least one cell; steps before or after the record are NaN. The
-        attribute ``edge_days`` counts days that are incomplete somewhere only because the record
-        starts or ends there.
+        Every day that is whole for at least one cell; steps before or after the record are NaN. Coordinate
+        ``edge_days_of_cell`` tells how many of the days of a cell the record does not hold whole.
 
     Raises
     ------
@@ -101,15 +121,29 @@ def align_to_local_days(weather: xr.Dataset, step_hours: float) -> xr.Dataset:
             "the time step does not divide the day", got=f"{step_hours:g} h", wanted="0.25, 0.5, 1, 2, 3, 4 or 6 h"
         )
     steps = weather[[name for name in weather.data_vars if name in STEP_WEATHER]]
-    steps = _regular(steps, step_hours)
+    counts = weather.get(COUNTS)
+    steps = fill_gaps(_regular(steps, step_hours).assign({} if counts is None else {COUNTS: counts}),
+                      step_hours=step_hours, fill_hours=fill_hours)
+    counts = steps.get(COUNTS)
+    steps = steps.drop_vars(COUNTS, errors="ignore").drop_dims("count", errors="ignore")
     shift_hours, residual_hours = _clock_shift(weather, step_hours)
     first_step, days = _day_axis(steps, step_hours, per_day, shift_hours)
     starts = first_step - np.round(shift_hours / step_hours).astype(int)
     aligned = _take_windows(steps, starts, len(days) * per_day)
     aligned = _fold_days(aligned, days, per_day)
-    edge = int(sum(start < 0 or start + len(days) * per_day > steps.sizes["time"] for start in np.unique(starts)))
-    aligned = aligned.assign_coords(clock_to_solar_hours=residual_hours)
-    return aligned.assign_attrs(weather.attrs, edge_days=edge)
+    edge = _edge_days(starts, len(days), per_day, steps.sizes["time"])
+    like = xr.zeros_like(residual_hours, dtype=np.int64)
+    along = xr.DataArray(edge, dims=weather["longitude"].dims)
+    aligned = aligned.assign_coords(clock_to_solar_hours=residual_hours, edge_days_of_cell=like + along)
+    aligned = aligned.assign({} if counts is None else {COUNTS: counts})
+    return aligned.assign_attrs(weather.attrs)
+
+
+def _edge_days(starts: NDArray[np.int_], days: int, per_day: int, length: int) -> NDArray[np.int_]:
+    """Days of each column or site of which the record lacks the beginning or the end."""
+    first = np.ceil(np.maximum(-starts, 0) / per_day)
+    last = np.ceil(np.maximum(starts + days * per_day - length, 0) / per_day)
+    return np.asarray(np.minimum(first + last, days), dtype=np.int_)
 
 
 def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
@@ -130,11 +164,16 @@ def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
         )
     if np.allclose(width, step_hours, rtol=1e-4):
         return steps
-    count = width.sum() / step_hours
-    if index.dtype.kind != "M" or not np.allclose(width / step_hours, np.round(width / step_hours), atol=1e-3):
+    at = np.concatenate([[0.0], np.cumsum(width)]) / step_hours
+    if not np.allclose(at, np.round(at), atol=1e-3):
         raise WeatherError("time steps are irregular", got=f"steps of {width.min():g} to {width.max():g} h")
-    axis = index[0] + np.arange(round(count) + 1) * np.timedelta64(round(step_hours * 3600), "s")
-    return steps.reindex(time=axis, method="nearest", tolerance="60s")
+    # Whole numbers of steps serve every calendar, where dates of a foreign one cannot be looked up by nearness.
+    count = round(at[-1]) + 1
+    numbered = steps.assign_coords(time=np.round(at).astype(np.int64)).reindex(time=np.arange(count))
+    seconds = round(step_hours * 3600)
+    axis = (index[0].to_numpy() + np.arange(count) * np.timedelta64(seconds, "s") if index.dtype.kind == "M"
+            else [index[0] + timedelta(seconds=seconds * i) for i in range(count)])
+    return numbered.assign_coords(time=axis)
 
 
 def _clock_shift(weather: xr.Dataset, step_hours: float) -> tuple[np.ndarray, xr.DataArray]:
@@ -142,7 +181,8 @@ def _clock_shift(weather: xr.Dataset, step_hours: float) -> tuple[np.ndarray, xr
 
     The rest includes the measured misfit between a file's stamps and the sun, where a source reports it.
     """
-    longitude = weather["longitude"]
+    # A grid across the antimeridian runs on beyond 180; its days are those of the same cells in -180..180.
+    longitude = (weather["longitude"] + 180.0) % 360.0 - 180.0
     if weather.attrs["clock"] == "local-standard":
         shift = np.zeros(longitude.size)
         rest = longitude / 15.0 - weather["utc_offset_hours"]
