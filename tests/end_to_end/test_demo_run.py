@@ -11,7 +11,6 @@ import pytest
 import rasterio
 import rasterio.features
 import xarray as xr
-from ruamel.yaml import YAML
 
 from stillfield.settings.load import load_run
 from stillfield.vocabulary import WATER_CAUTION
@@ -27,13 +26,9 @@ PROMISED = [
 
 @pytest.fixture(scope="module")
 def demo(tmp_path_factory):
-    """The demonstration by the rule, in an empty folder, and what the command said."""
+    """The demonstration as it is shipped, in an empty folder, and what the command said."""
     folder = tmp_path_factory.mktemp("demo")
     shutil.copytree(CONFIG, folder / "config")
-    run_file = folder / "config" / "demo.yaml"
-    keys = YAML(typ="safe").load(run_file.read_text(encoding="utf-8"))
-    with run_file.open("w", encoding="utf-8") as stream:
-        YAML(typ="safe").dump({**keys, "method": "rule"}, stream)
     told = stillfield_command("run", "config/demo.yaml", cwd=folder)
     assert told.returncode == 0, told.stderr
     return folder, told
@@ -188,7 +183,7 @@ def test_the_manifest_accounts_for_inputs_and_outputs(demo, out):
             assert digest == hashlib.sha256((out / name).read_bytes()).hexdigest(), name
     assert {"cells.csv", "places.csv", "monthly", "monthly_yield.tif"} <= set(manifest["digests"])
     assert manifest["versions"]["xarray"] == xr.__version__
-    assert manifest["settings"]["method"] == "rule"
+    assert manifest["settings"]["method"] == "fitted"
     assert any("invented" in sentence for sentence in manifest["conventions"])
     assert str(demo[0]) not in (out / "manifest.json").read_text(encoding="utf-8")
 
@@ -201,12 +196,15 @@ def test_water_caution_stands_wherever_litres_are_told(demo, out):
     assert WATER_CAUTION in flat((out / "READ-ME-FIRST.txt").read_text(encoding="utf-8"))
 
 
-def test_the_summary_says_the_answer_and_claims_no_band_for_a_method_without(demo, out):
+def test_the_summary_says_the_answer_and_how_sure_it_is(demo, out, monthly):
     first = table(out / "places.csv")[0]
     words = demo[1].stdout
     assert f"1  {first['name']}" in words
-    assert "method rule" in words
-    assert "band" not in words
+    assert f"{float(first['worst_month_yield_l_m2_day']):.2f} L/m2 a day in {first['worst_month']}" in words
+    assert f"a year        {float(monthly['annual_yield'].median()):.0f} (" in words
+    ends = [float(monthly[f"annual_yield_{end}"].median()) for end in ("low", "high")]
+    assert ends[0] < 0.9 * float(monthly["annual_yield"].median()) < ends[1]
+    assert f"condition band {ends[0]:.0f} to {ends[1]:.0f}" in words
     assert f"{len(PROMISED)} files in outputs/demo" in words.replace("\\", "/")
 
 

@@ -10,7 +10,7 @@ import stillfield as sf
 from whole_runs import CONFIG, SMALL_WEATHER, STILL, finished, months_of, table, write_run
 
 
-@pytest.mark.parametrize("method", ["rule", "heat-balance", "nafey-2000"])
+@pytest.mark.parametrize("method", ["fitted", "heat-balance", "rule", "nafey-2000"])
 def test_typical_years_in_a_notebook_and_on_the_command_line(tmp_path, method):
     names = ["pvlib:data/723170TYA.CSV", "pvlib:data/12839.tm2"]
     weather = sf.open_weather(names)

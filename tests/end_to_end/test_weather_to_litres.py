@@ -12,12 +12,12 @@ import xarray as xr
 
 from data.fetch import fetched
 from stillfield.sources.typical_year import open_typical_year
-from whole_runs import finished, months_of, table, write_run
+from whole_runs import finished, months_of, stillfield_command, table, write_run
 
 TMY3 = ("723170TYA.CSV", "703165TY.csv")
 TMY2 = "12839.tm2"
 PVGIS = [f"tmy_45.000_8.000_2005_2023.{ending}" for ending in ("csv", "json", "epw")]
-METHODS = ("rule", "heat-balance")
+METHODS = ("rule", "fitted", "heat-balance")
 
 #: Half of the last printed digit of a yearly figure in the tables.
 HALF_DIGIT = 0.005
@@ -115,7 +115,7 @@ def one_cell(path: Path, *, hours_to_utc: int) -> Path:
     return path
 
 
-@pytest.mark.parametrize(("method", "tolerance"), [("rule", 0.001), ("heat-balance", 0.01)])
+@pytest.mark.parametrize(("method", "tolerance"), [("rule", 0.001), ("fitted", 0.01), ("heat-balance", 0.01)])
 def test_a_typical_year_as_a_cell_in_utc_gives_the_typical_years_months(tmp_path, typical_years, method, tolerance):
     """Miami keeps UTC-5, so the local days are whole days of the UTC file as well: the record starts at 05:00 UTC.
 
@@ -151,3 +151,17 @@ def test_a_day_cut_short_by_the_end_of_the_record_is_left_out_and_counted(tmp_pa
     days = 0.30 * hours.reshape(365, 24).sum(axis=1) * 3600 / 1e6 / 2.3
     assert litres[0] == pytest.approx(days[:31].sum(), rel=1e-5)
     assert litres[11] == pytest.approx(days[334:364].mean() * 31, rel=1e-5)
+
+
+def test_a_method_that_knows_no_condition_claims_no_band(tmp_path):
+    weather = {"kind": "typical-year", "files": f"pvlib:data/{TMY2}"}
+    told = stillfield_command("run", write_run(tmp_path / "x.yaml", weather=weather), cwd=tmp_path)
+    assert told.returncode == 0, told.stderr
+    assert "method rule" in told.stdout
+    assert "band" not in told.stdout
+    assert "maintained" not in told.stdout
+    notes = (tmp_path / "outputs" / "x" / "READ-ME-FIRST.txt").read_text(encoding="utf-8")
+    assert "Method rule knows no condition of the still" in notes
+    assert "A typical year holds no poor year" in notes
+    with xr.open_dataset(tmp_path / "outputs" / "x" / "monthly_yield.nc") as result:
+        assert "monthly_yield_poor_year" not in result

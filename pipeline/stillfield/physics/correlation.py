@@ -416,6 +416,16 @@ def frost_factors(temp_air: Array, predictors: Mapping[str, Array], coefficients
 def thaw(score: Array) -> Array:
     """Logistic step from 0 (frozen) to 1 (liquid) around a score of one half.
 
+    Parameters
+    ----------
+    score : ndarray
+        What the frost terms add up to. [1]
+
+    Returns
+    -------
+    ndarray, shape of `score`
+        Share of the unfrozen litres, in (0, 1). [1]
+
     Examples
     --------
     >>> float(thaw(np.array(0.5)))
