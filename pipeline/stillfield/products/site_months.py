@@ -37,7 +37,9 @@ _COLUMNS = 4
 _CHART_IN, _HEAD_IN, _GAP_IN, _FEET_IN, _KEY_IN = 1.32, 0.26, 0.16, 0.20, 0.42
 _BAR = "#4f8fae"
 _SUBTITLE = "Distillate, litres per m² of basin in the month. One scale for all sites."
-_NAME_CHARACTERS = 18
+#: Characters of a name that fit above a chart, per inch of its width, beside the worst month.
+_CHARACTERS_PER_IN = 7.0
+_WORST_IN = 0.85
 
 
 def write_site_months(monthly: xr.Dataset, path: str | Path, *, words: Words, limit: int = MOST_SITES) -> None:
@@ -85,19 +87,21 @@ def draw_site_months(monthly: xr.Dataset, *, words: Words, limit: int) -> Figure
     shown = monthly.isel(site=slice(0, limit)).load()
     count = shown.sizes["site"]
     rest = f" {count} of {total} sites; the tables have them all." if count < total else ""
-    rows = -(-count // _COLUMNS)
+    columns = min(_COLUMNS, max(count, 2))
+    rows = -(-count // columns)
     row_in = _HEAD_IN + _CHART_IN + _FEET_IN
     page = new_page(Words(words.title, words.footer, words.subtitle or _SUBTITLE + rest, words.caution),
                     rows * row_in + _KEY_IN)
-    width = (WIDTH_IN - LEFT_IN - RIGHT_IN - (_COLUMNS - 1) * _GAP_IN) / _COLUMNS
+    width = (WIDTH_IN - LEFT_IN - RIGHT_IN - (columns - 1) * _GAP_IN) / columns
     top = _top_of_scale(shown)
     for number in range(count):
-        row, column = divmod(number, _COLUMNS)
+        row, column = divmod(number, columns)
         axes = page.axes(LEFT_IN + column * (width + _GAP_IN), page.body_top_in + row * row_in + _HEAD_IN, width,
                          _CHART_IN)
         _chart(axes, shown.isel(site=number))
         _dress(axes, top, figures=column == 0)
-        axes.set_title(_name(shown, number), loc="left", size=8.4, weight="bold", pad=3, color=INK, parse_math=False)
+        name = _name(shown, number, round((width - _WORST_IN) * _CHARACTERS_PER_IN))
+        axes.set_title(name, loc="left", size=8.4, weight="bold", pad=3, color=INK, parse_math=False)
         axes.set_title(_worst(shown.isel(site=number)), loc="right", size=6.8, pad=3.5, color=ACCENT)
     _key(page, has_band="monthly_yield_low" in shown, has_rule="monthly_yield_rule" in shown)
     return page.figure
@@ -141,10 +145,10 @@ def _dress(axes: Axes, top: float, *, figures: bool) -> None:
         axes.spines[side].set_visible(False)
 
 
-def _name(shown: xr.Dataset, number: int) -> str:
+def _name(shown: xr.Dataset, number: int, most: int) -> str:
     label = next((key for key in ("name", "site") if key in shown.coords), None)
     text = str(shown[label].values[number]) if label else f"site {number + 1}"
-    return text if len(text) <= _NAME_CHARACTERS else text[:_NAME_CHARACTERS - 1] + "…"
+    return text if len(text) <= most else text[:most - 1] + "…"
 
 
 def _worst(site: xr.Dataset) -> str:
