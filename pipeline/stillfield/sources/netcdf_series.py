@@ -18,6 +18,9 @@ import netCDF4
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
+from xarray.backends.locks import HDF5_LOCK, NETCDFC_LOCK, combine_locks
+from xarray.coding.times import decode_cf_datetime
+from xarray.conventions import decode_cf_variable
 
 from stillfield.sources.file_proof import prove_whole
 from stillfield.sources.netcdf_pieces import Piece, block_sizes, open_one, read_pieces, take_pieces
@@ -29,6 +32,8 @@ _OWN = frozenset({"scale_factor", "add_offset", "_FillValue", "missing_value", "
 _CLOCK = frozenset({"units", "calendar"})
 #: Variables without time up to this many values must be the same in every file; larger ones in shape only.
 _COMPARED_VALUES = 20_000
+#: The lock under which xarray reads NetCDF: neither library below it bears two threads at once.
+_ONE_READER = combine_locks([NETCDFC_LOCK, HDF5_LOCK])
 
 
 @dataclass(frozen=True)
@@ -109,7 +114,7 @@ def _one_after_another(headers: Sequence[_Header]) -> tuple[list[_Header], list[
 def _header(path: Path) -> _Header | None:
     """Header of a file; None where anything about it is unusual, and the full opening has to judge it."""
     try:
-        with netCDF4.Dataset(path) as file:
+        with _ONE_READER, netCDF4.Dataset(path) as file:
             file.set_auto_maskandscale(False)
             file.set_auto_chartostring(False)
             return _described(path, file)
@@ -159,8 +164,6 @@ def _content(variable: Any) -> Any:
 
 def _dates(raw: NDArray[Any], said: Mapping[str, Any]) -> NDArray[Any]:
     """Numbers on a time axis as dates, by the same decoder as the full opening."""
-    from xarray.coding.times import decode_cf_datetime
-
     return np.asarray(decode_cf_datetime(raw, said["units"], said.get("calendar")))
 
 
@@ -279,13 +282,9 @@ def _share_out(files: Sequence[tuple[str, int]], longest: int) -> list[tuple[tup
 
 
 def _read_values(path: str, name: str, where: tuple[slice, ...]) -> NDArray[Any]:
-    """Part of a variable as the full opening would decode it."""
-    from xarray.backends import NetCDF4DataStore
-    from xarray.conventions import decode_cf_variable
-
-    store = NetCDF4DataStore.open(path)  # type: ignore[no-untyped-call]
-    try:
-        raw = store.open_store_variable(name, store.ds.variables[name])
-        return np.asarray(decode_cf_variable(name, raw, decode_times=False)[where].values)
-    finally:
-        store.close()
+    """Part of a variable, decoded as the full opening would."""
+    with _ONE_READER, netCDF4.Dataset(path) as file:
+        stored = file.variables[name]
+        stored.set_auto_maskandscale(False)
+        raw = xr.Variable(stored.dimensions, stored[where], dict(stored.__dict__))
+    return np.asarray(decode_cf_variable(name, raw, decode_times=False).values)
