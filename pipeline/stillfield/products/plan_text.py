@@ -10,6 +10,7 @@ _WIDTH = 100
 _INDENT = 14
 _BYTE_UNITS = ("B", "kB", "MB", "GB", "TB")
 _STEP = 1000.0
+_RECOGNISED_BY = {"mapped": "the run file", "alias": "its usual name", "standard_name": "its standard_name"}
 _CLOCKS = {
     "UTC": "UTC in the files; days are cut at local solar midnight of each cell",
     "local-standard": "local standard time of each site; days are its own",
@@ -55,19 +56,22 @@ def _weather(weather: Mapping[str, Any]) -> list[str]:
     count = weather["files"]
     size = f"{count} file{'' if count == 1 else 's'}, {size_words(weather['bytes'])}" if count else "no weather file"
     lines = _entry("Weather", f"{weather['kind']}: {size}", weather["origin"])
-    lines += _entry("  recognised", *(_variable(one) for one in weather["variables"]))
+    lines += _entry("  recognised", *_variables(weather["variables"]))
     return lines + _entry("  assumed", *(weather["conventions"] or ["nothing"]))
 
 
-def _variable(one: Mapping[str, Any]) -> str:
-    unit = f" [{one['unit']}]" if one["unit"] else ""
-    by = {"mapped": "by the run file", "alias": "by its usual name", "standard_name": "by its standard_name"}.get(
-        one["recognised_by"], f"by {one['recognised_by']}"
-    )
-    if one["name"] is None:
-        return f"{one['quantity']}{unit}, {by}"
-    units = "" if one["units"] is None else f" ('{one['units']}')"
-    return f"{one['name']}{units} -> {one['quantity']}{unit}, {by}"
+def _variables(variables: Iterable[Mapping[str, Any]]) -> list[str]:
+    """One sentence a variable of a file; those that come with a format stand in one sentence."""
+    sentences, together = [], dict[str, list[str]]()
+    for one in variables:
+        quantity = f"{one['quantity']} [{one['unit']}]" if one["unit"] else one["quantity"]
+        if one["name"] is None:
+            together.setdefault(one["recognised_by"], []).append(quantity)
+            continue
+        units = "no units" if one["units"] is None else f"'{one['units']}'"
+        by = _RECOGNISED_BY.get(one["recognised_by"], one["recognised_by"])
+        sentences.append(f"{one['name']} ({units}) -> {quantity}, by {by}")
+    return sentences + [f"from {source}: {', '.join(quantities)}" for source, quantities in together.items()]
 
 
 def _time(time: Mapping[str, Any]) -> list[str]:
@@ -92,7 +96,7 @@ def _space(weather: Mapping[str, Any]) -> list[str]:
         lines = _entry("Grid", f"{space['rows']} x {space['columns']} = {space['cells']} cells{land}",
                        f"{box}; cells of {height:g} x {width:g} deg")
     region = weather["region"]
-    return lines + _entry("  region", "everything" if region is None else f"cut to {_box(region)}")
+    return lines + _entry("  region", "everything" if region is None else f"cut to {region}")
 
 
 def _box(box: Mapping[str, float]) -> str:

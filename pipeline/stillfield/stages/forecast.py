@@ -13,19 +13,19 @@ CELL_DAYS_PER_SECOND = {"fitted": 3e6, "rule": 1.2e7, "nafey-2000": 1e7}
 CELL_HOURLY_DAYS_PER_SECOND = {"fitted": 2.5e5, "heat-balance": 4e4, "rule": 8e5, "nafey-2000": 8e5}
 #: Reading and inflating files. [bytes s-1]
 READ_BYTES_PER_SECOND = 1e8
-#: Start, self-audit and drawing; making the fit of one still in one condition. [s]
-STARTING_SECONDS = 6.0
-SECONDS_PER_STILL = 4.0
+#: Start; self-audit and drawing; making the fit of one still in one condition. [s]
+STARTING_SECONDS = 4.0
+SECONDS_PER_STILL = 2.0
 SECONDS_PER_FIT = 4.0
 
 #: Memory of libraries and drawing [bytes], and how many times the weather in use is held at most.
-BASE_BYTES = 3e8
-COPIES_HELD = 3.0
+BASE_BYTES = 3.5e8
+COPIES_HELD = 2.5
 
-#: Files whose size does not depend on the cells. [bytes]
-FIXED_BYTES = 1.6e6
-#: Bytes a number and a line of the table of cells take.
-BYTES_PER_NUMBER = 4
+#: Maps and other files whose size does not depend on the number of cells, of grids and of sites. [bytes]
+FIXED_GRID_BYTES, FIXED_SITES_BYTES = 1.6e6, 1.5e5
+#: Bytes a compressed number and a line of the table of cells take.
+BYTES_PER_NUMBER = 2.6
 BYTES_PER_ROW = 150
 #: Numbers of a cell in the files: months of five climatologies and their counts, annual values; rasters' bands.
 NUMBERS_PER_CELL = 100
@@ -120,8 +120,9 @@ def forecast(job: Job) -> Forecast:
     True
     """
     speed = (CELL_HOURLY_DAYS_PER_SECOND if job.hourly else CELL_DAYS_PER_SECOND)[job.method]
+    fixed = FIXED_GRID_BYTES if job.grid else FIXED_SITES_BYTES
     numbers = NUMBERS_PER_CELL + MONTHS * job.years + (RASTER_NUMBERS_PER_CELL if job.grid else 0)
-    disk = job.stills * (FIXED_BYTES + job.cells * (numbers * BYTES_PER_NUMBER + BYTES_PER_ROW))
+    disk = job.stills * (fixed + job.cells * (numbers * BYTES_PER_NUMBER + BYTES_PER_ROW))
     one_still = job.bytes_to_read / READ_BYTES_PER_SECOND + job.cells * job.days / speed + SECONDS_PER_STILL
     seconds = STARTING_SECONDS + job.stills * one_still + job.fits_to_make * SECONDS_PER_FIT
     memory = BASE_BYTES + COPIES_HELD * job.weather_bytes
