@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 #: Cell-days a second, by method, one still with its band: daily weather, and weather in steps.
 CELL_DAYS_PER_SECOND = {"fitted": 3e6, "rule": 1.2e7, "nafey-2000": 1e7}
-CELL_HOURLY_DAYS_PER_SECOND = {"fitted": 2.5e5, "heat-balance": 4e4, "rule": 8e5, "nafey-2000": 8e5}
+CELL_HOURLY_DAYS_PER_SECOND = {"fitted": 3e4, "heat-balance": 2.5e4, "rule": 4e4, "nafey-2000": 4e4}
 #: Reading and inflating files. [bytes s-1]
 READ_BYTES_PER_SECOND = 1e8
 #: Start; self-audit and drawing; making the fit of one still in one condition. [s]
