@@ -116,6 +116,15 @@ def build_parser() -> argparse.ArgumentParser:
     fit.add_argument("still_files", metavar="STILL.yaml", nargs="+", help="still files")
     fit.add_argument("--into", metavar="FILE", help="keep the fits in FILE, beside those it holds")
 
+    evidence = commands.add_parser(
+        "evidence", help="set what is known from outside beside what stillfield computes", allow_abbrev=False,
+        description="Write tables and pictures of every check against outside knowledge, and of the correlation "
+        "against the hourly balance on typical years.",
+    )
+    evidence.add_argument("--into", metavar="FOLDER", help="folder to write to (default: outputs/evidence)")
+    evidence.add_argument("--weather", metavar="FILE", nargs="+", help="typical years (default: those of pvlib)")
+    evidence.add_argument("--still", metavar="STILL.yaml", nargs="+", help="still files (default: config/stills)")
+
     schema = commands.add_parser(
         "schema", help="print the JSON Schema of run files or still files", allow_abbrev=False,
         description="Print the JSON Schema of run files or still files, for editors that complete and check.",
@@ -189,7 +198,14 @@ def _fit(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
-_COMMANDS = {"run": _run, "plan": _plan, "schema": _schema, "fit": _fit}
+def _evidence(arguments: argparse.Namespace) -> int:
+    from stillfield.evidence.command import evidence
+
+    _say(evidence(arguments.into, arguments.weather, arguments.still))
+    return EXIT_OK
+
+
+_COMMANDS = {"evidence": _evidence, "run": _run, "plan": _plan, "schema": _schema, "fit": _fit}
 
 
 class _PlainLines(logging.Formatter):

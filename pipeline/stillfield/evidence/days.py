@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from stillfield.physics.forcing import step_forcing
-from stillfield.physics.heat_balance import Record, simulate
+from stillfield.physics.heat_balance import Forcing, Record, simulate
 from stillfield.physics.irradiance import disaggregate_day
 from stillfield.physics.still import CoverMaterial, Panel, Still
 
@@ -102,6 +102,37 @@ def made_day(
     >>> bool(np.diff(made_day(still, [15.0, 20.0]).litres)[0] > 0.0)
     True
     """
+    forcing, temp_air_steps, ghi = _day_forcing(still, irradiation, temp_air, wind_speed, (latitude, day_of_year))
+    return _periodic(forcing, still, temp_air_steps, ghi)
+
+
+def scaled_days(still: Still, irradiation: float, factors: ArrayLike) -> MadeDay:
+    """The made day of 25 °C and `USUAL_WIND_M_S` with its sunshine alone scaled; the sky and the air stay.
+
+    Parameters
+    ----------
+    still : Still
+        Design in its central condition.
+    irradiation : float
+        Of the day that is scaled. [MJ m-2]
+    factors : array_like, shape (cell,)
+        [1]
+
+    Returns
+    -------
+    MadeDay
+    """
+    base, temp_air, ghi = _day_forcing(still, irradiation, 25.0, USUAL_WIND_M_S, (25.0, 80))
+    scale = np.atleast_1d(np.asarray(factors, dtype=float))
+    forcing = replace(base, absorbed=base.absorbed * scale, cover_absorbed=base.cover_absorbed * scale)
+    return _periodic(forcing, still, temp_air, ghi * scale)
+
+
+def _day_forcing(
+    still: Still, irradiation: ArrayLike, temp_air: ArrayLike, wind_speed: ArrayLike, where_and_when: tuple[float, int]
+) -> tuple[Forcing, Array, Array]:
+    """What drives the balance, with the temperature and irradiance behind it."""
+    latitude, day_of_year = where_and_when
     sun, air, wind = (
         np.array(field, dtype=float)[None, :] for field in np.broadcast_arrays(
             np.atleast_1d(irradiation), np.atleast_1d(temp_air), np.atleast_1d(wind_speed))
@@ -115,6 +146,10 @@ def made_day(
         "wind_speed": steps.wind_speed,
     }
     forcing, _ = step_forcing(weather, still, latitude=place, day_of_year=day, steps_per_day=24)
+    return forcing, steps.temp_air, steps.ghi
+
+
+def _periodic(forcing: Forcing, still: Still, temp_air: Array, ghi: Array) -> MadeDay:
     result = simulate(forcing, still, cyclic=True, engine="numpy", record=True)
     assert result.record is not None
-    return MadeDay(result.daily_yield[0], result.record, steps.temp_air, steps.ghi)
+    return MadeDay(result.daily_yield[0], result.record, temp_air, ghi)
