@@ -17,11 +17,11 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from stillfield.api import Box, load_places, load_still, monthly_yield, open_weather, rank_places
+    from stillfield.api import Box, Mask, Region, load_places, load_still, monthly_yield, open_weather, rank_places
 
 __version__ = "0.1.0"
 
-__all__ = ["Box", "__version__", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
+__all__ = ["Box", "Mask", "Region", "__version__", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
 
 
 def __getattr__(name: str) -> Any:

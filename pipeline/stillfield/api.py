@@ -28,16 +28,16 @@ from stillfield.stages.aggregate import aggregate
 from stillfield.stages.estimate import estimate
 from stillfield.stages.prepare import prepare
 from stillfield.stages.rank import rank_places
-from stillfield.stages.read import Box, read_weather
+from stillfield.stages.read import Box, Mask, Region, read_weather
 
-__all__ = ["Box", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
+__all__ = ["Box", "Mask", "Region", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
 
 
 def open_weather(
     files: str | Path | Sequence[str | Path],
     kind: str | None = None,
     *,
-    region: Box | None = None,
+    region: Box | Region | None = None,
     **options: Any,
 ) -> xr.Dataset:
     """Open weather of any kind in vocabulary names and units.
@@ -48,7 +48,7 @@ def open_weather(
         Files, globs, or ``package:path`` for a file inside an installed package.
     kind : str, optional
         'typical-year', 'netcdf', ...; recognised from the first file when left out.
-    region : Box, optional
+    region : Box or Region, optional
         Keep only cells or sites inside.
     **options
         Options of the kind, as in the run file.

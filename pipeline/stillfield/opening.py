@@ -15,9 +15,10 @@ import xarray as xr
 from stillfield.methods import Method
 from stillfield.methods.registry import get_method
 from stillfield.settings.model import RunSettings
+from stillfield.settings.region import Region as RegionKeys
 from stillfield.stages.estimate import weather_for
 from stillfield.stages.prepare import Prepared, prepare
-from stillfield.stages.read import Box, read_places, read_weather
+from stillfield.stages.read import Box, Mask, Region, read_places, read_weather
 from stillfield.stages.write import check_outputs, check_raster
 
 log = logging.getLogger(__name__)
@@ -53,6 +54,15 @@ def fits_folder(settings: RunSettings) -> Path:
     return Path(settings.output.folder) / "fits"
 
 
+def region_of(keys: RegionKeys) -> Region:
+    """The region of a run file as the stages take it."""
+    mask = None if keys.mask is None else Mask(keys.mask.file.path, keys.mask.variable, keys.mask.at_least)
+    return Region(
+        None if keys.box is None else Box(**keys.box.model_dump()),
+        None if keys.polygon is None else keys.polygon.path, mask,
+    )
+
+
 def open_run(settings: RunSettings) -> Opened:
     """Open and check what a run needs; nothing is written, and of lazy weather next to nothing is read.
 
@@ -79,12 +89,14 @@ def open_run(settings: RunSettings) -> Opened:
     if settings.places is not None:
         places = read_places(settings.places.table.path, settings.places.columns.given())
     log.info("reading the weather")
-    region = None if settings.region is None else Box(**settings.region.model_dump())
+    region = None if settings.region is None else region_of(settings.region)
     weather = read_weather(
         settings.weather.kind, settings.weather.names, region=region, **settings.weather.options()
     )
     log.info("%s", weather.attrs.get("origin", ""))
-    prepared = prepare(weather, min_valid_hours=settings.missing.min_valid_hours)
+    prepared = prepare(
+        weather, min_valid_hours=settings.missing.min_valid_hours, fill_hours=settings.missing.fill_hours
+    )
     method = get_method(settings.method, hourly=prepared.steps is not None, fits_folder=fits_folder(settings))
     weather_for(method, prepared.daily, prepared.steps)
     check_raster(prepared.daily)

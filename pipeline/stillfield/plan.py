@@ -21,7 +21,7 @@ from stillfield.stages.estimate import weather_for
 from stillfield.stages.forecast import Job, forecast
 from stillfield.stages.rank import great_circle_km
 from stillfield.stages.survey import outside_box, survey_places, survey_space, survey_time, survey_variables
-from stillfield.stages.write import file_names
+from stillfield.stages.write import file_names, makes_rasters
 
 #: Changes when a key of the plan is renamed or removed; new keys may come without.
 PLAN_VERSION = 1
@@ -50,7 +50,7 @@ def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
           ``quantity``, ``unit``, ``recognised_by``), ``conventions`` (list of sentences), ``time`` (``record``,
           ``clock``, ``step_hours``, ``first``, ``last``, ``first_day``, ``last_day``, ``days``, ``years``,
           ``calendar``), ``space`` (``kind``, ``cells``, ``land_cells``, ``rows``, ``columns``,
-          ``resolution_deg``, ``sites``, ``box``), ``region`` (box of the run file);
+          ``resolution_deg``, ``sites``, ``box``), ``region`` (in words);
         - ``method``: ``name``, ``resolution``, ``variables`` it takes, ``variant`` of the correlation, ``has_band``;
         - ``stills``: list of ``name``, ``condition``, ``condition_low``, ``condition_high``, ``fits`` (condition
           to 'shipped', 'kept' or 'to be made'), ``folder``;
@@ -84,7 +84,7 @@ def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
             "files": len(files), "bytes": cost.bytes_to_read, "variables": survey_variables(opened.weather),
             "conventions": [str(said) for said in opened.weather.attrs.get("conventions", [])],
             "time": time, "space": space,
-            "region": None if settings.region is None else settings.region.model_dump(),
+            "region": None if settings.region is None else settings.region.told(),
         },
         "method": {
             "name": opened.method.name, "resolution": opened.method.resolution, "variables": taken,
@@ -134,7 +134,7 @@ def _nearest_site_km(places: pd.DataFrame, sites: xr.Dataset) -> NDArray[np.floa
 
 
 def _outputs(settings: RunSettings, opened: Opened, stills: list[dict[str, Any]], *, grid: bool) -> list[str]:
-    names = file_names(grid=grid, ranked=opened.places is not None)
+    names = file_names(grid=grid, ranked=opened.places is not None, rasters=makes_rasters(opened.prepared.daily))
     outputs = [(folder / name).as_posix() for folder in opened.folders for name in names]
     for still, told in zip(settings.stills, stills, strict=True):
         made = [condition for condition, state in (told["fits"] or {}).items() if state == "to be made"]

@@ -116,7 +116,7 @@ def test_a_sound_file_gives_frozen_settings_with_defaults(folder):
          "line 8, region: south should lie south of north (got south 20, north 10; swapped?)"),
         ("region: {south: 1, north: 10, west: 20, east: 10}",
          "line 8, region: west should lie west of east (got west 20, east 10; swapped?)"),
-        ("region: {south: 1, north: 10, west: 20}", "line 8, region.east: is missing: Eastern edge [deg east]"),
+        ("region: {south: 1, north: 10, west: 20}", "line 8, region: a box has four edges; east is missing"),
         ("region: {south: -91, north: 10, west: 20, east: 30}",
          "line 8, region.south: should be between -90 and 90 (got -91)"),
         ("rank: {weights: {yield: -1, people: 1}}",
@@ -384,7 +384,7 @@ def test_weights_left_out_count_nothing_and_none_at_all_are_the_usual_ones(folde
 
 def test_a_region_may_cross_the_antimeridian(folder):
     region = load(folder, SOUND + "region: {south: -20, north: -10, west: 175, east: -175}\n").region
-    assert region.width_deg == pytest.approx(10.0)
+    assert region.box.width_deg == pytest.approx(10.0)
 
 
 @pytest.mark.parametrize(

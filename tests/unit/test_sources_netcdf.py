@@ -190,12 +190,13 @@ def test_columns_from_20_to_380_are_brought_to_plus_minus_180(tmp_path):
     assert float(found.irradiation.sel(longitude=10.0).isel(time=0, latitude=0)) == 17.0
 
 
-def test_a_box_across_the_antimeridian_warns(tmp_path):
+def test_the_columns_of_a_box_across_the_antimeridian_stand_side_by_side(tmp_path):
     weather = xr.Dataset({"rsds": (("time", "lat", "lon"), np.ones((DAYS, 3, 4)) * np.arange(4), {"units": "MJ m-2"})},
                          coords={"time": days(), "lat": LATITUDE, "lon": [178.0, 179.0, 180.0, 181.0]})
     found = open_netcdf(whole(weather, tmp_path))
-    assert found.longitude.values.tolist() == [-180.0, -179.0, 178.0, 179.0]
-    assert any("WARNING: the grid crosses the antimeridian" in line for line in found.attrs["conventions"])
+    assert found.longitude.values.tolist() == [178.0, 179.0, 180.0, 181.0]
+    assert found.irradiation.isel(time=0, latitude=0).values.tolist() == [0.0, 1.0, 2.0, 3.0]
+    assert "The grid lies across the antimeridian; its longitudes run on beyond 180." in found.attrs["conventions"]
 
 
 @pytest.mark.parametrize("cells", [{"latitude": [1], "longitude": [2]}, {"latitude": [1]}, {"longitude": [0]}])

@@ -179,6 +179,21 @@ def north_up(data: xr.Dataset | xr.DataArray) -> NorthUp:
     return NorthUp(float(west), float(latitude.max()) + height / 2, width, height, order)
 
 
+def is_even(data: xr.Dataset | xr.DataArray) -> bool:
+    """Whether a grid makes a raster: evenly spaced rows and columns.
+
+    Examples
+    --------
+    >>> is_even(xr.Dataset(coords={"latitude": [9.5, 10.0, 10.9], "longitude": [20.0, 20.5]}))
+    False
+    """
+    try:
+        north_up(data)
+    except OutputError:
+        return False
+    return True
+
+
 def _even_step(centres: NDArray[np.float64], name: str) -> float | None:
     if centres.size == 1:
         return None

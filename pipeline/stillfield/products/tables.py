@@ -134,6 +134,9 @@ def _cell_values(flat: xr.Dataset, *, with_site: bool) -> dict[str, Any]:
     values: dict[str, Any] = {"site": flat["site"].values.astype(str)} if with_site else {}
     for name in GRID_DIMS:
         values[f"{name}_deg"] = np.asarray(flat[name].values, dtype=float) if name in flat.coords else nothing
+    # A grid across the antimeridian runs on beyond 180; tables stay within -180..180.
+    east = values["longitude_deg"]
+    values["longitude_deg"] = np.where(east > 180.0, east - 360.0, east)
     worst = np.nan_to_num(np.asarray(flat["worst_month"].values, dtype=float), nan=0.0).astype(int)
     values["worst_month"] = [MONTH_NAMES[month - 1] if month else None for month in worst.tolist()]
     values["worst_month_yield_l_m2_day"] = _rounded(flat["worst_month_yield"].values)

@@ -21,8 +21,9 @@ from pydantic_core import PydanticCustomError, core_schema
 
 from stillfield.errors import RunFileError, StillfieldError
 from stillfield.physics.still import Still
-from stillfield.settings.base import MAX_NAME, Box, Group, OneOf, Section, folder_name
+from stillfield.settings.base import MAX_NAME, Group, OneOf, Section, folder_name
 from stillfield.settings.paths import FileKey, find_file, folder_of, refuse, shown
+from stillfield.settings.region import Region
 from stillfield.settings.still_file import load_still_file
 from stillfield.settings.text import harmless
 from stillfield.settings.weather import Weather
@@ -209,7 +210,7 @@ class RunSettings(Group):
 
     name: str = Field(min_length=1, max_length=MAX_NAME, description="Name of the run and of its output folder")
     weather: Weather
-    region: Box | None = Field(None, description="Keep only cells and sites in this region; all without it")
+    region: Region | None = Field(None, description="Keep only cells and sites in this region; all without it")
     still: _Stills = Field(
         strict=False, min_length=1, max_length=20, description="Still file, or a list of several to compare"
     )

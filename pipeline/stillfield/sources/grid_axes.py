@@ -1,14 +1,14 @@
 """Axes of gridded files, recognised by CF attributes and brought into one form.
 
-Canonical: latitude ascending; longitude ascending within -180..180, a repeated meridian dropped; values
-rounded to a millionth of a degree, so that single and double precision name the same cell; time the start
+Canonical: latitude ascending; longitude ascending within -180..180 (`region.run_on` puts the columns of a box
+across the antimeridian side by side in the end), a repeated meridian dropped; values rounded to a millionth of a degree, so that single and double precision name the same cell; time the start
 of each interval, in the file's own calendar.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, NoReturn
 
 import numpy as np
 import xarray as xr
@@ -21,8 +21,10 @@ Array = NDArray[np.floating[Any]]
 _NAMES = {"latitude": ("latitude", "lat"), "longitude": ("longitude", "lon"), "time": ("valid_time", "time")}
 _DEGREES = {"degrees_north", "degree_north", "degrees_n", "degree_n", "degreesn", "degreen",
             "degrees_east", "degree_east", "degrees_e", "degree_e", "degreese", "degreee"}
-#: Spacing may vary by this share (Gaussian latitudes do by less); beyond it a raster would be wrong.
+#: Spacing of columns may vary by this share.
 _UNEVEN = 0.01
+#: Spacing of rows may change by this factor from one to the next; more means that a row is missing.
+_SMOOTH = 1.3
 _FIGURES = 6
 
 
@@ -44,7 +46,7 @@ class Axes:
     site_dim: str | None
 
 
-def find_axes(weather: xr.Dataset, *, where: str) -> Axes:
+def find_axes(weather: xr.Dataset, *, where: str, timeless: bool = False) -> Axes:
     """Find latitude, longitude and time of an open file.
 
     Parameters
@@ -53,6 +55,8 @@ def find_axes(weather: xr.Dataset, *, where: str) -> Axes:
         As opened.
     where : str
         File, for errors.
+    timeless : bool
+        Whether the file holds no time; `Axes.time` is empty then.
 
     Returns
     -------
@@ -80,7 +84,8 @@ def find_axes(weather: xr.Dataset, *, where: str) -> Axes:
     if latitude.ndim == 1 and latitude.dims == longitude.dims:
         site_dim = str(latitude.dims[0])
         _refuse_unstructured(weather, latitude, where=where)
-    return Axes(found["latitude"], found["longitude"], _find_time(weather, where=where), site_dim)
+    time = "" if timeless else _find_time(weather, where=where)
+    return Axes(found["latitude"], found["longitude"], time, site_dim)
 
 
 def _find(weather: xr.Dataset, axis: str, *, where: str) -> str:
@@ -188,11 +193,20 @@ def latitude_order(latitude: Array, *, where: str) -> NDArray[np.intp]:
     Raises
     ------
     WeatherError
-        If a latitude is impossible, comes twice, or the rows are unevenly spaced.
+        If a latitude is impossible, comes twice, or a row seems to be missing. Spacing that changes smoothly,
+        as between Gaussian latitudes, is fine.
     """
     _check_finite(latitude, 90.0, "latitude", where=where)
-    _check_even(latitude, "latitude", where=where)
-    return np.argsort(latitude, kind="stable")
+    order = np.argsort(latitude, kind="stable")
+    steps = np.diff(latitude[order])
+    if steps.size and steps.min() <= 0.0:
+        twice = latitude[order][int(np.argmin(steps))]
+        raise WeatherError("a latitude comes twice", where=where, got=f"{twice:g}", cure="Correct the file.")
+    if steps.size > 1:
+        jump = np.maximum(steps[1:] / steps[:-1], steps[:-1] / steps[1:])
+        if jump.max() > _SMOOTH:
+            _refuse_uneven(latitude, "latitude", where=where)
+    return order
 
 
 def longitude_order(longitude: Array, *, where: str) -> tuple[NDArray[np.intp], Array, list[str]]:
@@ -233,9 +247,6 @@ def longitude_order(longitude: Array, *, where: str) -> tuple[NDArray[np.intp], 
     if repeated:
         word = "meridian was" if repeated == 1 else "meridians were"
         notes.append(f"{repeated} repeated {word} dropped.")
-    gaps = np.diff(unique)
-    if gaps.size > 1 and gaps.max() > 1.5 * np.median(gaps):
-        notes.append("WARNING: the grid crosses the antimeridian; its columns are not contiguous in -180..180.")
     return order, unique, notes
 
 
@@ -255,8 +266,11 @@ def _is_even(values: Array) -> bool:
 
 
 def _check_even(values: Array, name: str, *, where: str) -> None:
-    if _is_even(values):
-        return
+    if not _is_even(values):
+        _refuse_uneven(values, name, where=where)
+
+
+def _refuse_uneven(values: Array, name: str, *, where: str) -> NoReturn:
     steps = np.diff(values)
     usual = float(np.median(steps))
     at = int(np.argmax(np.abs(steps - usual)))

@@ -31,6 +31,7 @@ from stillfield.sources.quantities import (
     wind,
 )
 from stillfield.sources.recognise import Choice, read_mapping
+from stillfield.sources.region import run_on
 from stillfield.sources.tally import with_counts
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
 
@@ -256,6 +257,10 @@ def _assemble(
         if table[name].standard_name:
             arrays[name].attrs["standard_name"] = table[name].standard_name
     result = xr.Dataset(arrays)
+    for role, rows in counts.items():
+        name = next(iter(weather)) if role == "sun" else role
+        result = with_counts(result, name, {kind: _on_cells_of(result, row) for kind, row in rows.items()})
+    result, across = run_on(result)
     for axis, unit in (("latitude", "degrees_north"), ("longitude", "degrees_east")):
         result[axis].attrs = {"units": unit, "standard_name": axis}
     gaps = _gaps(result, step_hours)
@@ -264,11 +269,8 @@ def _assemble(
         "step_hours": step_hours,
         "clock": "own-days" if daily else "local-standard" if "utc_offset_hours" in result.coords else "UTC",
         "origin": f"{'Daily' if daily else f'{step_hours:g}-hourly'} weather read from {names}.",
-        "conventions": [*notes, *said, *also, *gaps],
+        "conventions": [*notes, *said, *also, *across, *gaps],
     }
-    for role, rows in counts.items():
-        name = next(iter(weather)) if role == "sun" else role
-        result = with_counts(result, name, {kind: _on_cells_of(result, row) for kind, row in rows.items()})
     return gate(result, where=names)[0]
 
 

@@ -165,13 +165,15 @@ def cell_centres(low: float, high: float, count: int) -> Floats:
     return centres
 
 
-def read_land(path: Path) -> BaseGeometry:
+def read_land(path: Path, *, what: str = "land") -> BaseGeometry:
     """Union of the polygons of a GeoJSON file.
 
     Parameters
     ----------
     path : Path
         A GeoJSON FeatureCollection, Feature or geometry in WGS84 longitude and latitude.
+    what : str
+        What the polygons are, for errors.
 
     Returns
     -------
@@ -189,17 +191,17 @@ def read_land(path: Path) -> BaseGeometry:
         content = json.loads(path.read_text(encoding="utf-8"))
         shapes = [shapely.geometry.shape(geometry) for geometry in _geometries(content)]
     except OSError as error:
-        raise WeatherError("the land file cannot be read", where=str(path), got=error.strerror) from error
+        raise WeatherError(f"the {what} file cannot be read", where=str(path), got=error.strerror) from error
     except (ValueError, LookupError, TypeError, AttributeError, shapely.errors.ShapelyError) as error:
         raise WeatherError(
-            "the land file is not GeoJSON", where=str(path), got=f"{type(error).__name__}: {error}",
-            cure="Give a GeoJSON file of land polygons.",
+            f"the {what} file is not GeoJSON", where=str(path), got=f"{type(error).__name__}: {error}",
+            cure="Give a GeoJSON file of polygons.",
         ) from error
     wrong = [shape.geom_type for shape in shapes if shape.geom_type not in ("Polygon", "MultiPolygon")]
     broken = [number for number, shape in enumerate(shapes, start=1) if not shape.is_valid or shape.is_empty]
     if wrong or broken or not shapes:
         raise WeatherError(
-            "the land file must hold valid polygons only", where=str(path),
+            f"the {what} file must hold valid polygons only", where=str(path),
             got=f"{len(shapes)} shapes, other kinds: {sorted(set(wrong))},"
             f" invalid or empty shapes number: {broken}",
         )

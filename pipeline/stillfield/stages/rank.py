@@ -176,7 +176,9 @@ def _with_yields(
         columns={"latitude": "latitude_deg", "longitude": "longitude_deg"}
     )
     table["cell_latitude_deg"] = cells["latitude"].to_numpy()[nearest]
-    table["cell_longitude_deg"] = cells["longitude"].to_numpy()[nearest]
+    # A grid across the antimeridian runs on beyond 180; tables stay within -180..180.
+    east = cells["longitude"].to_numpy()
+    table["cell_longitude_deg"] = np.where(east > 180.0, east - 360.0, east)[nearest]
     table["cell_distance_km"] = distance
     table["nearest_cell_missing"] = substituted
     if "elevation" in cells and "elevation_m" in table:

@@ -4,33 +4,22 @@ from __future__ import annotations
 
 import os
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import xarray as xr
 
-from stillfield.errors import WeatherError
 from stillfield.products.manifest import digest_file, portable_name
 from stillfield.sources import open_source
 from stillfield.sources.locate import locate
 from stillfield.sources.places import read_places
+from stillfield.sources.region import Box, Mask, Region, keep_region
 
-__all__ = ["Box", "describe_inputs", "read_places", "read_weather"]
-
-
-@dataclass(frozen=True)
-class Box:
-    """A region on the map, edges in degrees; `west` > `east` crosses the antimeridian."""
-
-    south: float
-    north: float
-    west: float
-    east: float
+__all__ = ["Box", "Mask", "Region", "describe_inputs", "read_places", "read_weather"]
 
 
 def read_weather(
-    kind: str, files: Sequence[str] = (), *, region: Box | None = None, **options: Any
+    kind: str, files: Sequence[str] = (), *, region: Box | Region | None = None, **options: Any
 ) -> xr.Dataset:
     """Read weather of one kind and cut it to a region.
 
@@ -40,7 +29,7 @@ def read_weather(
         A kind of source known to `stillfield.sources`.
     files : sequence of str
         Files, globs or ``package:path`` names.
-    region : Box, optional
+    region : Box or Region, optional
         Keep only cells or sites whose centre lies inside.
     **options
         Passed on to the source.
@@ -57,41 +46,20 @@ def read_weather(
         If the weather cannot be read, or no cell lies in the region.
     """
     weather = open_source(kind, files, **options).open()
-    weather = weather if region is None else _cut(weather, region)
+    if region is not None:
+        weather = keep_region(weather, Region(box=region) if isinstance(region, Box) else region)
     single = "site" not in weather.dims and weather.sizes["latitude"] == weather.sizes["longitude"] == 1
     return _as_site(weather) if single else weather
 
 
 def _as_site(weather: xr.Dataset) -> xr.Dataset:
     latitude, longitude = float(weather["latitude"][0]), float(weather["longitude"][0])
+    longitude -= 360.0 if longitude > 180.0 else 0.0
     name = f"{abs(latitude):g}{'S' if latitude < 0 else 'N'} {abs(longitude):g}{'W' if longitude < 0 else 'E'}"
     site = weather.isel(latitude=0, longitude=0).expand_dims(site=[name])
-    site = site.assign_coords({place: ("site", [float(site[place])]) for place in ("latitude", "longitude")})
+    site = site.assign_coords(latitude=("site", [latitude]), longitude=("site", [longitude]))
     said = [*weather.attrs.get("conventions", []), "The one cell is taken as a site."]
     return site.transpose("time", "site", ...).assign_attrs(conventions=said)
-
-
-def _cut(weather: xr.Dataset, box: Box) -> xr.Dataset:
-    longitude, latitude = weather["longitude"], weather["latitude"]
-    east_of_west, west_of_east = longitude >= box.west, longitude <= box.east
-    inside_lon = (east_of_west & west_of_east) if box.west <= box.east else (east_of_west | west_of_east)
-    inside_lat = (latitude >= box.south) & (latitude <= box.north)
-    if "site" in weather.dims:
-        cut = weather.isel(site=(inside_lon & inside_lat).values.nonzero()[0])
-    else:
-        cut = weather.isel(
-            latitude=inside_lat.values.nonzero()[0], longitude=inside_lon.values.nonzero()[0]
-        )
-    if 0 in cut.sizes.values():
-        raise WeatherError(
-            "no weather in the region",
-            where="region",
-            got=f"{box.south}..{box.north} N, {box.west}..{box.east} E",
-            wanted=f"a box that meets {float(latitude.min()):g}..{float(latitude.max()):g} N, "
-            f"{float(longitude.min()):g}..{float(longitude.max()):g} E",
-            cure="Correct the box or the weather files.",
-        )
-    return cut
 
 
 def describe_inputs(files: Iterable[str], base: Path) -> dict[str, dict[str, Any]]:

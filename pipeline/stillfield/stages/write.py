@@ -19,7 +19,7 @@ import pandas as pd
 import xarray as xr
 
 from stillfield.errors import OutputError
-from stillfield.products.grid import is_grid, north_up
+from stillfield.products.grid import cell_edges, is_even, is_grid
 from stillfield.products.manifest import digest_dataset, digest_file, write_manifest
 from stillfield.products.netcdf import MONTH_NAMES, write_netcdf
 from stillfield.products.place_columns import PLACE_COLUMNS
@@ -29,6 +29,11 @@ from stillfield.vocabulary import WATER_CAUTION
 MANIFEST = "manifest.json"
 
 _CURE = "Free the disk or the permissions, or choose another output.folder."
+
+_NO_RASTERS = (
+    "The cells are unevenly spaced (Gaussian latitudes, for example), which a GeoTIFF cannot hold: there is none. "
+    "monthly_yield.nc has the true edges of every cell, and the maps show them."
+)
 
 #: Variables that get a GeoTIFF of their own.
 RASTERS = ("monthly_yield", "monthly_yield_low", "monthly_yield_high", "annual_yield", "worst_month_yield")
@@ -103,7 +108,7 @@ def check_outputs(folders: Iterable[Path], *, land: Path | None = None) -> None:
 
 
 def check_raster(weather: xr.Dataset) -> None:
-    """Find out before any yield is computed whether the cells make a raster; sites always pass.
+    """Find out before any yield is computed whether the cells make a map; sites always pass.
 
     Parameters
     ----------
@@ -113,13 +118,18 @@ def check_raster(weather: xr.Dataset) -> None:
     Raises
     ------
     OutputError
-        If the spacing is uneven or unknown.
+        If the size of the cells is unknown.
     """
     if is_grid(weather):
-        north_up(weather)
+        cell_edges(weather)
 
 
-def file_names(*, grid: bool, ranked: bool) -> tuple[str, ...]:
+def makes_rasters(weather: xr.Dataset) -> bool:
+    """Whether `write_results` writes GeoTIFF files of these cells: a grid of even spacing."""
+    return is_grid(weather) and is_even(weather)
+
+
+def file_names(*, grid: bool, ranked: bool, rasters: bool = True) -> tuple[str, ...]:
     """Files `write_results` writes into a run's folder, as paths below it, in the order it gives them.
 
     Parameters
@@ -128,6 +138,8 @@ def file_names(*, grid: bool, ranked: bool) -> tuple[str, ...]:
         Cells of a grid; sites otherwise.
     ranked : bool
         Whether there are places.
+    rasters : bool
+        Whether a grid makes GeoTIFF files (`makes_rasters`).
 
     Returns
     -------
@@ -140,7 +152,7 @@ def file_names(*, grid: bool, ranked: bool) -> tuple[str, ...]:
     """
     maps = ["monthly_yield", *SINGLE_MAPS] if grid else ["site_months"]
     names = ["READ-ME-FIRST.txt", "cells.csv", "monthly_yield.nc", "run.yaml", *(f"maps/{name}.png" for name in maps)]
-    names += [f"{name}.tif" for name in RASTERS] if grid else []
+    names += [f"{name}.tif" for name in RASTERS] if grid and rasters else []
     names += ["places.csv"] if ranked else []
     return (*(path.as_posix() for path in sorted(map(Path, names))), MANIFEST)
 
@@ -235,7 +247,7 @@ def _write_rasters(stage: Path, results: Results) -> None:
     write_netcdf(
         monthly, stage / "monthly_yield.nc", title=results.title, history=results.method_line
     )
-    if is_grid(monthly):
+    if makes_rasters(monthly):
         from stillfield.products.geotiff import write_geotiff
 
         for name in RASTERS:
@@ -282,9 +294,10 @@ def _write_tables(stage: Path, results: Results) -> None:
         write_csv(table, stage / "places.csv", columns=[column.name for column in present])
         known = {column.name for column in present}
         columns = present + [column for column in columns if column.name not in known]
+    uneven = (_NO_RASTERS,) if is_grid(results.monthly) and not makes_rasters(results.monthly) else ()
     write_notes(
         stage / "READ-ME-FIRST.txt", columns, title=results.title,
-        remarks=(results.method_line, *results.remarks),
+        remarks=(results.method_line, *results.remarks, *uneven),
     )
 
 
