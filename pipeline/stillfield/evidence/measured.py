@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stillfield.evidence.days import LATENT_MJ, household_still, made_day
-from stillfield.evidence.row import CLOSED_FORM, MEMORY, PRACTICE, Row, between
+from stillfield.evidence.row import MEMORY, PRACTICE, Row, between
 from stillfield.evidence.sites import MIAMI, open_sites
 from stillfield.methods.heat_balance import HeatBalance
 from stillfield.physics.published_fits import NAFEY_2000
@@ -74,8 +74,8 @@ def _efficiencies() -> list[Row]:
                   cover=CoverMaterial(extinction_per_m=22.0), condition="new")
     published = (
         _Efficiency(0.45, "insulated 1 m2 gable still, 4 mm glass at 35°; new, 2 cm",
-                    "Al-Hayek & Badran 2004, Desalination 169:121, overall efficiency; transcribed from a stored "
-                    "digest of the paper", gable),
+                    "Al-Hayek & Badran 2004, Desalination 169:121 (volume and page quoted from memory), overall "
+                    "efficiency; transcribed from a stored digest of the paper", gable),
         _Efficiency(0.35, "conventional still with 30 L in the basin, Egypt; maintained, 3 cm",
                     "Omara, Hamed & Kabeel 2011, Desalination 277:281, abstract; transcribed from a stored copy",
                     household_still(depth_m=0.03)),
@@ -136,8 +136,8 @@ def _trade() -> list[Row]:
     return [
         Row("trade facts", "1 m2 glass still, nine hours of a sunny day; maintained, 20 MJ/m2, 25 °C, 8 to 17 h",
             PRACTICE, 2.2, nine_hours, LITRES_WITHIN * 2.2, "L"),
-        Row("trade facts", "the same as 0.24 L/h", f"{CLOSED_FORM}: 2.2 L in 9 h", 2.2 / 9.0, 0.24, 0.005, "L/h",
-            "shows only that the two figures of the trade agree"),
+        Row("trade facts", "the same still, mean of these nine hours", PRACTICE, 0.24, nine_hours / 9.0,
+            LITRES_WITHIN * 0.24, "L/h"),
         Row("trade facts", "product of 35 000 ppm feed", PRACTICE, 150.0, None, None, "ppm",
             "purity of the product is outside the model, which knows no carry-over of brine"),
     ]
