@@ -123,6 +123,14 @@ def test_gridded_files_are_told_without_reading_their_weather(tmp_path, days_of_
     assert told["method"]["variant"] == "daily"
 
 
+def test_the_region_cuts_the_cells(tmp_path, days_of_weather):
+    region = {"south": 8.4, "north": 9.3, "west": 39.2, "east": 40.0}
+    told = planned(write_run(tmp_path / "run.yaml", weather=days_of_weather, region=region))
+    # Centres 8.5 and 9.0 N; 39.25, 39.5 and 39.75 E.
+    assert (told["weather"]["space"]["rows"], told["weather"]["space"]["columns"]) == (2, 3)
+    assert "region      cut to 8.4 to 9.3 N, 39.2 to 40 E" in plan_text(told)
+
+
 def test_the_variant_follows_the_weather(tmp_path, days_of_weather):
     for part in range(4):
         with xr.open_dataset(tmp_path / f"part{part}.nc") as old:
