@@ -21,7 +21,9 @@ if TYPE_CHECKING:
 
 __version__ = "0.1.0"
 
-__all__ = ["Box", "Mask", "Region", "__version__", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
+__all__ = [
+    "Box", "Mask", "Region", "__version__", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places",
+]
 
 
 def __getattr__(name: str) -> Any:

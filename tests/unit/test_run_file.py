@@ -137,7 +137,7 @@ def test_a_sound_file_gives_frozen_settings_with_defaults(folder):
 def test_each_fault_names_its_line_key_and_cure(folder, lines, expected):
     assert expected in faults(folder, SOUND + lines + "\n")
 
-FURTHER_KINDS = "'netcdf', 'monthly-means'"
+FURTHER_KINDS = "'netcdf', 'monthly-means', 'station-table'"
 
 
 @pytest.mark.parametrize(
@@ -301,7 +301,8 @@ def test_weather_files_that_are_not_there(folder, files, expected):
     ("variable", "expected"),
     [
         ("irradiatoin: {name: ssrd}", "irradiatoin: unknown key (did you mean 'irradiation'?)"),
-        ("ghi: {means: daily_total}", "ghi.means: should be one of 'daily-total', 'daily-mean', 'step-mean', "
+        ("ghi: {means: daily_total}", "ghi.means: should be one of 'daily-total', 'daily-mean', 'daylight-mean', "
+         "'step-mean', "
          "'hour-ending accumulation', 'hour-starting accumulation', 'since-00-UTC', 'monthly-total' "
          "(got 'daily_total'; did you mean 'daily-total'?)"),
         ("ghi: {stamp: begin}", "ghi.stamp: should be one of 'start', 'middle', 'end' (got 'begin')"),

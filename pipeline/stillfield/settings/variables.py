@@ -25,7 +25,7 @@ from stillfield.settings.text import harmless, read_text
 
 #: What a value of the sunshine stands for; needed where the unit alone does not say it.
 MEANS = (
-    "daily-total", "daily-mean", "step-mean", "hour-ending accumulation", "hour-starting accumulation",
+    "daily-total", "daily-mean", "daylight-mean", "step-mean", "hour-ending accumulation", "hour-starting accumulation",
     "since-00-UTC", "monthly-total",
 )
 

@@ -9,6 +9,7 @@ from pydantic import BeforeValidator, Field, WithJsonSchema, field_validator, mo
 
 from stillfield.settings.base import Box, Group, OneOf, Section
 from stillfield.settings.paths import FileKey, FilesKey, InputFiles, refuse
+from stillfield.settings.tables import TableKeys
 from stillfield.settings.variables import SUNS, DescriptionKey, Variables, check_variables
 
 #: Formats of typical-year files.
@@ -66,6 +67,11 @@ class FileWeather(Group):
         """Every file as the sources take it: a path, or ``package:path`` as given."""
         return tuple(name for entry in self.files for name in entry.names)
 
+    @property
+    def further(self) -> tuple[str, ...]:
+        """Files that are read beside the weather itself."""
+        return ()
+
 
 class TypicalYearWeather(FileWeather):
     """Typical years of single sites, one file per site."""
@@ -111,6 +117,11 @@ class MappedWeather(FileWeather):
         check_variables(self.variables)
         return self
 
+    @property
+    def further(self) -> tuple[str, ...]:
+        """Files that are read beside the weather itself."""
+        return () if self.description is None else (str(self.description.path),)
+
     def options(self) -> dict[str, Any]:
         """Arguments of the source beside the files."""
         described = {} if self.description is None else self.description.variables
@@ -131,10 +142,39 @@ class NetcdfWeather(MappedWeather):
     """Gridded weather from NetCDF files."""
 
     kind: Literal["netcdf"]
+    day_clock: Annotated[str, Field(pattern=r"^(local|UTC([+-][0-9]{1,2}(:[0-9]{2})?)?)$")] | None = Field(
+        None, description="Clock by which the days of daily files were cut: 'UTC', 'local', or an offset like 'UTC+8'"
+    )
+
+    def options(self) -> dict[str, Any]:
+        """Arguments of the source beside the files."""
+        return {**super().options(), "day_clock": self.day_clock}
 
 
-class MonthlyMeansWeather(MappedWeather):
-    """Monthly means, gridded or of stations; days are generated from them."""
+class TabularWeather(MappedWeather):
+    """What the kinds of weather share that may come as tables of text."""
+
+    table: TableKeys | None = Field(None, description="How tables of stations are written")
+
+    @property
+    def further(self) -> tuple[str, ...]:
+        """Files that are read beside the weather itself."""
+        stations = self.table and self.table.stations
+        return (*super().further, *([str(stations.path)] if stations else []))
+
+    def options(self) -> dict[str, Any]:
+        """Arguments of the source beside the files."""
+        return {**super().options(), "table": None if self.table is None else self.table.options()}
+
+
+class StationTableWeather(TabularWeather):
+    """Stations in tables of text: all in one, or a table for each; daily or in shorter steps."""
+
+    kind: Literal["station-table"]
+
+
+class MonthlyMeansWeather(TabularWeather):
+    """Monthly means, gridded or of stations in tables; days are generated from them."""
 
     kind: Literal["monthly-means"]
     join_within_km: float | None = Field(
@@ -182,6 +222,11 @@ class SyntheticWeather(Group):
         """No weather file is read."""
         return ()
 
+    @property
+    def further(self) -> tuple[str, ...]:
+        """The outline of the land."""
+        return (str(self.land.path),)
+
     def options(self) -> dict[str, Any]:
         """Arguments of the source."""
         return {
@@ -191,6 +236,6 @@ class SyntheticWeather(Group):
 
 
 Weather = Annotated[
-    SyntheticWeather | TypicalYearWeather | NetcdfWeather | MonthlyMeansWeather,
+    SyntheticWeather | TypicalYearWeather | NetcdfWeather | MonthlyMeansWeather | StationTableWeather,
     Field(discriminator="kind", description="Where the weather comes from"),
 ]

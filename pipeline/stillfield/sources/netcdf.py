@@ -38,7 +38,7 @@ from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
 
 def open_netcdf(
     files: Sequence[str], *, variables: Mapping[str, str | Mapping[str, Any]] | None = None,
-    radiation_from_temperature: Mapping[str, float] | None = None,
+    radiation_from_temperature: Mapping[str, float] | None = None, day_clock: str | None = None,
 ) -> xr.Dataset:
     """Open CF NetCDF files as one lazy dataset in vocabulary names and units.
 
@@ -56,6 +56,8 @@ def open_netcdf(
     radiation_from_temperature : mapping, optional
         ``k_rs``: estimate the irradiation of daily files without sunshine from the temperature range
         (`stillfield.physics.temperature_range`).
+    day_clock : str, optional
+        Clock by which the days of daily files were cut: 'UTC', 'local', or an offset such as 'UTC+8'.
 
     Returns
     -------
@@ -75,13 +77,13 @@ def open_netcdf(
     pieces = read_files(paths, choices)
     return weather_from_pieces(
         pieces, choices, labels=[path.name for path in paths], available=lambda: _variable_names(paths),
-        radiation_from_temperature=radiation_from_temperature,
+        radiation_from_temperature=radiation_from_temperature, day_clock=day_clock,
     )
 
 
 def weather_from_pieces(
     pieces: Sequence[Piece], choices: Mapping[str, Choice], *, labels: Sequence[str], available: Callable[[], str],
-    radiation_from_temperature: Mapping[str, float] | None = None,
+    radiation_from_temperature: Mapping[str, float] | None = None, day_clock: str | None = None,
 ) -> xr.Dataset:
     """Make one dataset in vocabulary names and units of recognised pieces, whatever they were opened from.
 
@@ -97,6 +99,8 @@ def weather_from_pieces(
         Tells which variables there are, for errors.
     radiation_from_temperature : mapping, optional
         ``k_rs``, see `open_netcdf`.
+    day_clock : str, optional
+        See `open_netcdf`.
 
     Returns
     -------
@@ -116,7 +120,7 @@ def weather_from_pieces(
     counts = {role: one.counts for role, one in joined.items()}
     daily = step_hours >= 24.0
     recognised = [one.found.told(daily=daily) for one in joined.values()]
-    sun, said = sunshine(joined.pop("sun"), step_hours)
+    sun, said = sunshine(joined.pop("sun"), step_hours, day_clock)
     weather = {"irradiation" if daily else "ghi": sun}
     notes += said
     for build in (plain, wind, mean_temperature, dew_point):

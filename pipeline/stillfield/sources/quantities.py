@@ -13,11 +13,13 @@ import numpy as np
 import xarray as xr
 
 from stillfield.errors import WeatherError
-from stillfield.physics.sun import extraterrestrial_irradiation
+from stillfield.physics.sun import day_length, extraterrestrial_irradiation
 from stillfield.physics.temperature_range import irradiation_from_temperature
 from stillfield.physics.vapour import dew_point_at_pressure, vapour_pressure_of_specific_humidity
 from stillfield.physics.wind import wind_speed_at_2m
 from stillfield.sources.alignment import TOLERANCE_MINUTES, measure_sun_offset
+from stillfield.sources.calendars import solar_day_of_year
+from stillfield.sources.own_days import dated, describe_days
 from stillfield.sources.recognise import Found
 from stillfield.sources.sunshine import Meaning, differences, grows_from_midnight, settle_meaning
 from stillfield.sources.units import conversion, irradiation_kind
@@ -59,7 +61,7 @@ def estimated_sun(joined: dict[str, Joined], settings: Mapping[str, float] | Non
     coldest, warmest = xr.align(coldest, warmest, join="inner")
     cells = coldest["latitude"].dims[0]
     outside = xr.DataArray(
-        extraterrestrial_irradiation(coldest["latitude"].values, coldest["time"].dt.dayofyear.values),
+        extraterrestrial_irradiation(coldest["latitude"].values, solar_day_of_year(coldest["time"])),
         dims=("time", cells), coords={"time": coldest["time"], cells: coldest[cells]},
     )
     above_sea = coldest["elevation"].fillna(0.0) if "elevation" in coldest.coords else xr.DataArray(0.0)
@@ -114,14 +116,12 @@ def _kind(joined: Joined) -> str:
 
 def _placed(joined: Joined, step_hours: float) -> Joined:
     """Bring daily stamps to the start of their day and mid-step stamps to the start of the step."""
-    import pandas as pd
-
     index = joined.values.indexes["time"]
+    if step_hours >= 24.0:
+        days = dated(joined.values, bounds=joined.placed == "bounds", stamped_at_end=joined.found.stamp == "end")
+        return Joined(joined.found, joined.placed, days, joined.where)
     if joined.placed == "bounds":
         return joined
-    if step_hours >= 24.0:
-        late = pd.Timedelta(seconds=1 if joined.found.stamp == "end" else 0)
-        return Joined(joined.found, None, joined.values.assign_coords(time=(index - late).floor("D")), joined.where)
     seconds = (index - index.floor("D")).total_seconds()
     phase = float(seconds[0]) / 3600.0 % step_hours
     middle = joined.found.stamp == "middle" or (joined.found.stamp is None and np.isclose(phase, step_hours / 2.0))
@@ -130,8 +130,17 @@ def _placed(joined: Joined, step_hours: float) -> Joined:
     return Joined(joined.found, "middle", _shifted(joined.values, -step_hours / 2.0), joined.where)
 
 
-def sunshine(joined: Joined, step_hours: float) -> tuple[xr.DataArray, list[str]]:
+def sunshine(joined: Joined, step_hours: float, day_clock: str | None = None) -> tuple[xr.DataArray, list[str]]:
     """Irradiation of days [MJ m-2] or irradiance of steps [W m-2] and what was assumed.
+
+    Parameters
+    ----------
+    joined : Joined
+        The sunshine as the files have it.
+    step_hours : float
+        [h]
+    day_clock : str, optional
+        Clock of the days of daily files (`own_days.clock_hours`).
 
     Raises
     ------
@@ -146,7 +155,19 @@ def sunshine(joined: Joined, step_hours: float) -> tuple[xr.DataArray, list[str]
                              where=joined.where)
     values = differences(placed.values, step_hours) if meaning.accumulates else placed.values
     sun = _shifted(_scaled(values, meaning), meaning.shift_steps * step_hours)
+    if meaning.of_daylight:
+        sun = sun * _day_length(sun)
+    if step_hours >= 24.0:
+        said = describe_days(joined.values, bounds=joined.placed == "bounds", day_clock=day_clock)
+        return sun, [meaning.sentence, *said]
     return sun, [meaning.sentence, *_check_clock(sun, step_hours)]
+
+
+def _day_length(sun: xr.DataArray) -> xr.DataArray:
+    """Hours of daylight of every day and row or site (FAO-56 equation 34)."""
+    cells = sun["latitude"].dims[0]
+    hours = day_length(sun["latitude"].values, solar_day_of_year(sun["time"]))
+    return xr.DataArray(hours, dims=("time", cells)).astype(sun.dtype)
 
 
 def _check_clock(sun: xr.DataArray, step_hours: float) -> list[str]:
@@ -163,7 +184,7 @@ def _check_clock(sun: xr.DataArray, step_hours: float) -> list[str]:
     if days == 0 or not np.isclose((stamps[-1] - stamps[0]).total_seconds() / 3600.0, 24.0 * days - step_hours):
         return []
     sample = _sample(part, step_hours, days=days)
-    day_of_year = np.asarray(sample["time"].dt.dayofyear.values[::steps], dtype=float)
+    day_of_year = np.asarray(solar_day_of_year(sample["time"])[::steps], dtype=float)
     fits = [
         measure_sun_offset(values, latitude=float(cell["latitude"]), longitude=float(cell["longitude"]),
                            clock_offset_hours=float(cell.coords.get("utc_offset_hours", 0.0)), day_of_year=day_of_year)

@@ -20,6 +20,7 @@ from stillfield.errors import WeatherError
 MEANINGS = (
     "daily-total",
     "daily-mean",
+    "daylight-mean",
     "step-mean",
     "hour-ending accumulation",
     "hour-starting accumulation",

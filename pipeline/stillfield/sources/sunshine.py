@@ -34,12 +34,15 @@ class Meaning:
         The numbers grow from 00 UTC on and differences have to be taken.
     sentence : str
         For the conventions.
+    of_daylight : bool
+        The result is energy per hour of daylight [MJ m-2 h-1] and still has to be multiplied by the day's length.
     """
 
     factor: float
     shift_steps: int
     accumulates: bool
     sentence: str
+    of_daylight: bool = False
 
 
 def settle_meaning(found: Found, *, step_hours: float, placed: str | None, grows: bool | None, where: str) -> Meaning:
@@ -81,7 +84,7 @@ def _contradiction(found: Found, kind: str, step_hours: float, place: str) -> We
     return WeatherError(
         f"`means: '{found.means}'` does not go with units '{found.units}' at a {step} step",
         where=place,
-        wanted="'daily-total' for an energy of a day, 'daily-mean' for a rate" if step_hours >= 24.0
+        wanted="'daily-total' for an energy of a day, 'daily-mean' or 'daylight-mean' for a rate" if step_hours >= 24.0
         else "'step-mean' for a rate, " + _HOURLY_CHOICES + " for an energy",
         cure="Correct `variables.irradiation.means` or `.units` in the run file.",
     )
@@ -99,13 +102,17 @@ def _daily(
                 "or a stated averaging period",
                 where=place,
                 cure="Set variables.irradiation.means: 'daily-mean' in the run file if it is the mean of 24 hours, "
-                "or correct the file.",
+                "'daylight-mean' if it is the mean from sunrise to sunset, or correct the file.",
             )
         means = "daily-mean"
     means = means or "daily-total"
     if means in {"daily-mean", "step-mean"} and kind == "power":
         factor = conversion(found.units, "W m-2", where=place)[0] * 0.0864
         return Meaning(factor, 0, False, f"{found.name} is the mean irradiance of the whole day (24 hours).")
+    if means == "daylight-mean" and kind == "power":
+        factor = conversion(found.units, "W m-2", where=place)[0] * 0.0036
+        return Meaning(factor, 0, False, f"{found.name} is the mean irradiance from sunrise to sunset; the day's "
+                       "length is that of FAO-56 equation 34.", of_daylight=True)
     if means == "daily-total" and kind != "power":
         wanted = "MJ m-2" if kind == "energy" else "MJ m-2 day-1"
         return Meaning(conversion(found.units, wanted, where=place)[0], 0, False,
