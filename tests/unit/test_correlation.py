@@ -21,6 +21,7 @@ from stillfield.physics.correlation import (
 from stillfield.physics.still import Panel, Still
 from stillfield.settings.still_file import load_still_file
 
+_DAILY_FIELDS = ("transmitted", "temp_air", "wind_speed", "day_length", "clearness")
 DESIGNS = ("single-slope-glass", "double-slope-glass", "low-cost-film", "deep-basin")
 
 
@@ -35,6 +36,7 @@ def some_days(count: int = 40, cells: int = 6, seed: int = 3) -> Day:
         temp_air=random.uniform(-4.0, 40.0, (count, cells)),
         wind_speed=random.uniform(0.0, 12.0, (count, cells)),
         day_length=random.uniform(6.0, 17.0, (count, cells)),
+        clearness=random.uniform(0.05, 0.78, (count, cells)),
     )
 
 
@@ -58,7 +60,7 @@ def test_terms_are_unique_and_use_known_predictors() -> None:
     for variant, terms in VARIANTS.items():
         assert len({"".join(sorted(term)) for term in terms}) == len(terms), variant
         letters = set("".join(terms)) - {"1"}
-        allowed = set("STwNEmn")
+        allowed = set("STwNEmn") if variant == "hourly" else set("STwNEmnK")
         allowed |= {"D"} if "range" in variant else set()
         allowed |= {"h"} if "humidity" in variant else set()
         allowed |= set("PqkvD") if variant == "hourly" else set()
@@ -93,7 +95,8 @@ def test_more_sun_more_litres_on_ordinary_days(design: str) -> None:
     correlation = fit_for(still_of(design)).correlations["daily"]
     # A steady run of equal days, so that the memory is the day itself.
     sunshine = np.linspace(6.0, 25.0, 39)[None, :].repeat(30, axis=0)
-    day = Day(sunshine, np.full_like(sunshine, 27.0), np.full_like(sunshine, 2.5), np.full_like(sunshine, 12.0))
+    even = (np.full_like(sunshine, value) for value in (27.0, 2.5, 12.0))
+    day = Day(sunshine, *even, clearness=sunshine / 0.8 / 36.0)
     litres = correlation.litres(day)[0][-1]
     assert (np.diff(litres) > 0.0).all()
     exponent = np.polyfit(np.log(sunshine[0]), np.log(litres), 1)[0]
@@ -104,10 +107,10 @@ def test_more_sun_more_litres_on_ordinary_days(design: str) -> None:
 
 def test_days_outside_the_fit_are_flagged_one_by_one() -> None:
     correlation = fit_for(still_of("single-slope-glass")).correlations["daily"]
-    ordinary = Day(*(np.full((1, 4), value) for value in (15.0, 25.0, 3.0, 12.0)))
+    ordinary = Day(*(np.full((1, 4), value) for value in (15.0, 25.0, 3.0, 12.0, 0.5)))
     day = Day(
         np.array([[15.0, 40.0, 15.0, 15.0]]), np.array([[25.0, 25.0, 48.0, 25.0]]),
-        np.array([[3.0, 3.0, 3.0, 30.0]]), np.full((1, 4), 12.0),
+        np.array([[3.0, 3.0, 3.0, 30.0]]), np.full((1, 4), 12.0), np.full((1, 4), 0.5),
     )
     assert correlation.outside(ordinary).tolist() == [[False] * 4]
     assert correlation.outside(day).tolist() == [[False, True, True, True]]
@@ -116,7 +119,7 @@ def test_days_outside_the_fit_are_flagged_one_by_one() -> None:
 def test_frost_factor_leaves_warm_days_alone_and_flags_cold_ones() -> None:
     correlation = fit_for(still_of("single-slope-glass")).correlations["daily"]
     air = np.array([[-15.0, 2.0, 12.5, 30.0]]).repeat(5, axis=0)
-    day = Day(np.full_like(air, 8.0), air, np.full_like(air, 2.0), np.full_like(air, 10.0))
+    day = Day(np.full_like(air, 8.0), air, *(np.full_like(air, value) for value in (2.0, 10.0, 0.5)))
     _, frost, _ = correlation.litres(day)
     assert frost[-1, 0]
     assert not frost[-1, 2:].any()
@@ -151,7 +154,7 @@ def test_a_cyclic_year_has_no_beginning() -> None:
     def turned(field: np.ndarray) -> np.ndarray:
         return np.roll(field, 100, axis=0)
 
-    other = Day(*(turned(getattr(day, name)) for name in ("transmitted", "temp_air", "wind_speed", "day_length")))
+    other = Day(*(turned(getattr(day, name)) for name in _DAILY_FIELDS))
     np.testing.assert_allclose(
         turned(correlation.litres(day, cyclic=True)[0]), correlation.litres(other, cyclic=True)[0], atol=1e-9
     )

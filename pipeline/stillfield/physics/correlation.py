@@ -9,6 +9,7 @@ the shipped designs in their conditions) and whose coefficients belong to one st
  T   mean air temperature                                                                (T - 20) / 20 K
  w   root of the mean wind speed                                                         sqrt(u / 2) - 1
  N   day length                                                                          (N - 12) / 4 h
+ K   clearness: irradiation over that outside the atmosphere                             K / 0.25 - 2
  E   sunshine the basin remembers from the days before, less today's                     / 20 MJ m-2
  m   air temperature the basin remembers, less today's                                   / 20 K
  n   tomorrow's air temperature less today's                                             / 20 K
@@ -20,7 +21,7 @@ the shipped designs in their conditions) and whose coefficients belong to one st
  v   root of the wind while the sun shines, less that of the daily mean                  sqrt(u / 2)
 ===  ==================================================================================  ==================
 
-S, T, w, N and their memory are known from daily irradiation, temperature and wind alone; D and h where the
+S, T, w, N, K and their memory are known from daily irradiation, temperature and wind alone; D and h where the
 weather has them; P, q, k and v from steps within the day. What the basin remembers fades by the factor
 `memory` from day to day, which follows from its heat capacity.
 """
@@ -38,10 +39,11 @@ from numpy.typing import NDArray
 Array = NDArray[np.floating[Any]]
 
 _DAILY = (
-    "1 S ST SS E SN SSw Sm n SSS STw NN SST STT SE m Sw Tn TE T SwE Tm SSN Sww TN TTT EE SSE SEE wN N TNN"
+    "1 S ST SS E SN SSw Sm K n SSS STw SST STT SE m TK TE Sw Tn SwE Tm Sww SK SwK TTT SKK T SEK SEE NN SSE TTw w "
+    "STE SNK"
 )
-_RANGE = "D TD SD SwD ED ND wED STD"
-_HUMIDITY = "h Th Sh Swh Nh Eh wEh TTh"
+_RANGE = "D SD STD SwD TD wKD TwD ED"
+_HUMIDITY = "h Sh STh Swh Th Twh Kh wh"
 _HOURLY = (
     "1 S ST SS SSP E SSw q Sm SSS SST STk STw n Sk Sw Sww T SSv Swk Tn STT Pk m SE STP D wE Tm TTT Tq SSN Twk "
     "Tww TP STv Swq SP Sq k TE Tk SEq TTk STq w wk Tw SSk Swv Sv SSD N wwN SPq NNk"
@@ -78,6 +80,8 @@ class Day:
         Mean of the day at 2 m. [m s-1]
     day_length : ndarray
         [h]
+    clearness : ndarray, optional
+        Irradiation over that outside the atmosphere; the variants from days need it. [1]
     temp_range : ndarray, optional
         Highest less lowest air temperature. [K]
     dew_depression : ndarray, optional
@@ -91,6 +95,7 @@ class Day:
     temp_air: Array
     wind_speed: Array
     day_length: Array
+    clearness: Array | None = None
     temp_range: Array | None = None
     dew_depression: Array | None = None
     peakiness: Array | None = None
@@ -207,7 +212,7 @@ def daily_litres(
     found = []
     for one, litres, factor in zip(correlations, raw, factors, strict=True):
         np.maximum(litres, 0.0, out=litres)
-        litres *= factor
+        np.multiply(litres, factor, out=litres)
         np.minimum(litres, np.maximum(one.ceiling * sunshine, 0.0), out=litres)
         found.append((litres, factor < FROST_FLAG, one.outside(day)))
     return found
@@ -242,6 +247,7 @@ def scaled_predictors(day: Day, memory: float, *, cyclic: bool) -> dict[str, Arr
         "n": _tomorrow(T, cyclic=cyclic) - T,
     }
     optional = {
+        "K": (day.clearness, 0.25, -2.0),
         "D": (day.temp_range, 10.0, -1.0),
         "h": (day.dew_depression, 15.0, -0.7),
         "P": (day.peakiness, 2.5, -1.0),

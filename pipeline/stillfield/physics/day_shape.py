@@ -83,6 +83,7 @@ def day_from_days(
         temp_air=temp_air,
         wind_speed=weather["wind_speed"],
         day_length=day_length(latitude, day_of_year),
+        clearness=rows.clearness(weather["irradiation"], day_of_year),
         temp_range=span,
         dew_depression=_dew_depression(weather),
     )

@@ -34,7 +34,7 @@ from stillfield.physics.vapour import latent_heat
 Array = NDArray[np.floating[Any]]
 
 #: Raised whenever a fit made by older code must not be used again.
-FIT_VERSION = 1
+FIT_VERSION = 2
 
 CLIMATES = 192
 STEPS = 24

@@ -18,6 +18,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from stillfield.physics.basin import GROUND_ALBEDO, BasinGain, basin_gain, beam_gain, diffuse_gain
 from stillfield.physics.irradiance import (
+    clearness_index,
     complete_irradiance,
     daily_diffuse_fraction,
     diffuse_shape_weight,
@@ -231,6 +232,23 @@ class GainRows:
             some = slice(start, start + step)
             result[some] = self._look_up(np.asarray(day_of_year[some]) - 1, clearness[some])
         return result
+
+    def clearness(self, irradiation: Array, day_of_year: NDArray[np.integer[Any]]) -> Array:
+        """Clearness k_T of days.
+
+        Parameters
+        ----------
+        irradiation : ndarray, shape (day, cell)
+            Global horizontal irradiation H. [MJ m-2]
+        day_of_year : ndarray of int, shape (day,)
+            1 to 366.
+
+        Returns
+        -------
+        ndarray, shape (day, cell)
+            0 to 1; NaN where the irradiation is. [1]
+        """
+        return clearness_index(irradiation, self.outside[np.asarray(day_of_year) - 1][:, self.row])
 
     def transmitted(self, irradiation: Array, day_of_year: NDArray[np.integer[Any]]) -> Array:
         """Daily S from daily irradiation.
