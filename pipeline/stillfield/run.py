@@ -48,10 +48,11 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
         With what, where, got, wanted and cure.
     """
     opened = open_run(settings)
-    files = list(settings.weather.names)
+    files = [*settings.weather.names, *settings.weather.further]
     files += [str(named.path) for named in (settings.places and settings.places.table, settings.map.land) if named]
     files += [] if settings.region is None else [str(named.path) for named in settings.region.files]
-    inputs = describe_inputs([*files, *(str(choice.path) for choice in settings.still)], Path(run_file).parent)
+    files += [str(choice.path) for choice in settings.still]
+    inputs = describe_inputs(dict.fromkeys(files), Path(run_file).parent)
     summaries = []
     for still, folder in zip(settings.stills, opened.folders, strict=True):
         summaries.append(_one_still(settings, still, opened, inputs=inputs, folder=folder))

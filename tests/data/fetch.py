@@ -39,12 +39,21 @@ FILES = {
     "ESP_MD_Madrid-Barajas-Suarez.AP.082210_TMYx.2011-2025.epw": (
         "openbes", "0.3.3", "src/openbes/simulations/epw_data", "d52f4176f826c61c"),
     "USA_Denver_725650TYCST.epw": ("openbes", "0.3.3", "src/openbes/simulations/epw_data", "b3d6d975b4f02031"),
+    "psm4_golden.csv": ("pvdeg", "0.7.4", "pvdeg/data", "8bc43458a9ac6738"),
+    "psm4_miami.csv": ("pvdeg", "0.7.4", "pvdeg/data", "b86da2298d889eff"),
+    "psm4_nyc.csv": ("pvdeg", "0.7.4", "pvdeg/data", "02027e69b5548ad8"),
+    "hyderabad_climate.txt": ("aquacrop", "3.1.0", "aquacrop/data", "a1b25ef9b4982ffd"),
+    "tunis_climate.txt": ("aquacrop", "3.1.0", "aquacrop/data", "5da8ee184e107ba1"),
 }
 
 #: The same for files that only the wheel holds.
 WHEEL_FILES = {
     "merra2_rad3x3_2011-2015_pdfs_land_prox.npz": (
         "gsee-climate-data", "1.0.0", "gsee_climate_data/data", "f4719cdebcb6fadc"),
+    "8443_ronda.csv": ("pcse", "6.0.13", "pcse/tests/test_data", "ba3528598e237fab"),
+    "NL1.976": ("pcse", "6.0.13", "pcse/tests/test_data", "10e56dd70c35e9bf"),
+    "NL1.977": ("pcse", "6.0.13", "pcse/tests/test_data", "8d08073c6d06a2e9"),
+    "NL1.989": ("pcse", "6.0.13", "pcse/tests/test_data", "d437d1e352ab64b5"),
 }
 #: File name -> (Debian package, path inside it, first 16 hex digits of the SHA-256).
 DEBIAN_FILES = {

@@ -18,6 +18,7 @@ KINDS = {
     "typical-year": ("stillfield.sources.typical_year", "open_typical_year"),
     "netcdf": ("stillfield.sources.netcdf", "open_netcdf"),
     "monthly-means": ("stillfield.sources.monthly_means", "open_monthly_means"),
+    "station-table": ("stillfield.sources.station_table", "open_station_table"),
     "synthetic": ("stillfield.sources.synthetic", "SyntheticSource"),
 }
 

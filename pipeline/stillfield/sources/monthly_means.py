@@ -31,6 +31,7 @@ from stillfield.sources.netcdf import check_choices, join_roles, require_sunshin
 from stillfield.sources.netcdf_pieces import Piece, take_pieces
 from stillfield.sources.quantities import Joined, dew_point, mean_temperature, plain, wind
 from stillfield.sources.recognise import Choice, Found, read_mapping
+from stillfield.sources.station_table import TableOptions, read_stations, where_of
 from stillfield.sources.units import conversion, irradiation_kind
 from stillfield.vocabulary import DAY_WEATHER
 
@@ -43,17 +44,21 @@ _HOURS = 24.0
 
 def open_monthly_means(
     files: Sequence[str], *, variables: Mapping[str, str | Mapping[str, Any]] | None = None,
-    join_within_km: float | None = None, radiation_from_temperature: Mapping[str, float] | None = None,
+    table: Mapping[str, Any] | None = None, join_within_km: float | None = None,
+    radiation_from_temperature: Mapping[str, float] | None = None,
 ) -> xr.Dataset:
     """Open monthly means as a typical year of generated days.
 
     Parameters
     ----------
     files : sequence of str
-        NetCDF files, paths or patterns; they may split months and variables, and their grids may differ.
+        NetCDF files, paths or patterns; they may split months and variables, and their grids may differ. Or
+        tables of stations, a row for each month.
     variables : mapping, optional
         As for `stillfield.sources.netcdf.open_netcdf`; ``means`` is 'daily-mean' for a rate, 'daily-total' or
         'monthly-total' for an energy.
+    table : mapping, optional
+        How tables are written, as for `stillfield.sources.station_table.open_station_table`.
     join_within_km : float, optional
         Farthest that temperature, humidity and wind may come from, where their grid is not that of the
         sunshine; grids that differ are refused without it. [km]
@@ -74,14 +79,24 @@ def open_monthly_means(
     """
     paths = locate(files)
     choices = read_mapping(variables)
-    pieces: list[Piece] = []
-    for path in paths:
-        pieces += _pieces(path, choices)
+    if table is not None or not _is_netcdf(paths[0]):
+        stations = read_stations(paths, choices, TableOptions(**(table or {})), monthly=True)
+        pieces = take_pieces(stations.weather, where_of(paths), stations.choices)
+        days = days_from_monthly(pieces, stations.choices, labels=[path.name for path in paths],
+                                 available=stations.headings, radiation_from_temperature=radiation_from_temperature)
+        said = [line for line in days.attrs["conventions"] if " is read as " not in line]
+        return days.assign_attrs(conventions=[*stations.notes, *said])
+    pieces = [piece for path in paths for piece in _pieces(path, choices)]
     names = dict.fromkeys(name for path in paths[:3] for name in _variable_names(path))
     return days_from_monthly(
         pieces, choices, labels=[path.name for path in paths], available=", ".join(names),
         join_within_km=join_within_km, radiation_from_temperature=radiation_from_temperature,
     )
+
+
+def _is_netcdf(path: Path) -> bool:
+    with path.open("rb") as stream:
+        return stream.read(4)[:3] in (b"CDF", b"\x89HD")
 
 
 def _pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
@@ -190,7 +205,7 @@ def _estimate(joined: dict[str, Joined], settings: Mapping[str, float] | None) -
     joined["sun"] = Joined(Found("sun", "irradiation", "MJ m-2", "daily-total", None, None, "", "estimate"), None,
                            values, low.where)
     return [f"WARNING: sunshine was not measured: it is estimated from the temperature range with k_rs "
-            f"{settings['k_rs']:g} (Hargreaves & Samani, FAO-56 equation 50). It may be some 10 % off."]
+            f"{settings['k_rs']:g} (Hargreaves & Samani, FAO-56 equation 50). It may be 10 to 20 % off."]
 
 
 def _sunshine(joined: Joined) -> tuple[xr.DataArray, str]:

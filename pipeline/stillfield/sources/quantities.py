@@ -72,7 +72,7 @@ def estimated_sun(joined: dict[str, Joined], settings: Mapping[str, float] | Non
     found = Found("sun", "irradiation", "MJ m-2", "daily-total", None, None, "", "estimate")
     joined["sun"] = Joined(found, None, sun, low.where)
     return [f"WARNING: sunshine was not measured: it is estimated from the temperature range with k_rs {k_rs:g} "
-            "(Hargreaves & Samani, FAO-56 equation 50). Monthly means may be some 10 % off, single days far more."]
+            "(Hargreaves & Samani, FAO-56 equation 50). Monthly means may be 10 to 20 % off, single days far more."]
 
 
 def step_hours_of(joined: Joined) -> float:
