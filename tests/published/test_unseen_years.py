@@ -43,7 +43,8 @@ def compared(weather: xr.Dataset, still: str, condition: str, keep: tuple[str, .
     truth = sf.monthly_yield(weather, design, "heat-balance")
     given = weather
     if keep is not None:
-        given = prepare(weather).daily[list(keep)].assign_attrs(record="typical-year", step_hours=24.0, clock="own-days")
+        daily = prepare(weather).daily[list(keep)]
+        given = daily.assign_attrs(record="typical-year", step_hours=24.0, clock="own-days")
     ours = sf.monthly_yield(given, design, "fitted")["monthly_yield"]
     fine = (truth["frost_share"] == 0) & (truth["monthly_yield"] > 3.0)
     return np.abs(ours / truth["monthly_yield"] - 1.0).to_numpy()[fine.to_numpy()] * 100.0
