@@ -20,7 +20,7 @@ import xarray as xr
 
 import stillfield as sf
 
-STILL = Path(__file__).parents[2] / "config" / "stills" / "single-slope-glass.yaml"
+DESIGN = sf.load_still(Path(__file__).parents[2] / "config" / "stills" / "single-slope-glass.yaml")
 LATITUDE, LONGITUDE = 12.0, np.array([179.5, -179.5])
 UTC_DAYS, FIRST = 42, (2010, 2, 26)
 #: An hour of March when it is about midnight at both cells: sunshine missing then is known to be 0, and one hour of
@@ -250,11 +250,11 @@ def packing(values: xr.DataArray, numbers: str) -> dict[str, Any]:
             "_FillValue": -32768}
 
 
-def litres(case: dict[str, str], folder: Path, *, daily: bool, method: str) -> xr.Dataset:
+def opened(case: dict[str, str], folder: Path, *, daily: bool) -> xr.Dataset:
     weather, said = dataset(case, daily)
-    opened = sf.open_weather(write(weather, case, folder), "netcdf", variables=said,
-                             **({"day_clock": "local"} if daily else {}))
-    return sf.monthly_yield(opened, sf.load_still(STILL), method=method)
+    folder.mkdir()
+    return sf.open_weather(write(weather, case, folder), "netcdf", variables=said,
+                           **({"day_clock": "local"} if daily else {}))
 
 
 def march_by_hand(calendar: str, daily: bool) -> np.ndarray:
@@ -287,8 +287,7 @@ def baseline(daily: bool, calendar: str, folder: Path) -> np.ndarray:
     if key not in _BASELINE:
         ways = DAILY_WAYS if daily else HOURLY_WAYS
         case = {**{name: values[0] for name, values in ways.items()}, "calendar": calendar}
-        folder.mkdir()
-        _BASELINE[key] = march(litres(case, folder, daily=daily, method="fitted"))
+        _BASELINE[key] = march(sf.monthly_yield(opened(case, folder, daily=daily), DESIGN, method="fitted"))
     return _BASELINE[key]
 
 
@@ -303,12 +302,11 @@ def march(monthly: xr.Dataset) -> np.ndarray:
 @pytest.mark.parametrize(("daily", "case"), CASES, ids=[f"{'daily' if daily else 'hourly'}: {_name(case)}"
                                                         for daily, case in CASES])
 def test_the_litres_of_march_are_the_same(tmp_path, daily, case):
-    (tmp_path / "case").mkdir()
-    (tmp_path / "fit").mkdir()
-    by_rule = march(litres(case, tmp_path / "case", daily=daily, method="rule"))
+    weather = opened(case, tmp_path / "case", daily=daily)
+    by_rule = march(sf.monthly_yield(weather, DESIGN, method="rule"))
     rounding = 3e-4 if case["numbers"].startswith("int16") else 3e-6
     np.testing.assert_allclose(by_rule, march_by_hand(case["calendar"], daily), rtol=rounding)
-    by_fit = march(litres(case, tmp_path / "fit", daily=daily, method="fitted"))
+    by_fit = march(sf.monthly_yield(weather, DESIGN, method="fitted"))
     np.testing.assert_allclose(by_fit, baseline(daily, case["calendar"], tmp_path / "plain"), rtol=1e-3)
 
 
