@@ -141,20 +141,17 @@ def _counted(weather: xr.Dataset, table: Mapping[str, Quantity]) -> xr.Dataset:
     """Weather with what is small and negative, and what is missing, counted in each cell."""
     counted = weather
     for name in (name for name in table if name in weather.data_vars and "time" in weather[name].dims):
-        floor = _NOISE_FLOOR.get(name)
         values = weather[name].transpose("time", ...)
-        rows = cell_counts(values, partial(_count_block, noise=floor is not None), ("clipped", "missing"))
+        kinds = ("missing", "clipped") if name in _NOISE_FLOOR else ("missing",)
+        rows = cell_counts(values, partial(_count_block, kinds=kinds), kinds)
         counted = with_counts(counted, name, {**rows, "values": values.sizes["time"]})
     return counted
 
 
-def _count_block(block: NDArray[Any], *, noise: bool) -> NDArray[np.int64]:
-    counts = np.zeros((2, *block.shape[1:]), dtype=np.int64)
-    if noise:
-        with np.errstate(invalid="ignore"):
-            counts[0] = np.count_nonzero(block < 0.0, axis=0)
-    counts[1] = np.count_nonzero(np.isnan(block), axis=0)
-    return counts
+def _count_block(block: NDArray[Any], *, kinds: tuple[str, ...]) -> NDArray[np.int64]:
+    with np.errstate(invalid="ignore"):
+        found = [np.isnan(block) if kind == "missing" else block < 0.0 for kind in kinds]
+    return np.stack([np.count_nonzero(one, axis=0) for one in found]).astype(np.int64)
 
 
 def _check_bounds(values: xr.DataArray, quantity: Quantity, *, where: str) -> tuple[xr.DataArray, int]:

@@ -112,7 +112,7 @@ def _month_sums(
         new_axes={"o": len(names) + 1, "m": len(starts)}, concatenate=True, dtype=np.float64,
         meta=np.empty((0,) * (arrays[0].ndim + 1)),
     )
-    counts = daily[COUNTS].data if COUNTS in daily else np.empty(0)
+    counts = daily[COUNTS].transpose(COUNT, ...).data if COUNTS in daily else np.empty(0)
     sums, counted = compute(stacked, counts, scheduler="threads")
     return dict(zip([*names, "count"], sums, strict=True)), counted
 
