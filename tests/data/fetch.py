@@ -44,6 +44,7 @@ FILES = {
     "psm4_miami.csv": ("pvdeg", "0.7.4", "pvdeg/data", "b86da2298d889eff"),
     "psm4_nyc.csv": ("pvdeg", "0.7.4", "pvdeg/data", "02027e69b5548ad8"),
     "era5-single-level-scalar-time.grib": ("cfgrib", "0.9.15.1", "tests/sample-data", "e4dd858087fdb3ed"),
+    "era5-levels-corrupted.grib": ("cfgrib", "0.9.15.1", "tests/sample-data", "ca7c8b57ecea1aa9"),
     "reduced_gg.grib": ("cfgrib", "0.9.15.1", "tests/sample-data", "f9306b3fdc89c640"),
     "hyderabad_climate.txt": ("aquacrop", "3.1.0", "aquacrop/data", "a1b25ef9b4982ffd"),
     "tunis_climate.txt": ("aquacrop", "3.1.0", "aquacrop/data", "5da8ee184e107ba1"),

@@ -137,7 +137,7 @@ def test_a_sound_file_gives_frozen_settings_with_defaults(folder):
 def test_each_fault_names_its_line_key_and_cure(folder, lines, expected):
     assert expected in faults(folder, SOUND + lines + "\n")
 
-FURTHER_KINDS = "'netcdf', 'monthly-means', 'station-table'"
+FURTHER_KINDS = "'netcdf', 'zarr', 'grib', 'monthly-means', 'station-table'"
 
 
 @pytest.mark.parametrize(

@@ -196,7 +196,7 @@ def describe_inputs(paths: Iterable[str | Path], base: str | Path | None = None)
 
 
 def digest_file(path: str | Path) -> str:
-    """SHA-256 of a file's bytes.
+    """SHA-256 of a file's bytes; of a folder, such as a Zarr store, over the names and bytes of what is inside.
 
     Examples
     --------
@@ -206,8 +206,25 @@ def digest_file(path: str | Path) -> str:
     ...     digest_file(Path(folder, "a"))[:8]
     'ba7816bf'
     """
-    with Path(path).open("rb") as file:
-        return hashlib.file_digest(file, "sha256").hexdigest()
+    if Path(path).is_dir():
+        inside = hashlib.sha256()
+        for name, file in _files_inside(Path(path)):
+            inside.update(f"{name}\0{digest_file(file)}\n".encode())
+        return inside.hexdigest()
+    with Path(path).open("rb") as stream:
+        return hashlib.file_digest(stream, "sha256").hexdigest()
+
+
+def size_of(path: str | Path) -> int:
+    """Bytes of a file, or of all files inside a folder."""
+    if Path(path).is_dir():
+        return sum(file.stat().st_size for _, file in _files_inside(Path(path)))
+    return Path(path).stat().st_size
+
+
+def _files_inside(folder: Path) -> list[tuple[str, Path]]:
+    """Files below a folder by their names inside it, sorted."""
+    return sorted((file.relative_to(folder).as_posix(), file) for file in folder.rglob("*") if file.is_file())
 
 
 def digest_dataset(dataset: xr.Dataset) -> str:

@@ -90,14 +90,21 @@ def find_files(given: str, folder: Path) -> InputFiles:
     as it is.
     """
     path = _locate(given, folder)
+    if _is_store(path):
+        return InputFiles(given, (path,))
     if not _GLOB.search(given) or path.exists():
         return InputFiles(given, (find_file(given, folder).path,))
     found = glob.glob(str(path), recursive=True)  # noqa: PTH207 (Path.glob takes no absolute pattern)
     matches = sorted(Path(match) for match in found)
-    files = tuple(match for match in matches if match.is_file())
+    files = tuple(match for match in matches if match.is_file() or _is_store(match))
     if not files:
         raise refuse(f"no file matches '{harmless(given)}'{_nearest_folder(path, given, folder)}")
     return InputFiles(given, files)
+
+
+def _is_store(path: Path) -> bool:
+    """Whether a folder is a Zarr store, which is one thing like a file."""
+    return path.suffix == ".zarr" and path.is_dir()
 
 
 def _locate(given: str, folder: Path) -> Path:

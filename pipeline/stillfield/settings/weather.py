@@ -138,10 +138,9 @@ class MappedWeather(FileWeather):
         }
 
 
-class NetcdfWeather(MappedWeather):
-    """Gridded weather from NetCDF files."""
+class SeriesWeather(MappedWeather):
+    """What the containers of series on grids or of stations share."""
 
-    kind: Literal["netcdf"]
     day_clock: Annotated[str, Field(pattern=r"^(local|UTC([+-][0-9]{1,2}(:[0-9]{2})?)?)$")] | None = Field(
         None, description="Clock by which the days of daily files were cut: 'UTC', 'local', or an offset like 'UTC+8'"
     )
@@ -149,6 +148,24 @@ class NetcdfWeather(MappedWeather):
     def options(self) -> dict[str, Any]:
         """Arguments of the source beside the files."""
         return {**super().options(), "day_clock": self.day_clock}
+
+
+class NetcdfWeather(SeriesWeather):
+    """Gridded weather from NetCDF files."""
+
+    kind: Literal["netcdf"]
+
+
+class ZarrWeather(SeriesWeather):
+    """Gridded weather from Zarr stores; needs the extra 'zarr'."""
+
+    kind: Literal["zarr"]
+
+
+class GribWeather(SeriesWeather):
+    """Gridded weather from GRIB files; needs the extra 'grib'."""
+
+    kind: Literal["grib"]
 
 
 class TabularWeather(MappedWeather):
@@ -236,6 +253,7 @@ class SyntheticWeather(Group):
 
 
 Weather = Annotated[
-    SyntheticWeather | TypicalYearWeather | NetcdfWeather | MonthlyMeansWeather | StationTableWeather,
+    SyntheticWeather | TypicalYearWeather | NetcdfWeather | ZarrWeather | GribWeather | MonthlyMeansWeather
+    | StationTableWeather,
     Field(discriminator="kind", description="Where the weather comes from"),
 ]

@@ -17,6 +17,8 @@ from stillfield.errors import WeatherError
 KINDS = {
     "typical-year": ("stillfield.sources.typical_year", "open_typical_year"),
     "netcdf": ("stillfield.sources.netcdf", "open_netcdf"),
+    "zarr": ("stillfield.sources.stores", "open_zarr"),
+    "grib": ("stillfield.sources.stores", "open_grib"),
     "monthly-means": ("stillfield.sources.monthly_means", "open_monthly_means"),
     "station-table": ("stillfield.sources.station_table", "open_station_table"),
     "synthetic": ("stillfield.sources.synthetic", "SyntheticSource"),
@@ -127,7 +129,7 @@ def guess_kind(files: Sequence[str | Path]) -> str:
     Returns
     -------
     str
-        'netcdf' or 'typical-year'.
+        'netcdf', 'zarr', 'grib' or 'typical-year'; monthly means and station tables have to be named.
 
     Raises
     ------
@@ -143,9 +145,13 @@ def guess_kind(files: Sequence[str | Path]) -> str:
     from stillfield.sources.year_formats import recognise
 
     first = locate([str(name) for name in files])[0]
+    if first.is_dir():
+        return "zarr"
     with first.open("rb") as stream:
         head = stream.read(4000)
     if head.startswith((b"CDF", b"\x89HDF")):
         return "netcdf"
+    if head.startswith(b"GRIB"):
+        return "grib"
     recognise(head, where=str(first))
     return "typical-year"

@@ -30,6 +30,9 @@ def prove_whole(path: Path) -> None:
     WeatherError
         If the file is empty, a web page, GRIB, another format, or shorter than its header promises.
     """
+    if path.is_dir():
+        raise WeatherError("this is a folder, the form of a Zarr store", where=str(path), wanted="NetCDF",
+                           cure="The kind of a store is 'zarr'; state weather.kind.")
     size = path.stat().st_size
     with path.open("rb") as stream:
         head = stream.read(512)
@@ -62,7 +65,8 @@ def _foreign(path: Path, head: bytes) -> WeatherError:
             got=repr(head[:40].decode("latin-1")), wanted="NetCDF", cure="Download the data again.",
         )
     if head.startswith(b"GRIB"):
-        return WeatherError("this is a GRIB file", where=where, wanted="NetCDF", cure="Convert it to NetCDF.")
+        return WeatherError("this is a GRIB file", where=where, wanted="NetCDF",
+                            cure="Its kind is 'grib'; state weather.kind.")
     if head.startswith((b"PK", b"\x1f\x8b")):
         return WeatherError("this is an archive", where=where, wanted="NetCDF", cure="Unpack it.")
     return WeatherError("not a NetCDF file", where=where, got=f"first bytes {head[:8]!r}",

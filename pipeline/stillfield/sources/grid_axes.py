@@ -1,8 +1,9 @@
 """Axes of gridded files, recognised by CF attributes and brought into one form.
 
 Canonical: latitude ascending; longitude ascending within -180..180 (`region.run_on` puts the columns of a box
-across the antimeridian side by side in the end), a repeated meridian dropped; values rounded to a millionth of a degree, so that single and double precision name the same cell; time the start
-of each interval, in the file's own calendar.
+across the antimeridian side by side in the end), a repeated meridian dropped; values rounded to a millionth of a
+degree, so that single and double precision name the same cell; time the start of each interval, in the file's own
+calendar.
 """
 
 from __future__ import annotations

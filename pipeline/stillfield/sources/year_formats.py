@@ -86,7 +86,7 @@ _SIGNS: tuple[tuple[str, str], ...] = (
 _FOREIGN: tuple[tuple[bytes, str], ...] = (
     (b"\x89HDF", "a NetCDF-4 or HDF5 file; use the source kind 'netcdf'"),
     (b"CDF", "a NetCDF file; use the source kind 'netcdf'"),
-    (b"GRIB", "a GRIB file; convert it to NetCDF and use the source kind 'netcdf'"),
+    (b"GRIB", "a GRIB file; its kind is 'grib'"),
     (b"PK", "a ZIP archive; unpack it"),
     (b"\x1f\x8b", "a gzip archive; unpack it"),
     (b"time(UTC)", "a PVGIS table whose head with latitude and longitude was cut off; get it again whole"),

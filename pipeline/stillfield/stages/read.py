@@ -9,7 +9,7 @@ from typing import Any
 
 import xarray as xr
 
-from stillfield.products.manifest import digest_file, portable_name
+from stillfield.products.manifest import digest_file, portable_name, size_of
 from stillfield.sources import open_source
 from stillfield.sources.locate import locate
 from stillfield.sources.places import read_places
@@ -86,13 +86,13 @@ def describe_inputs(files: Iterable[str], base: Path) -> dict[str, dict[str, Any
         while told in found:
             number += 1
             told = f"{shown} ({number})"
-        found[told] = {"sha256": digest_file(path), "bytes": path.stat().st_size}
+        found[told] = {"sha256": digest_file(path), "bytes": size_of(path)}
     return found
 
 
 def _told(name: str, base: Path) -> str:
     """`name` counted from `base`, wherever the program was started; names inside packages as they are."""
-    if not Path(name).is_file():
+    if not Path(name).exists():
         return name
     if Path(name).is_absolute():
         return portable_name(name, base.absolute())
