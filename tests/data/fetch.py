@@ -46,6 +46,17 @@ FILES = {
     "era5-single-level-scalar-time.grib": ("cfgrib", "0.9.15.1", "tests/sample-data", "e4dd858087fdb3ed"),
     "era5-levels-corrupted.grib": ("cfgrib", "0.9.15.1", "tests/sample-data", "ca7c8b57ecea1aa9"),
     "reduced_gg.grib": ("cfgrib", "0.9.15.1", "tests/sample-data", "f9306b3fdc89c640"),
+    "era5_2t_1.nc": ("earthkit-data", "1.3.0", "tests/data", "ead2168f8a444743"),
+    "era5_2t_2.nc": ("earthkit-data", "1.3.0", "tests/data", "4bd87d431a08c6b1"),
+    "test_single.nc": ("earthkit-data", "1.3.0", "tests/data", "a0b08fd691aa72e3"),
+    "cordex.nc": ("earthkit-data", "1.3.0", "tests/data", "18226cc0ee3667a4"),
+    "era5_example_downloaded_raw.nc": (
+        "ecmwf-models", "0.11.2", "tests/ecmwf_models-test-data/download", "c3de0b7ece864357"),
+    "landmask_0.25_0.25.nc": (
+        "ecmwf-models", "0.11.2", "src/ecmwf_models/era5/land_definition_files", "b46052c36e429acc"),
+    "wgust_era5.nc": ("metview", "1.16.2", "examples", "399a03d0085ea756"),
+    "distributed_pvgis_weather.nc": ("pvdeg", "0.7.4", "tests/data", "162e3dff30854368"),
+    "summit-weather.nc": ("pvdeg", "0.7.4", "tests/data", "fe0c90248d5709dd"),
     "hyderabad_climate.txt": ("aquacrop", "3.1.0", "aquacrop/data", "a1b25ef9b4982ffd"),
     "tunis_climate.txt": ("aquacrop", "3.1.0", "aquacrop/data", "5da8ee184e107ba1"),
 }
@@ -54,6 +65,8 @@ FILES = {
 WHEEL_FILES = {
     "merra2_rad3x3_2011-2015_pdfs_land_prox.npz": (
         "gsee-climate-data", "1.0.0", "gsee_climate_data/data", "f4719cdebcb6fadc"),
+    "A1B_north_america.nc": ("iris-sample-data", "2.5.2", "iris_sample_data/sample_data", "5f728a78bfc2d250"),
+    "HadISST1_SST_update.nc": ("cartopy", "0.26.0", "cartopy/data/netcdf", "51c326c9816e93ec"),
     "8443_ronda.csv": ("pcse", "6.0.13", "pcse/tests/test_data", "ba3528598e237fab"),
     "NL1.976": ("pcse", "6.0.13", "pcse/tests/test_data", "10e56dd70c35e9bf"),
     "NL1.977": ("pcse", "6.0.13", "pcse/tests/test_data", "8d08073c6d06a2e9"),
@@ -61,6 +74,15 @@ WHEEL_FILES = {
 }
 #: File name -> (Debian package, path inside it, first 16 hex digits of the SHA-256).
 DEBIAN_FILES = {
+    "tas_rectilinear_grid_2D.nc": ("libncarg-data", "usr/share/ncarg/data/nug", "9e2fb9b614462a2d"),
+    "tas_rotated_grid_EUR11.nc": ("libncarg-data", "usr/share/ncarg/data/nug", "9ebb5072aecc0085"),
+    "atm_phy_mag0004_1985.nc": ("libncarg-data", "usr/share/ncarg/data/nug", "ec3ded8e8da6baf5"),
+    "sftlf_mod1_rectilinear_grid_2D.nc": ("libncarg-data", "usr/share/ncarg/data/nug", "208b84720f1308ed"),
+    "landsea.nc": ("libncarg-data", "usr/share/ncarg/data/cdf", "d5c1618abe78a174"),
+    "hgt.nc": ("libncarg-data", "usr/share/ncarg/data/cdf", "c0c24281b5cbb7f3"),
+    "seam.nc": ("libncarg-data", "usr/share/ncarg/data/cdf", "3a0f6483da36e91e"),
+    "sst30e_netcdf.nc": ("libncarg-data", "usr/share/ncarg/data/cdf", "d5b8b1ba0e3587a1"),
+    "bcsd_obs_1999.nc": ("r-cran-stars", "usr/lib/R/site-library/stars/nc", "4457324cd44816c3"),
     "coads_climatology.cdf": ("ferret-datasets", "usr/share/ferret-vis/data", "b94f55034d13d63f"),
 }
 
