@@ -191,6 +191,7 @@ def coasts(tmp_path_factory):
     sun.to_netcdf(path)
     weather = sf.open_weather(
         [path, fetched("coads_climatology.cdf")], "monthly-means", join_within_km=200,
+        region=sf.Box(south=-33, north=33, west=-120, east=130),
         variables={"temp_air": "AIRT", "specific_humidity": "SPEH", "wind_speed": {"name": "WSPD", "height_m": 10}},
     )
     return weather, sf.monthly_yield(weather, sf.load_still(STILL))

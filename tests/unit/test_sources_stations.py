@@ -311,3 +311,5 @@ def test_monthly_means_of_a_station(tmp_path, years):
     means = days.irradiation.groupby("time.month").mean("time").values[:, 0]
     np.testing.assert_allclose(means, 18 + np.arange(1, 13) / 10, rtol=1e-9)
     assert any("Column 'temp (C)' is read as temp_air" in line for line in days.attrs["conventions"])
+    told = '{"name": "temp (C)", "quantity": "temp_air", "units": "C", "how": "its heading"}'
+    assert told in days.attrs["recognised"]

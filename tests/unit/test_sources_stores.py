@@ -189,7 +189,7 @@ def test_real_grib_files():
         open_source("grib", [str(regular)]).open()
     with pytest.raises(WeatherError, match=r"rows and columns .*grid type reduced_gg"):
         open_source("grib", [str(reduced)]).open()
-    with pytest.raises(WeatherError, match="the file cannot be read .*Wrong message length"):
+    with pytest.raises(WeatherError, match=r"the file cannot be read .*Wrong message length"):
         open_source("grib", [str(fetched("era5-levels-corrupted.grib"))]).open()
 
 

@@ -78,13 +78,13 @@ def open_source(kind: str, files: Sequence[str | Path] = (), **options: Any) -> 
 
     Parameters
     ----------
-    kind : {'typical-year', 'netcdf', 'synthetic'}
-        What the files are.
+    kind : str
+        What the files are: a key of `KINDS`.
     files : sequence of str or Path
         Paths, patterns, or ``package:path`` for a file inside an installed package.
         For 'synthetic' the polygon file of the land, unless `land` is among the options.
     **options
-        Arguments of `typical_year.open_typical_year`, `netcdf.open_netcdf` or `synthetic.SyntheticSource`.
+        Arguments of the function or class in `KINDS`, for example `netcdf.open_netcdf`.
 
     Returns
     -------

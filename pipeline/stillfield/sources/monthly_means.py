@@ -85,7 +85,7 @@ def open_monthly_means(
         days = days_from_monthly(pieces, stations.choices, labels=[path.name for path in paths],
                                  available=stations.headings, radiation_from_temperature=radiation_from_temperature)
         said = [line for line in days.attrs["conventions"] if " is read as " not in line]
-        return days.assign_attrs(conventions=[*stations.notes, *said])
+        return days.assign_attrs(conventions=[*stations.notes, *said], recognised=stations.recognised)
     pieces = [piece for path in paths for piece in _pieces(path, choices)]
     names = dict.fromkeys(name for path in paths[:3] for name in _variable_names(path))
     return days_from_monthly(

@@ -19,7 +19,7 @@ from stillfield.errors import Fault, WeatherError
 from stillfield.sources.locate import locate
 from stillfield.sources.netcdf import weather_from_pieces
 from stillfield.sources.netcdf_pieces import take_pieces
-from stillfield.sources.recognise import Choice, read_mapping
+from stillfield.sources.recognise import Choice, Found, read_mapping
 from stillfield.sources.station_columns import Column, find_places, find_quantities, numbers, refuse_faults
 from stillfield.sources.station_rows import Rows, read_rows
 from stillfield.sources.station_sites import Site, positions, site_of_rows
@@ -60,12 +60,15 @@ class Stations:
     notes : list of str
     headings : str
         Columns there are, for errors.
+    recognised : list of str
+        What was recognised, as `recognise.Found.told` gives it.
     """
 
     weather: xr.Dataset
     choices: dict[str, Choice]
     notes: list[str]
     headings: str
+    recognised: list[str]
 
 
 def open_station_table(
@@ -109,7 +112,7 @@ def open_station_table(
     made = weather_from_pieces(pieces, stations.choices, labels=labels, available=lambda: stations.headings,
                                radiation_from_temperature=radiation_from_temperature, day_clock="local")
     said = [line for line in made.attrs["conventions"] if " is read as " not in line]
-    return made.assign_attrs(conventions=[*stations.notes, *notes, *said])
+    return made.assign_attrs(conventions=[*stations.notes, *notes, *said], recognised=stations.recognised)
 
 
 def where_of(paths: Sequence[Path]) -> str:
@@ -164,7 +167,11 @@ def read_stations(
     weather, said_choices = _laid_out(rows_of_all, known, placed, choices)
     told = [f"Column '{column.heading}' is read as {_NAMES.get(role, role)} by {column.how} (units "
             f"'{said_choices[role].units}')." for role, column in known.items()]
-    return Stations(weather, said_choices, [*told, *notes], listed)
+    recognised = [
+        Found(role, column.heading, said_choices[role].units, None, None, None, "", column.how).told(daily=True)
+        for role, column in known.items()
+    ]
+    return Stations(weather, said_choices, [*told, *notes], listed, recognised)
 
 
 def _one_table(
