@@ -98,7 +98,8 @@ def _find(weather: xr.Dataset, axis: str, *, where: str) -> str:
         raise WeatherError(
             f"no {axis} was found", where=where, got=", ".join(map(str, weather.variables))[:200],
             wanted=f"a coordinate with units 'degrees_{'north' if axis == 'latitude' else 'east'}' or called {axis}",
-            cure="Projected and unstructured grids have to be regridded to latitude and longitude first.",
+            cure="Projected and unstructured grids have to be regridded to latitude and longitude first; of "
+                 "stations the file must hold both.",
         )
     return on_data[0]
 

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import warnings
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass
 from math import prod
 from pathlib import Path
@@ -122,11 +124,20 @@ def open_one(path: Path) -> xr.Dataset:
         If the file cannot be opened.
     """
     try:
-        return xr.open_dataset(path, engine="netcdf4", decode_timedelta=False, cache=False)
+        with _odd_origin():
+            return xr.open_dataset(path, engine="netcdf4", decode_timedelta=False, cache=False)
     except Exception as fault:  # netCDF4, HDF5 and the time decoder each raise their own kinds
         raise WeatherError("the file cannot be read", where=str(path), got=" ".join(str(fault).split())[:160],
                            cure="It is broken or cut off, or its time axis is not CF; get it again or correct it.",
                            ) from fault
+
+
+@contextmanager
+def _odd_origin() -> Iterator[None]:
+    """Decode times "since 1-1-1" without a word: the year is meant, as CF has it."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", xr.SerializationWarning)
+        yield
 
 
 def _one_version(weather: xr.Dataset) -> tuple[xr.Dataset, tuple[str, ...]]:
@@ -184,7 +195,8 @@ def _time_of(weather: xr.Dataset, axes: Axes, found: Found, *, where: str) -> tu
     bounds = weather.get(bounds_name) if bounds_name else None
     if bounds is None or "time: point" in found.cell_methods or bounds.size != 2 * stamps.size:
         return stamps, None, 0.0
-    edges = bounds.values.reshape(-1, 2)
+    with _odd_origin():
+        edges = bounds.values.reshape(-1, 2)
     lengths = np.array([_hours(b - a) for a, b in edges])
     if lengths.min() <= 0.0:
         raise WeatherError("time bounds are empty or reversed", where=where,

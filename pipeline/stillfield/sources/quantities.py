@@ -80,7 +80,7 @@ def step_hours_of(joined: Joined) -> float:
     index = joined.values.indexes["time"]
     if len(index) < 2:
         if joined.placed == "bounds":
-            return float(joined.values.attrs["bounds_hours"])
+            return _of_bounds(joined)
         raise WeatherError("one time alone does not tell the time step", where=joined.where,
                            wanted="two times, or time bounds", cure="Give all files of the series together.")
     steps = np.asarray((index[1:] - index[:-1]).total_seconds()) / 3600.0
@@ -96,7 +96,20 @@ def step_hours_of(joined: Joined) -> float:
         raise WeatherError("the time steps are uneven", where=where,
                            got=f"{steps[odd]:g} h after {str(index[odd])[:16]}, elsewhere {least:g} h",
                            wanted="steps of 24 h or a whole part of it")
+    if joined.placed == "bounds" and not np.isclose(_of_bounds(joined), least):
+        raise WeatherError("a value stands for another span than the time step", where=joined.where,
+                           got=f"time bounds of {_of_bounds(joined):g} h every {least:g} h", wanted="bounds that meet",
+                           cure="Take a file of plain daily or hourly values, not running means or samples.")
     return least
+
+
+def _of_bounds(joined: Joined) -> float:
+    hours = float(joined.values.attrs["bounds_hours"])
+    if not _divides_day(hours):
+        raise WeatherError("this is neither daily nor hourly weather", where=joined.where,
+                           got=f"time bounds {hours / 24.0:g} days apart", wanted="daily or hourly steps",
+                           cure="The yield of a mean day is not the mean yield: get daily or hourly weather.")
+    return hours
 
 
 def _divides_day(hours: float) -> bool:
