@@ -120,7 +120,7 @@ def _find_time(weather: xr.Dataset, *, where: str) -> str:
                            wanted="one time axis", cure="Flatten the forecasts to one series first.")
     if "climatology" in time.attrs:
         raise WeatherError("this is a climatology, not a series of days or hours", where=where,
-                           cure="Use daily or hourly weather.")
+                           cure="Use daily or hourly weather, or kind 'monthly-means'.")
     decoded = np.issubdtype(time.dtype, np.datetime64) or (time.dtype == object and time.size > 0)
     if not decoded:
         raise WeatherError("the time axis is not in dates", where=where,

@@ -89,7 +89,7 @@ def step_hours_of(joined: Joined) -> float:
     if least > 24.0 * 27:
         raise WeatherError("this is monthly weather", where=where, got=f"steps of {least / 24:g} days",
                            wanted="daily or hourly steps",
-                           cure="The yield of a mean day is not the mean yield: get daily or hourly weather.")
+                           cure="The yield of a mean day is not the mean yield: kind 'monthly-means' makes days.")
     whole = steps / least
     if least <= 0.0 or not np.allclose(whole, np.round(whole), atol=1e-3) or not _divides_day(least):
         odd = int(np.argmax(np.abs(whole - np.round(whole))))
@@ -108,7 +108,7 @@ def _of_bounds(joined: Joined) -> float:
     if not _divides_day(hours):
         raise WeatherError("this is neither daily nor hourly weather", where=joined.where,
                            got=f"time bounds {hours / 24.0:g} days apart", wanted="daily or hourly steps",
-                           cure="The yield of a mean day is not the mean yield: get daily or hourly weather.")
+                           cure="The yield of a mean day is not the mean yield: kind 'monthly-means' makes days.")
     return hours
 
 
