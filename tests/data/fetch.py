@@ -40,6 +40,10 @@ FILES = {
     "ESP_MD_Madrid-Barajas-Suarez.AP.082210_TMYx.2011-2025.epw": (
         "openbes", "0.3.3", "src/openbes/simulations/epw_data", "d52f4176f826c61c"),
     "USA_Denver_725650TYCST.epw": ("openbes", "0.3.3", "src/openbes/simulations/epw_data", "b3d6d975b4f02031"),
+    "GBR_ENG_London-Heathrow.Intl.AP.037720_TMYx.2011-2025.epw": (
+        "openbes", "0.3.3", "src/openbes/simulations/epw_data", "619ab8053711cd30"),
+    "UK_Oxford_GBR_ENG_RAF.Benson.036580_TMYx.2007-2021.epw": (
+        "openbes", "0.3.3", "src/openbes/simulations/epw_data", "6899e2286c02c02b"),
     "psm4_golden.csv": ("pvdeg", "0.7.4", "pvdeg/data", "8bc43458a9ac6738"),
     "psm4_miami.csv": ("pvdeg", "0.7.4", "pvdeg/data", "b86da2298d889eff"),
     "psm4_nyc.csv": ("pvdeg", "0.7.4", "pvdeg/data", "02027e69b5548ad8"),
