@@ -125,7 +125,17 @@ def check_raster(weather: xr.Dataset) -> None:
 
 
 def makes_rasters(weather: xr.Dataset) -> bool:
-    """Whether `write_results` writes GeoTIFF files of these cells: a grid of even spacing."""
+    """Whether `write_results` writes GeoTIFF files of these cells: a grid of even spacing.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        Weather or results on cells or sites.
+
+    Returns
+    -------
+    bool
+    """
     return is_grid(weather) and is_even(weather)
 
 
