@@ -182,28 +182,39 @@ def _block_yield(
     method: Method,
     rule: ConstantEfficiency,
 ) -> NDArray[np.float32]:
-    """Work one block of cells over all days; the last three arrays are irradiation, latitude and clock."""
+    """Work one block of cells over all days; the last three arrays are irradiation, latitude and clock.
+
+    Cells without any sunshine, the sea of most grids, cost nothing.
+    """
     *weather, irradiation, latitude, clock = arrays
     shape = irradiation.shape
+    sunshine = irradiation.reshape(shape[0], -1)
+    cells = np.flatnonzero(np.isfinite(sunshine).any(axis=0))
+    out = np.full((len(_OUTPUTS) + len(_FLAGS), shape[0], latitude.size), np.nan, dtype=np.float32)
+    out[len(_OUTPUTS):] = 0.0
+    if cells.size == 0:
+        return out.reshape(out.shape[0], *shape)
+    some = slice(None) if cells.size == latitude.size else cells
     steps = 1 if method.resolution == "daily" else weather[0].shape[1]
     block = Block(
         weather={
-            name: values.reshape(shape[0] * steps, -1) for name, values in zip(names, weather, strict=True)
+            name: values.reshape(shape[0] * steps, -1)[:, some]
+            for name, values in zip(names, weather, strict=True)
         },
-        latitude=latitude.reshape(-1),
+        latitude=latitude.reshape(-1)[some],
         day_of_year=day_of_year,
         steps_per_day=steps,
-        clock_to_solar_hours=clock.reshape(-1),
+        clock_to_solar_hours=clock.reshape(-1)[some],
         cyclic=cyclic,
     )
-    out = np.empty((len(_OUTPUTS) + len(_FLAGS), shape[0], latitude.size), dtype=np.float32)
     conditions = (still.condition, still.condition_low, still.condition_high)
     central, *_ = band = method.daily_yields(block, still, conditions)
     for row, one in enumerate(band):
-        out[row] = one.litres
-    out[3] = yield_from_efficiency(irradiation.reshape(shape[0], -1), rule.efficiency)
-    out[4] = 0.0 if central.frost is None else central.frost
-    out[5] = 0.0 if central.outside is None else central.outside
+        out[row][:, some] = one.litres
+    out[3] = yield_from_efficiency(sunshine, rule.efficiency)
+    for row, flags in ((4, central.frost), (5, central.outside)):
+        if flags is not None:
+            out[row][:, some] = flags
     return out.reshape(out.shape[0], *shape)
 
 
