@@ -83,9 +83,9 @@ def test_edge_days_are_missing_and_counted() -> None:
     assert int(greenwich.notnull().sum()) == 10
     assert int(east.notnull().sum()) == 9
     counted = totals(prepared.daily["count"].values, prepared.daily["counts"].values)["days"]
-    # Days reach from the first local day that is whole anywhere to the last: 10 of UTC. A shift of -12, -10, -5,
-    # 0, 4, 10 or 12 h leaves the columns away from Greenwich one of them in part; two rows of cells.
-    assert counted == {"edge": 2 * 6, "incomplete": 0, "values": 10 * 14}
+    # 10 UTC days, shifted by -12, -10, -5, 0, 4, 10 or 12 h: each column away from Greenwich holds 9 local days whole
+    # and one in part at either end; two rows of cells.
+    assert counted == {"edge": 2 * 6 * 2, "incomplete": 0, "values": 2 * (10 + 6 * 11)}
 
 
 @pytest.mark.parametrize("calendar", ["noleap", "360_day", "all_leap", "proleptic_gregorian"])

@@ -22,6 +22,7 @@ from stillfield.vocabulary import DAY_WEATHER, STEP_HOURS_DAILY, STEP_WEATHER
 
 MJ_PER_WH = 3600.0 / 1e6
 MIDSTEP_MINUTES_PER_HOUR = 30.0
+_SPANS = ("whole_days", "edge_days")
 
 
 @dataclass(frozen=True)
@@ -68,11 +69,12 @@ def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0, fill_hours: f
     if step_hours == STEP_HOURS_DAILY:
         return Prepared(_pass_daily(weather))
     steps = align_to_local_days(weather, step_hours, fill_hours=fill_hours)
-    edge = steps["edge_days_of_cell"].reset_coords(drop=True)
-    steps = steps.drop_vars("edge_days_of_cell")
+    whole, edge = (steps[name].reset_coords(drop=True) for name in _SPANS)
+    steps = steps.drop_vars(_SPANS)
     daily = _daily_from_steps(steps.drop_vars(COUNTS, errors="ignore"), step_hours, min_valid_hours)
-    gaps = cell_counts(daily["irradiation"], _count_missing, ("missing",))["missing"] - edge
-    lost: dict[str, xr.DataArray | int] = {"edge": edge, "incomplete": gaps.clip(min=0), "values": daily.sizes["time"]}
+    beyond = daily.sizes["time"] - whole
+    gaps = cell_counts(daily["irradiation"], _count_missing, ("missing",))["missing"] - beyond
+    lost: dict[str, xr.DataArray | int] = {"edge": edge, "incomplete": gaps.clip(min=0), "values": whole + edge}
     if COUNTS in steps:
         daily = daily.assign({COUNTS: steps[COUNTS]})
     return Prepared(with_counts(daily, "days", lost), steps.drop_vars(COUNTS, errors="ignore"))
@@ -107,8 +109,9 @@ def align_to_local_days(weather: xr.Dataset, step_hours: float, *, fill_hours: f
     Returns
     -------
     xarray.Dataset
-        Every day that is whole for at least one cell; steps before or after the record are NaN. Coordinate
-        ``edge_days_of_cell`` tells how many of the days of a cell the record does not hold whole.
+        Every day that is whole for at least one cell; steps before or after the record are NaN. Coordinates
+        ``whole_days`` and ``edge_days`` tell how many local days of a cell the record holds whole, and how many
+        it begins or ends within.
 
     Raises
     ------
@@ -131,19 +134,20 @@ def align_to_local_days(weather: xr.Dataset, step_hours: float, *, fill_hours: f
     starts = first_step - np.round(shift_hours / step_hours).astype(int)
     aligned = _take_windows(steps, starts, len(days) * per_day)
     aligned = _fold_days(aligned, days, per_day)
-    edge = _edge_days(starts, len(days), per_day, steps.sizes["time"])
     like = xr.zeros_like(residual_hours, dtype=np.int64)
-    along = xr.DataArray(edge, dims=weather["longitude"].dims)
-    aligned = aligned.assign_coords(clock_to_solar_hours=residual_hours, edge_days_of_cell=like + along)
+    spans = zip(_SPANS, _days_held(-starts, per_day, steps.sizes["time"]), strict=True)
+    held = {name: like + xr.DataArray(days_held, dims=weather["longitude"].dims) for name, days_held in spans}
+    aligned = aligned.assign_coords({"clock_to_solar_hours": residual_hours, **held})
     aligned = aligned.assign({} if counts is None else {COUNTS: counts})
     return aligned.assign_attrs(weather.attrs)
 
 
-def _edge_days(starts: NDArray[np.int_], days: int, per_day: int, length: int) -> NDArray[np.int_]:
-    """Days of each column or site of which the record lacks the beginning or the end."""
-    first = np.ceil(np.maximum(-starts, 0) / per_day)
-    last = np.ceil(np.maximum(starts + days * per_day - length, 0) / per_day)
-    return np.asarray(np.minimum(first + last, days), dtype=np.int_)
+def _days_held(first: NDArray[np.int_], per_day: int, length: int) -> tuple[NDArray[np.int_], NDArray[np.int_]]:
+    """Days that a record of `length` steps from step `first` after some midnight holds whole, and those it cuts."""
+    start, end = first / per_day, (first + length) / per_day
+    whole = np.maximum(np.floor(end) - np.ceil(start), 0.0)
+    touched = np.ceil(end) - np.floor(start)
+    return whole.astype(np.int_), (touched - whole).astype(np.int_)
 
 
 def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
