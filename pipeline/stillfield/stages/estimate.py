@@ -17,7 +17,7 @@ from stillfield.methods.baselines import ConstantEfficiency
 from stillfield.physics.rule import yield_from_efficiency
 from stillfield.physics.still import Still
 from stillfield.sources.calendars import solar_day_of_year
-from stillfield.sources.tally import COUNTS
+from stillfield.sources.tally import COUNT, COUNTS
 from stillfield.vocabulary import YIELD
 
 #: Cells worked on at a time: big enough for long inner loops, small enough that a block stays near the cache.
@@ -231,4 +231,12 @@ def _labelled(stacked: Any, daily: xr.Dataset, space: list[Any], still: Still, m
         variables[name] = (dims, stacked[row], {"units": "1", "long_name": meaning})
     attrs = {**daily.attrs, "still": still.name, "condition": still.condition, "method": method.name}
     result = xr.Dataset(variables, coords=coords, attrs=attrs)
-    return result.assign({COUNTS: daily[COUNTS]}) if COUNTS in daily else result
+    return result.assign({COUNTS: _counts_of_use(daily, method)}) if COUNTS in daily else result
+
+
+def _counts_of_use(daily: xr.Dataset, method: Method) -> xr.DataArray:
+    """Counts of the weather this method takes: what it does not take need not be read for them."""
+    taken = {*method.needs, *method.uses, "irradiation", "ghi", "days"}
+    taken |= {"wind_u", "wind_v"} if "wind_speed" in taken else set()
+    quantities = [str(label).partition(":")[0] for label in daily[COUNT].values]
+    return daily[COUNTS].isel({COUNT: [row for row, name in enumerate(quantities) if name in taken]})
