@@ -147,6 +147,19 @@ def test_memory_follows_its_closed_form() -> None:
     np.testing.assert_allclose(out, expected, atol=1e-12)
 
 
+@pytest.mark.parametrize("cyclic", [False, True])
+def test_memory_is_the_same_whether_or_not_another_cell_has_a_gap(cyclic: bool) -> None:
+    random = np.random.default_rng(2)
+    values = random.uniform(0.0, 30.0, (90, 3))
+    holed = values.copy()
+    holed[40, 2] = np.nan
+    whole = remembered(values, 0.4, cyclic=cyclic)
+    torn = remembered(holed, 0.4, cyclic=cyclic)
+    np.testing.assert_allclose(torn[:, :2], whole[:, :2], rtol=1e-12)
+    np.testing.assert_allclose(torn[:41, 2], whole[:41, 2], rtol=1e-12)
+    assert torn[41, 2] == torn[40, 2]
+
+
 def test_a_cyclic_year_has_no_beginning() -> None:
     correlation = fit_for(still_of("deep-basin")).correlations["daily"]
     day = some_days(365, 2)

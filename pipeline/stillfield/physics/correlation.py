@@ -35,6 +35,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.signal import lfilter
 
 Array = NDArray[np.floating[Any]]
 
@@ -282,17 +283,23 @@ def remembered(values: Array, memory: float, *, cyclic: bool) -> Array:
     >>> remembered(np.array([[1.0], [3.0], [3.0]]), 0.5, cyclic=False).ravel()
     array([1., 1., 2.])
     """
-    out = np.empty_like(values)
     # Before the first day the basin remembers that day, or where it is missing the first that is not.
     first = np.argmax(np.isfinite(values), axis=0)
     state = np.nan_to_num(np.take_along_axis(values, first[None], axis=0)[0])
-    warm_up = values[-30:] if cyclic else values[:0]
-    for today in warm_up:
-        state = np.where(np.isfinite(today), memory * state + (1.0 - memory) * today, state)
-    for index, today in enumerate(values):
+    run = np.concatenate([values[-_WARM_UP_DAYS:], values]) if cyclic else values
+    if np.isfinite(run).all():
+        faded, _ = lfilter([1.0 - memory], [1.0, -memory], run, axis=0, zi=memory * state[None])
+        before = np.concatenate([state[None], faded[:-1]])
+        return np.asarray(before[len(run) - len(values):])
+    out = np.empty_like(run)
+    for index, today in enumerate(run):
         out[index] = state
         state = np.where(np.isfinite(today), memory * state + (1.0 - memory) * today, state)
-    return out
+    return out[len(run) - len(values):]
+
+
+#: Days at the end of a typical year that are run through before its first.
+_WARM_UP_DAYS = 30
 
 
 def _tomorrow(values: Array, *, cyclic: bool) -> Array:
