@@ -44,7 +44,7 @@ def make_weather(folder: Path, years: int, side: int) -> None:
         )
         chunks = (73, side // 2, side // 2)
         stored = {"zlib": True, "complevel": 4, "chunksizes": chunks}
-        data.to_netcdf(folder / f"{year}.nc", encoding={name: stored for name in data})
+        data.to_netcdf(folder / f"{year}.nc", encoding=dict.fromkeys(data, stored))
 
 
 def bare(folder: str) -> None:
