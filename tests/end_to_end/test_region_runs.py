@@ -77,8 +77,8 @@ def test_the_plan_tells_the_region(folder):
     ("region", "fault"),
     [
         ({"polygon": "aera.geojson"}, "region.polygon: no such file 'aera.geojson' (did you mean 'area.geojson'?)"),
-        ({"mask": {"file": "land.nc", "at_laest": 0.5}}, "region.mask.at_laest: unknown key (did you mean 'at_least'?)"),
-        ({"mask": {"file": "land.nc", "at_least": 50}}, "region.mask.at_least: should be above 0 and at most 1 (got 50)"),
+        ({"mask": {"file": "land.nc", "at_laest": 1}}, "region.mask.at_laest: unknown key (did you mean 'at_least'?)"),
+        ({"mask": {"file": "land.nc", "at_least": 50}}, "region.mask.at_least: should be above 0 and at most 1 (got 5"),
         ({"polygons": "area.geojson"}, "region.polygons: unknown key (did you mean 'polygon'?)"),
         ({"south": 1.0, "north": 2.0}, "region: a box has four edges; west, east are missing"),
         ({"south": 3.0, "north": 2.0, "west": 1.0, "east": 2.0}, "region: south should lie south of north"),

@@ -28,6 +28,10 @@ SENTENCES = {
     "filled": "{n} of {of} values of {name} were filled across short gaps.",
     "night": "{n} of {of} values of {name} were missing while the sun was down and set to 0.",
     "edge": "{n} of {of} cell-days were dropped: the record begins or ends within the local day.",
+    "dull": "WARNING: at {n} of {of} cells the sunshine of the whole record is less than 0.2 of what arrives outside "
+            "the atmosphere. No place is so dull: check the units and what the sunshine `means`.",
+    "bright": "WARNING: at {n} of {of} cells the sunshine of the whole record is more than 0.85 of what arrives "
+              "outside the atmosphere. No place is so bright: check the units and what the sunshine `means`.",
     "incomplete": "{n} of {of} cell-days have a gap in their sunshine and were dropped.",
 }
 _OF = "values"

@@ -236,7 +236,7 @@ def _labelled(stacked: Any, daily: xr.Dataset, space: list[Any], still: Still, m
 
 def _counts_of_use(daily: xr.Dataset, method: Method) -> xr.DataArray:
     """Counts of the weather this method takes: what it does not take need not be read for them."""
-    taken = {*method.needs, *method.uses, "irradiation", "ghi", "days"}
+    taken = {*method.needs, *method.uses, "irradiation", "ghi", "days", "clearness"}
     taken |= {"wind_u", "wind_v"} if "wind_speed" in taken else set()
     quantities = [str(label).partition(":")[0] for label in daily[COUNT].values]
     return daily[COUNTS].isel({COUNT: [row for row, name in enumerate(quantities) if name in taken]})

@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
 from stillfield.sources.gaps import fill_gaps
+from stillfield.sources.plausible import count_doubtful
 from stillfield.sources.tally import COUNTS, cell_counts, with_counts
 from stillfield.vocabulary import DAY_WEATHER, STEP_HOURS_DAILY, STEP_WEATHER
 
@@ -67,7 +68,7 @@ def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0, fill_hours: f
     """
     step_hours = float(weather.attrs["step_hours"])
     if step_hours == STEP_HOURS_DAILY:
-        return Prepared(_pass_daily(weather))
+        return Prepared(count_doubtful(_pass_daily(weather)))
     steps = align_to_local_days(weather, step_hours, fill_hours=fill_hours)
     whole, edge = (steps[name].reset_coords(drop=True) for name in _SPANS)
     steps = steps.drop_vars(_SPANS)
@@ -77,7 +78,8 @@ def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0, fill_hours: f
     lost: dict[str, xr.DataArray | int] = {"edge": edge, "incomplete": gaps.clip(min=0), "values": whole + edge}
     if COUNTS in steps:
         daily = daily.assign({COUNTS: steps[COUNTS]})
-    return Prepared(with_counts(daily, "days", lost), steps.drop_vars(COUNTS, errors="ignore"))
+    daily = count_doubtful(with_counts(daily, "days", lost))
+    return Prepared(daily, steps.drop_vars(COUNTS, errors="ignore"))
 
 
 def _count_missing(block: NDArray[Any]) -> NDArray[np.int64]:
