@@ -39,7 +39,7 @@ def test_records_out_of_range_are_counted_and_told(chunk):
 
 
 def test_short_records_and_low_suns_are_not_judged():
-    for weather in (daily(np.array([0.1]), days=19), daily(np.array([0.1]), days=20, latitude=-89.0)):
+    for weather in (daily(np.array([0.1]), days=19), daily(np.array([0.1]), days=20, latitude=89.0)):
         assert int(count_doubtful(weather)["counts"].sel(count="clearness:dull").sum()) == 0
     assert int(count_doubtful(daily(np.array([0.1]), days=20))["counts"].sel(count="clearness:dull").sum()) == 1
 
