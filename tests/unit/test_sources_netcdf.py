@@ -398,6 +398,37 @@ def test_values_outside_a_stated_range_are_missing(tmp_path):
     assert counts.missing == {"irradiation": 1}
 
 
+@pytest.mark.parametrize("own", [True, False])
+def test_a_valid_range_of_packed_files_is_unpacked_with_each_file(tmp_path, own):
+    """Written as packed numbers with each file's own scale, or in the unit of the values."""
+    values = TRUE.irradiation.copy()
+    values[0, 0, 0] = values[3, 2, 1] = 44.0  # beyond the valid 40, within what a gate would notice
+    for number, (part, scale) in enumerate(((slice(0, 2), 0.01), (slice(2, 4), 0.002))):
+        weather = grid(days(), rsds=(values, "MJ m-2")).isel(time=part)
+        limits = np.array([0, round((40.0 - 20.0) / scale)], "i2") if own else np.array([0.0, 40.0])
+        limits = np.array([round(-20.0 / scale), limits[1]], "i2") if own else limits
+        weather.rsds.attrs["valid_range"] = limits
+        weather.to_netcdf(tmp_path / f"v{number}.nc", encoding={"rsds": {
+            "dtype": "i2", "scale_factor": scale, "add_offset": 20.0, "_FillValue": np.int16(-32768)}})
+    found = open_netcdf([str(tmp_path / "v*.nc")]).compute()
+    assert bool(found.irradiation[0, 0, 0].isnull())
+    assert bool(found.irradiation[3, 2, 1].isnull())
+    assert int(found.irradiation.isnull().sum()) == 2
+    assert totals(found["count"].values, found["counts"].values)["irradiation"]["sentinel"] == 2
+
+
+def test_the_same_packed_limit_means_another_value_in_every_file(tmp_path):
+    for number, (part, scale) in enumerate(((slice(0, 2), 0.01), (slice(2, 4), 0.001))):
+        weather = grid(days(), rsds=(TRUE.irradiation, "MJ m-2")).isel(time=part)
+        weather.rsds.attrs["valid_max"] = np.int16(2000)  # 40 in the first file, 22 in the second
+        weather.to_netcdf(tmp_path / f"v{number}.nc", encoding={"rsds": {
+            "dtype": "i2", "scale_factor": scale, "add_offset": 20.0, "_FillValue": np.int16(-32768)}})
+    found = open_netcdf([str(tmp_path / "v*.nc")]).compute().irradiation
+    expected = np.where((TRUE.irradiation > 22.0) & (np.arange(DAYS) >= 2)[:, None, None], np.nan, TRUE.irradiation)
+    assert np.isnan(expected).any()
+    np.testing.assert_allclose(found, expected, atol=0.01)
+
+
 def _refused(tmp_path, weather: xr.Dataset, sentence: str, kind: type[WeatherError] = WeatherError, **said) -> None:
     folder = Path(tempfile.mkdtemp(dir=tmp_path))
     with pytest.raises(kind, match=sentence):

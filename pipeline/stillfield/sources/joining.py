@@ -68,23 +68,28 @@ def join_pieces(pieces: Sequence[Piece]) -> Series:
     parts = [first.values, *(snapped(other.values, first.values) for other in ordered[1:])]
     for other, values in zip(ordered[1:], parts[1:], strict=True):
         _check_alike(first, other, values)
-    joined = first.values if len(ordered) == 1 else xr.concat(
-        parts, dim="time", join="exact", combine_attrs="override",
-        coords="minimal", compat="override", data_vars="all",
-    )
+    joined = _end_to_end(parts)
+    # Every file has its own valid range, as it has its own packing.
+    masked = _end_to_end([_masked(part, piece.values.attrs["valid_range"])
+                          for part, piece in zip(parts, ordered, strict=True)])
     notes = []
     if not joined.indexes["time"].is_monotonic_increasing:
         if any(not part.indexes["time"].is_monotonic_increasing for part in parts):
             notes.append(f"Records of {first.found.name} do not stand in the order of time; they were sorted.")
         order = np.argsort(joined.indexes["time"].to_numpy(), kind="stable")
-        joined = joined.isel(time=order)
-    masked = _masked(joined, first.values.attrs["valid_range"])
+        joined, masked = joined.isel(time=order), masked.isel(time=order)
     counts: dict[str, xr.DataArray | int] = {"sentinel": _taken_out(joined, masked)}
     if masked.indexes["time"].has_duplicates:
         masked, repeated = _each_once(masked, ordered)
         counts["repeated"] = repeated
         notes.append(f"{repeated} records of {first.found.name} come twice and count once.")
     return Series(masked, counts, notes)
+
+
+def _end_to_end(parts: Sequence[xr.DataArray]) -> xr.DataArray:
+    if len(parts) == 1:
+        return parts[0]
+    return xr.concat(parts, dim="time", join="exact", combine_attrs="override", coords="minimal", compat="override")
 
 
 def _each_once(values: xr.DataArray, pieces: Sequence[Piece]) -> tuple[xr.DataArray, int]:
@@ -176,8 +181,6 @@ def _check_alike(first: Piece, other: Piece, values: xr.DataArray) -> None:
     if calendars[0] != calendars[1]:
         raise WeatherError("files have different calendars", where=where, got=" and ".join(calendars),
                            wanted="one calendar", cure="Run them apart.")
-    if first.values.attrs["valid_range"] != other.values.attrs["valid_range"]:
-        raise WeatherError("files state different valid ranges", where=where, cure="Run them apart.")
     if first.placed != other.placed:
         raise WeatherError("only some of the files have time bounds", where=where, cure="Make them alike.")
     for axis in set(first.values.dims) - {"time"}:

@@ -175,11 +175,21 @@ def _piece(weather: xr.Dataset, axes: Axes, found: Found, where: str, notes: tup
 
 
 def _valid_range(variable: xr.Variable) -> tuple[float, float]:
-    """Stated range of valid values; infinite where none is stated or it is in packed units."""
-    if "scale_factor" in variable.encoding or "add_offset" in variable.encoding:
+    """Stated range of valid values in the file's unit; infinite where none is stated.
+
+    A range of the type of the packed numbers is packed as they are (NetCDF Users' Guide, "valid_range").
+    """
+    both = np.ravel(variable.attrs.get("valid_range", (-np.inf, np.inf)))
+    if both.size != 2:
         return (-np.inf, np.inf)
-    both = variable.attrs.get("valid_range", (-np.inf, np.inf))
-    return float(variable.attrs.get("valid_min", both[0])), float(variable.attrs.get("valid_max", both[1]))
+    named = zip(("valid_min", "valid_max"), both, strict=True)
+    ends = [np.asarray(variable.attrs.get(name, end)) for name, end in named]
+    packed = {"scale_factor", "add_offset"} & set(variable.encoding)
+    scale, offset = (float(variable.encoding.get(name, usual)) for name, usual in (("scale_factor", 1.0),
+                                                                                  ("add_offset", 0.0)))
+    unpacked = [float(end) * scale + offset if packed and end.dtype == variable.encoding.get("dtype") else float(end)
+                for end in ends]
+    return min(unpacked), max(unpacked)
 
 
 def _resolution(variable: xr.Variable) -> float:

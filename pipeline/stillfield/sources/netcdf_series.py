@@ -28,6 +28,8 @@ from stillfield.sources.recognise import Choice
 
 #: Attributes that may differ between files of one build: each file's own packing, and what only describes.
 _OWN = frozenset({"scale_factor", "add_offset", "_FillValue", "missing_value", "actual_range", "history"})
+_PACKED = frozenset({"scale_factor", "add_offset"})
+_RANGE = frozenset({"valid_range", "valid_min", "valid_max"})
 #: Attributes of the time axis that each file's stamps are decoded by.
 _CLOCK = frozenset({"units", "calendar"})
 #: Variables without time up to this many values must be the same in every file; larger ones in shape only.
@@ -133,6 +135,8 @@ def _described(path: Path, file: netCDF4.Dataset) -> _Header | None:
     edges = file.variables[bounds][:] if bounds in file.variables else None
     if not _plain_times(raw, said) or (edges is not None and edges.shape != (raw.size, 2)):
         return None
+    if any(_PACKED & set(about) and _RANGE & set(about) for about in attributes.values()):
+        return None  # the range may be in packed numbers, which mean something else in every file
     parts: list[Any] = [tuple((name, len(size)) for name, size in file.dimensions.items() if name != time)]
     for name, variable in file.variables.items():
         varies = time in variable.dimensions
