@@ -16,7 +16,7 @@ import numpy as np
 
 from stillfield.plan import plan
 from stillfield.settings.load import load_run
-from stillfield.sources.netcdf import open_netcdf
+from stillfield.sources.grids.netcdf import open_netcdf
 
 STILL = Path(__file__).parents[2] / "config" / "stills" / "single-slope-glass.yaml"
 LATITUDE, LONGITUDE = np.arange(8.0, 10.0, 0.25), np.arange(-1.0, 1.0, 0.25)

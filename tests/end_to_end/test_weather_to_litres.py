@@ -11,7 +11,7 @@ import pytest
 import xarray as xr
 
 from data.fetch import fetched
-from stillfield.sources.typical_year import open_typical_year
+from stillfield.sources.typical.typical_year import open_typical_year
 from whole_runs import finished, months_of, stillfield_command, table, write_run
 
 TMY3 = ("723170TYA.CSV", "703165TY.csv")

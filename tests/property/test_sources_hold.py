@@ -7,9 +7,9 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from stillfield.sources.alignment import measure_sun_offset, whole_hours_off
-from stillfield.sources.grid_axes import clean_degrees, longitude_order
-from stillfield.sources.nominal_year import place
+from stillfield.sources.grids.grid_axes import clean_degrees, longitude_order
+from stillfield.sources.typical.alignment import measure_sun_offset, whole_hours_off
+from stillfield.sources.typical.nominal_year import place
 from typical_year_samples import calendar, clear_sky
 
 MONTH, DAY, START = calendar()

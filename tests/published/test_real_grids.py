@@ -15,9 +15,9 @@ import xarray as xr
 
 from data.fetch import fetched
 from stillfield.errors import StillfieldError
-from stillfield.sources.joining import join_pieces
-from stillfield.sources.netcdf import open_netcdf
-from stillfield.sources.netcdf_pieces import Piece, read_pieces
+from stillfield.sources.grids.joining import join_pieces
+from stillfield.sources.grids.netcdf import open_netcdf
+from stillfield.sources.grids.netcdf_pieces import Piece, read_pieces
 from stillfield.sources.recognise import read_mapping
 from stillfield.sources.region import Mask, Region, keep_region
 

@@ -13,7 +13,7 @@ from data.fetch import fetched
 from stillfield.errors import WeatherError
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.physics.temperature_range import clear_sky_share, irradiation_from_temperature
-from stillfield.sources.station_table import open_station_table
+from stillfield.sources.stations.station_table import open_station_table
 
 # Positions and units are those written in the heads of the files, or (Ronda) in the data set they come from.
 RONDA = {

@@ -13,9 +13,9 @@ import xarray as xr
 from pvlib.solarposition import get_solarposition
 
 from data.fetch import fetched
-from stillfield.sources.alignment import measure_sun_offset
-from stillfield.sources.netcdf import open_netcdf
-from stillfield.sources.typical_year import open_typical_year
+from stillfield.sources.grids.netcdf import open_netcdf
+from stillfield.sources.typical.alignment import measure_sun_offset
+from stillfield.sources.typical.typical_year import open_typical_year
 
 TMY3 = ["723170TYA.CSV", "703165TY.csv"]
 TMY2 = "12839.tm2"

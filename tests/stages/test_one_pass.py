@@ -46,7 +46,7 @@ def file(tmp_path_factory) -> Path:
 
 def small_blocks(monkeypatch: pytest.MonkeyPatch) -> None:
     """Blocks of one stored chunk, as a file of many gigabytes has many blocks."""
-    import stillfield.sources.netcdf_pieces as pieces
+    import stillfield.sources.grids.netcdf_pieces as pieces
 
     monkeypatch.setattr(pieces, "_BLOCK_BYTES", 50 * 2 * 3 * 4)
 

@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 import shapely
 
-from stillfield.sources.synthetic import SyntheticSource, ground_at, read_land
+from stillfield.sources.invented.synthetic import SyntheticSource, ground_at, read_land
 
 DEMO = Path(__file__).parents[2] / "config" / "demo"
 COAST = DEMO / "coast.geojson"

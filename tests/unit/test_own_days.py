@@ -8,8 +8,8 @@ import xarray as xr
 
 from gridded_samples import DAYS, LATITUDE, days, grid, truth, whole
 from stillfield.errors import WeatherError
-from stillfield.sources.netcdf import open_netcdf
-from stillfield.sources.own_days import clock_hours
+from stillfield.sources.grids.netcdf import open_netcdf
+from stillfield.sources.grids.own_days import clock_hours
 
 TRUE = truth()
 

@@ -18,8 +18,8 @@ from stillfield.methods import fit_store
 from stillfield.plan import PLAN_VERSION, plan
 from stillfield.products.plan_text import plan_text
 from stillfield.settings.load import load_run
-from stillfield.sources import netcdf_series
-from stillfield.sources.synthetic import SyntheticSource
+from stillfield.sources.grids import netcdf_series
+from stillfield.sources.invented.synthetic import SyntheticSource
 from whole_runs import CONFIG, SMALL_WEATHER, STILL, write_run
 
 FILES = ("723170TYA.CSV", "703165TY.csv", "12839.tm2")

@@ -11,7 +11,7 @@ import xarray as xr
 
 from gridded_samples import whole
 from stillfield.errors import WeatherError
-from stillfield.sources.netcdf import open_netcdf
+from stillfield.sources.grids.netcdf import open_netcdf
 from stillfield.sources.region import Box, Mask, Region, keep_region
 from stillfield.sources.tally import totals
 from stillfield.stages.read import read_weather

@@ -16,7 +16,9 @@ from stillfield.settings import weather as weather_keys
 from stillfield.settings.base import folder_name
 from stillfield.settings.load import json_schema, load_run, resolved_yaml, schema_text
 from stillfield.settings.weather import NetcdfWeather, SyntheticWeather, TypicalYearWeather
-from stillfield.sources import open_source, recognise, synthetic, year_formats
+from stillfield.sources import open_source, recognise
+from stillfield.sources.invented import synthetic
+from stillfield.sources.typical import year_formats
 
 CONFIG = Path(__file__).parents[2] / "config"
 

@@ -29,7 +29,7 @@ from gridded_samples import (
 from stillfield.errors import UnitsError, WeatherError
 from stillfield.sources import guess_kind, open_source
 from stillfield.sources.gates import gate
-from stillfield.sources.netcdf import open_netcdf
+from stillfield.sources.grids.netcdf import open_netcdf
 from stillfield.sources.tally import totals
 from typical_year_samples import clear_sky
 

@@ -8,8 +8,8 @@ import xarray as xr
 
 from gridded_samples import DAYS, days, grid, hours, north_up, packed, positive_longitude, single_precision, truth
 from stillfield.errors import WeatherError
-from stillfield.sources import netcdf_series
-from stillfield.sources.netcdf import open_netcdf
+from stillfield.sources.grids import netcdf_series
+from stillfield.sources.grids.netcdf import open_netcdf
 
 TRUE = truth()
 
@@ -115,7 +115,7 @@ def test_short_files_share_a_block_and_long_ones_are_cut(tmp_path, monkeypatch):
     for half in (0, 1):
         weather.isel(time=slice(48 * half, 48 * half + 48)).to_netcdf(tmp_path / f"h{half}.nc")
     # Room for 30 hours of the 12 cells in double precision.
-    monkeypatch.setattr("stillfield.sources.netcdf_pieces._BLOCK_BYTES", 30 * 12 * 8)
+    monkeypatch.setattr("stillfield.sources.grids.netcdf_pieces._BLOCK_BYTES", 30 * 12 * 8)
     said = {"ghi": {"name": "ghi", "means": "step-mean", "stamp": "start"}}
     cut = open_netcdf([str(tmp_path / "h*.nc")], variables=said)
     assert cut["temp_air"].chunks[0] == (30, 18, 30, 18)

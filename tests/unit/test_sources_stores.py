@@ -14,8 +14,9 @@ from gridded_samples import LATITUDE, LONGITUDE, grid, hours, truth
 from stillfield.errors import WeatherError
 from stillfield.products.manifest import digest_file, size_of
 from stillfield.settings.load import load_run
-from stillfield.sources import guess_kind, open_source, stores
-from stillfield.sources.netcdf import open_netcdf
+from stillfield.sources import guess_kind, open_source
+from stillfield.sources.grids import stores
+from stillfield.sources.grids.netcdf import open_netcdf
 from stillfield.sources.recognise import read_mapping
 from stillfield.stages.read import describe_inputs
 

@@ -11,7 +11,7 @@ import pytest
 
 from stillfield.errors import WeatherError
 from stillfield.sources import guess_kind, open_source
-from stillfield.sources.typical_year import open_typical_year
+from stillfield.sources.typical.typical_year import open_typical_year
 from typical_year_samples import calendar, clear_sky, epw_text, with_field, write
 
 HEAD = 8

@@ -12,9 +12,9 @@ import pytest
 import xarray as xr
 
 from stillfield.errors import WeatherError
-from stillfield.sources import synthetic
-from stillfield.sources.synthetic import SyntheticSource, cell_centres, ground_at, read_land
-from stillfield.sources.synthetic_fields import (
+from stillfield.sources.invented import synthetic
+from stillfield.sources.invented.synthetic import SyntheticSource, cell_centres, ground_at, read_land
+from stillfield.sources.invented.synthetic_fields import (
     Season,
     clear_sky_irradiation,
     clear_sky_parabolas,

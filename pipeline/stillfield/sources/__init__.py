@@ -15,13 +15,13 @@ from stillfield.errors import WeatherError
 
 #: Kinds of source by the name used in run files, and the function or class that opens each.
 KINDS = {
-    "typical-year": ("stillfield.sources.typical_year", "open_typical_year"),
-    "netcdf": ("stillfield.sources.netcdf", "open_netcdf"),
-    "zarr": ("stillfield.sources.stores", "open_zarr"),
-    "grib": ("stillfield.sources.stores", "open_grib"),
-    "monthly-means": ("stillfield.sources.monthly_means", "open_monthly_means"),
-    "station-table": ("stillfield.sources.station_table", "open_station_table"),
-    "synthetic": ("stillfield.sources.synthetic", "SyntheticSource"),
+    "typical-year": ("stillfield.sources.typical.typical_year", "open_typical_year"),
+    "netcdf": ("stillfield.sources.grids.netcdf", "open_netcdf"),
+    "zarr": ("stillfield.sources.grids.stores", "open_zarr"),
+    "grib": ("stillfield.sources.grids.stores", "open_grib"),
+    "monthly-means": ("stillfield.sources.months.monthly_means", "open_monthly_means"),
+    "station-table": ("stillfield.sources.stations.station_table", "open_station_table"),
+    "synthetic": ("stillfield.sources.invented.synthetic", "SyntheticSource"),
 }
 
 
@@ -142,7 +142,7 @@ def guess_kind(files: Sequence[str | Path]) -> str:
     'typical-year'
     """
     from stillfield.sources.locate import locate
-    from stillfield.sources.year_formats import recognise
+    from stillfield.sources.typical.year_formats import recognise
 
     first = locate([str(name) for name in files])[0]
     if first.is_dir():

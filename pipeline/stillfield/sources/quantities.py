@@ -17,11 +17,11 @@ from stillfield.physics.sun import day_length, extraterrestrial_irradiation
 from stillfield.physics.temperature_range import irradiation_from_temperature
 from stillfield.physics.vapour import dew_point_at_pressure, vapour_pressure_of_specific_humidity
 from stillfield.physics.wind import wind_speed_at_2m
-from stillfield.sources.alignment import TOLERANCE_MINUTES, measure_sun_offset
 from stillfield.sources.calendars import solar_day_of_year
-from stillfield.sources.own_days import dated, describe_days
+from stillfield.sources.grids.own_days import dated, describe_days
+from stillfield.sources.grids.sunshine import Meaning, differences, grows_from_midnight, settle_meaning
 from stillfield.sources.recognise import Found
-from stillfield.sources.sunshine import Meaning, differences, grows_from_midnight, settle_meaning
+from stillfield.sources.typical.alignment import TOLERANCE_MINUTES, measure_sun_offset
 from stillfield.sources.units import conversion, irradiation_kind
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER
 

@@ -11,7 +11,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
-from stillfield.sources.grid_axes import clean_degrees, find_axes, latitude_order, longitude_order
+from stillfield.sources.grids.grid_axes import clean_degrees, find_axes, latitude_order, longitude_order
 from stillfield.sources.tally import COUNTS
 from stillfield.sources.units import canonical
 
@@ -161,7 +161,7 @@ def run_on(weather: xr.Dataset) -> tuple[xr.Dataset, list[str]]:
 def _in_polygon(weather: xr.Dataset, path: Path) -> tuple[xr.Dataset, str]:
     import shapely
 
-    from stillfield.sources.synthetic import read_land
+    from stillfield.sources.invented.synthetic import read_land
 
     area = read_land(path, what="polygon")
     shapely.prepare(area)

@@ -13,8 +13,8 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
-from stillfield.sources.grid_axes import snapped
-from stillfield.sources.netcdf_pieces import Piece
+from stillfield.sources.grids.grid_axes import snapped
+from stillfield.sources.grids.netcdf_pieces import Piece
 from stillfield.sources.tally import cell_counts
 
 #: Numbers that stand for "missing" in files that do not declare them.

@@ -14,7 +14,7 @@ import numpy as np
 import xarray as xr
 
 from stillfield.errors import WeatherError
-from stillfield.sources.grid_axes import Axes, clean_degrees, find_axes, latitude_order, longitude_order
+from stillfield.sources.grids.grid_axes import Axes, clean_degrees, find_axes, latitude_order, longitude_order
 from stillfield.sources.recognise import Choice, Found, recognise
 
 #: Coordinates of stations that are kept where a file has them.

@@ -16,14 +16,14 @@ import pandas as pd
 import xarray as xr
 
 from stillfield.errors import Fault, WeatherError
+from stillfield.sources.grids.netcdf import weather_from_pieces
+from stillfield.sources.grids.netcdf_pieces import take_pieces
 from stillfield.sources.locate import locate
-from stillfield.sources.netcdf import weather_from_pieces
-from stillfield.sources.netcdf_pieces import take_pieces
 from stillfield.sources.recognise import Choice, Found, read_mapping
-from stillfield.sources.station_columns import Column, find_places, find_quantities, numbers, refuse_faults
-from stillfield.sources.station_rows import Rows, read_rows
-from stillfield.sources.station_sites import Site, positions, site_of_rows
-from stillfield.sources.station_times import read_times
+from stillfield.sources.stations.station_columns import Column, find_places, find_quantities, numbers, refuse_faults
+from stillfield.sources.stations.station_rows import Rows, read_rows
+from stillfield.sources.stations.station_sites import Site, positions, site_of_rows
+from stillfield.sources.stations.station_times import read_times
 
 #: A station's clock this far from its sun is no local clock: its days are cut by the sun instead. [h]
 _FARTHEST_CLOCK_HOURS = 3.0
@@ -82,7 +82,7 @@ def open_station_table(
     files : sequence of str
         Tables: comma, semicolon, tab or blanks between the cells.
     variables : mapping, optional
-        As for `stillfield.sources.netcdf.open_netcdf`; ``name`` is the heading of the column. Columns left out
+        As for `stillfield.sources.grids.netcdf.open_netcdf`; ``name`` is the heading of the column. Columns left out
         are recognised by their heading; units stand in the heading, ``Tmin (degC)``, or here.
     table : mapping, optional
         `TableOptions`: ``columns`` of site, position and time; ``date_format`` where dates are not ISO;

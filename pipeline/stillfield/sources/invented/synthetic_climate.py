@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from stillfield.sources.synthetic_fields import (
+from stillfield.sources.invented.synthetic_fields import (
     TURBIDITY_NODES,
     Floats,
     Season,

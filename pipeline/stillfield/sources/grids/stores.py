@@ -15,9 +15,9 @@ import numpy as np
 import xarray as xr
 
 from stillfield.errors import WeatherError
+from stillfield.sources.grids.netcdf import weather_from_pieces
+from stillfield.sources.grids.netcdf_pieces import Piece, take_pieces
 from stillfield.sources.locate import locate
-from stillfield.sources.netcdf import weather_from_pieces
-from stillfield.sources.netcdf_pieces import Piece, take_pieces
 from stillfield.sources.recognise import Choice, read_mapping
 
 #: Grids whose cells stand in rows and columns of latitude and longitude.
@@ -35,7 +35,7 @@ def open_zarr(
     files : sequence of str
         Folders of stores; they may split the time axis, the variables, or both.
     variables, radiation_from_temperature, day_clock
-        As for `stillfield.sources.netcdf.open_netcdf`.
+        As for `stillfield.sources.grids.netcdf.open_netcdf`.
 
     Returns
     -------
@@ -68,7 +68,7 @@ def open_grib(
     files : sequence of str
         Paths or patterns.
     variables, radiation_from_temperature, day_clock
-        As for `stillfield.sources.netcdf.open_netcdf`; names are the short names of ecCodes, such as ``ssrd``.
+        As for `stillfield.sources.grids.netcdf.open_netcdf`; names are the short names of ecCodes, such as ``ssrd``.
 
     Returns
     -------

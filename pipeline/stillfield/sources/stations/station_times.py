@@ -11,8 +11,8 @@ import pandas as pd
 from numpy.typing import NDArray
 
 from stillfield.errors import Fault, WeatherError
-from stillfield.sources.station_columns import numbers
-from stillfield.sources.station_rows import Rows
+from stillfield.sources.stations.station_columns import numbers
+from stillfield.sources.stations.station_rows import Rows
 
 _ZONE = re.compile(r"[T:\s]\S*(?:Z|[+-]\d\d:?\d\d)$")
 

@@ -11,8 +11,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stillfield.errors import Fault, WeatherError
-from stillfield.sources.station_columns import find_places, numbers, refuse_faults
-from stillfield.sources.station_rows import Rows, read_rows
+from stillfield.sources.stations.station_columns import find_places, numbers, refuse_faults
+from stillfield.sources.stations.station_rows import Rows, read_rows
 
 _NUMBERS = {"latitude": (-90.0, 90.0), "longitude": (-180.0, 360.0), "elevation": (-500.0, 9000.0),
             "utc_offset_hours": (-12.0, 14.0)}

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from scipy.spatial import cKDTree
 
 from stillfield.errors import WeatherError
-from stillfield.sources.grid_axes import snapped
+from stillfield.sources.grids.grid_axes import snapped
 
 _EARTH_RADIUS_KM = 6371.0
 

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from stillfield.errors import Fault, WeatherError
 from stillfield.sources.recognise import Choice
-from stillfield.sources.station_rows import Rows
+from stillfield.sources.stations.station_rows import Rows
 
 #: Headings of quantities, in small letters and underscores.
 _QUANTITIES = {

@@ -22,16 +22,16 @@ from stillfield.errors import WeatherError
 from stillfield.physics.clearness_days import DAYS_IN_MONTH, daily_irradiation
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.physics.temperature_range import irradiation_from_temperature
-from stillfield.sources.file_proof import prove_whole
 from stillfield.sources.gates import gate
+from stillfield.sources.grids.file_proof import prove_whole
+from stillfield.sources.grids.netcdf import check_choices, join_roles, require_sunshine
+from stillfield.sources.grids.netcdf_pieces import Piece, take_pieces
 from stillfield.sources.locate import locate
-from stillfield.sources.month_axis import MONTHS, NOMINAL_YEAR, with_months
-from stillfield.sources.nearest_cells import on_cells_of
-from stillfield.sources.netcdf import check_choices, join_roles, require_sunshine
-from stillfield.sources.netcdf_pieces import Piece, take_pieces
+from stillfield.sources.months.month_axis import MONTHS, NOMINAL_YEAR, with_months
+from stillfield.sources.months.nearest_cells import on_cells_of
 from stillfield.sources.quantities import Joined, dew_point, mean_temperature, plain, wind
 from stillfield.sources.recognise import Choice, Found, read_mapping
-from stillfield.sources.station_table import TableOptions, read_stations, where_of
+from stillfield.sources.stations.station_table import TableOptions, read_stations, where_of
 from stillfield.sources.units import conversion, irradiation_kind
 from stillfield.vocabulary import DAY_WEATHER
 
@@ -55,10 +55,10 @@ def open_monthly_means(
         NetCDF files, paths or patterns; they may split months and variables, and their grids may differ. Or
         tables of stations, a row for each month.
     variables : mapping, optional
-        As for `stillfield.sources.netcdf.open_netcdf`; ``means`` is 'daily-mean' for a rate, 'daily-total' or
+        As for `stillfield.sources.grids.netcdf.open_netcdf`; ``means`` is 'daily-mean' for a rate, 'daily-total' or
         'monthly-total' for an energy.
     table : mapping, optional
-        How tables are written, as for `stillfield.sources.station_table.open_station_table`.
+        How tables are written, as for `stillfield.sources.stations.station_table.open_station_table`.
     join_within_km : float, optional
         Farthest that temperature, humidity and wind may come from, where their grid is not that of the
         sunshine; grids that differ are refused without it. [km]

@@ -15,11 +15,11 @@ from numpy.typing import NDArray
 from stillfield.errors import WeatherError
 from stillfield.physics.vapour import dew_point
 from stillfield.physics.wind import wind_speed_at_2m
-from stillfield.sources.alignment import SunFit, measure_sun_offset, whole_hours_off
 from stillfield.sources.gates import gate
 from stillfield.sources.locate import locate
-from stillfield.sources.nominal_year import HOURS, YEAR, place
-from stillfield.sources.year_formats import YearRows, read_rows
+from stillfield.sources.typical.alignment import SunFit, measure_sun_offset, whole_hours_off
+from stillfield.sources.typical.nominal_year import HOURS, YEAR, place
+from stillfield.sources.typical.year_formats import YearRows, read_rows
 from stillfield.vocabulary import STEP_WEATHER
 
 Array = NDArray[np.floating[Any]]

@@ -20,8 +20,8 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
-from stillfield.sources.synthetic_climate import Ground, daily_weather, draw_chance
-from stillfield.sources.synthetic_fields import DAYS_PER_YEAR, Floats, relief_elevation
+from stillfield.sources.invented.synthetic_climate import Ground, daily_weather, draw_chance
+from stillfield.sources.invented.synthetic_fields import DAYS_PER_YEAR, Floats, relief_elevation
 from stillfield.vocabulary import DAY_WEATHER, STEP_HOURS_DAILY
 
 if TYPE_CHECKING:

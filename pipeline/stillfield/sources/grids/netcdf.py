@@ -15,11 +15,11 @@ import xarray as xr
 
 from stillfield.errors import WeatherError
 from stillfield.sources.gates import gate
-from stillfield.sources.grid_axes import snapped
-from stillfield.sources.joining import join_pieces
+from stillfield.sources.grids.grid_axes import snapped
+from stillfield.sources.grids.joining import join_pieces
+from stillfield.sources.grids.netcdf_pieces import Piece
+from stillfield.sources.grids.netcdf_series import read_files
 from stillfield.sources.locate import locate
-from stillfield.sources.netcdf_pieces import Piece
-from stillfield.sources.netcdf_series import read_files
 from stillfield.sources.quantities import (
     Joined,
     dew_point,

@@ -22,8 +22,8 @@ from xarray.backends.locks import HDF5_LOCK, NETCDFC_LOCK, combine_locks
 from xarray.coding.times import decode_cf_datetime
 from xarray.conventions import decode_cf_variable
 
-from stillfield.sources.file_proof import prove_whole
-from stillfield.sources.netcdf_pieces import Piece, block_sizes, open_one, read_pieces, take_pieces
+from stillfield.sources.grids.file_proof import prove_whole
+from stillfield.sources.grids.netcdf_pieces import Piece, block_sizes, open_one, read_pieces, take_pieces
 from stillfield.sources.recognise import Choice
 
 #: Attributes that may differ between files of one build: each file's own packing, and what only describes.

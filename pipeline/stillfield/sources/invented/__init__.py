@@ -1,0 +1,1 @@
+"""Invented weather on an invented land, to try things with."""

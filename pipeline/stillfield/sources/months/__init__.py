@@ -1,0 +1,1 @@
+"""Monthly means, gridded or by station, from which days are generated."""

@@ -1,0 +1,1 @@
+"""Tables of stations: rows, columns, places and times as people write them."""

@@ -1,0 +1,1 @@
+"""Typical-year files: one site each, the hours of a nominal year."""
