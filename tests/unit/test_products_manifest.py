@@ -13,12 +13,12 @@ import xarray as xr
 from product_samples import monthly_grid, monthly_sites
 from stillfield.errors import OutputError
 from stillfield.products.manifest import (
-    describe_inputs,
     digest_dataset,
     digest_file,
     software_versions,
     write_manifest,
 )
+from stillfield.stages.read import describe_inputs
 
 
 @pytest.fixture
@@ -91,7 +91,7 @@ def test_manifest_repeats_and_names_no_machine(tmp_path):
     (tmp_path / "a.nc").write_bytes(b"abcd")
     settings = {"still": Settings(run / "weather" / "a.nc", 7, (np.float32(0.5), float("nan"))),
                 "elsewhere": str(tmp_path / "a.nc"), "kinds": {"b", "a"}}
-    inputs = describe_inputs(["weather/a.nc", run / "weather" / "a.nc", tmp_path / "a.nc"], run)
+    inputs = describe_inputs([str(run / "weather" / "a.nc")] * 2 + [str(tmp_path / "a.nc")], run)
     for name in ("m.json", "n.json"):
         write_manifest(run / name, settings=settings, inputs=inputs, conventions=["Hours end at the stamp."],
                        counts={"clipped": np.int64(3)}, digests={"monthly.nc": "ab"}, base=run, caution="Test it.")

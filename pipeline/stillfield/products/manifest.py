@@ -47,7 +47,7 @@ def write_manifest(
     settings : object
         Resolved settings: a mapping, a dataclass or anything with ``model_dump``.
     inputs : mapping of str to mapping
-        As `describe_inputs` gives them.
+        Name to ``{'sha256': str, 'bytes': int}``.
     versions : mapping, optional
         By default `software_versions`.
     conventions : iterable of str
@@ -153,46 +153,6 @@ def portable_name(path: str | Path, base: str | Path | None = None) -> str:
     if base is not None and Path(text).is_relative_to(base):
         return Path(text).relative_to(base).as_posix()
     return (PureWindowsPath(text) if "\\" in text else PurePosixPath(text)).name
-
-
-def describe_inputs(paths: Iterable[str | Path], base: str | Path | None = None) -> dict[str, dict[str, Any]]:
-    """Identity of input files: name, digest and size.
-
-    Parameters
-    ----------
-    paths : iterable of str or Path
-        As the run file gives them; relative ones are taken from `base`.
-    base : str or Path, optional
-        Folder of the run file.
-
-    Returns
-    -------
-    dict
-        `portable_name` to ``{'sha256': str, 'bytes': int}``; files of equal name are told apart by a number.
-
-    Raises
-    ------
-    OSError
-        When a file cannot be read.
-
-    Examples
-    --------
-    >>> import tempfile
-    >>> with tempfile.TemporaryDirectory() as folder:
-    ...     _ = Path(folder, "a.txt").write_text("abc")
-    ...     describe_inputs(["a.txt"], folder)["a.txt"]["bytes"]
-    3
-    """
-    described: dict[str, dict[str, Any]] = {}
-    for path in paths:
-        file = Path(base, path) if base is not None else Path(path)
-        name = stem = portable_name(path, base)
-        number = 1
-        while name in described:
-            number += 1
-            name = f"{stem} ({number})"
-        described[name] = {"sha256": digest_file(file), "bytes": file.stat().st_size}
-    return described
 
 
 def digest_file(path: str | Path) -> str:
