@@ -23,6 +23,7 @@ from stillfield.physics.rule import USUAL_EFFICIENCY
 from stillfield.physics.still import Still
 from stillfield.settings.still_file import load_still_file
 from stillfield.sources import guess_kind
+from stillfield.sources.gates import gate
 from stillfield.sources.places import read_places
 from stillfield.stages.aggregate import aggregate
 from stillfield.stages.estimate import estimate
@@ -64,7 +65,8 @@ def open_weather(
         If the files cannot be read, recognised or believed.
     """
     names = [str(files)] if isinstance(files, str | Path) else [str(name) for name in files]
-    return read_weather(kind or guess_kind(names), names, region=region, **options)
+    weather = read_weather(kind or guess_kind(names), names, region=region, **options)
+    return gate(weather, where=str(weather.attrs.get("files", "weather")))[0]
 
 
 def load_still(still: str | Path) -> Still:

@@ -29,12 +29,19 @@ from gridded_samples import (
 from stillfield.errors import UnitsError, WeatherError
 from stillfield.sources import guess_kind, open_source
 from stillfield.sources.gates import gate
-from stillfield.sources.grids.netcdf import open_netcdf
+from stillfield.sources.grids import netcdf
 from stillfield.sources.tally import totals
 from typical_year_samples import clear_sky
 
 TRUE = truth()
 WIND_FACTOR = 4.87 / np.log(67.8 * 10 - 5.42)  # FAO-56 equation 47
+
+
+def open_netcdf(*files, **options) -> xr.Dataset:
+    """Weather held against the gates when it is computed, as a notebook gets it."""
+    weather = netcdf.open_netcdf(*files, **options)
+    return gate(weather, where=weather.attrs["files"])[0]
+
 
 
 def _since_midnight(ghi: np.ndarray) -> np.ndarray:
@@ -294,7 +301,7 @@ def test_undeclared_numbers_for_missing_are_masked(tmp_path, sentinel):
     values[1, 1, 1] = sentinel
     weather = grid(days(), rsds=(values, "J m-2"))
     weather.rsds.encoding["_FillValue"] = None
-    found, counts = gate(open_netcdf(whole(weather, tmp_path)).compute())
+    found, counts = gate(netcdf.open_netcdf(whole(weather, tmp_path)).compute())
     assert bool(found.irradiation[1, 1, 1].isnull())
     assert counts.missing == {"irradiation": 1}
 
@@ -393,7 +400,7 @@ def test_values_outside_a_stated_range_are_missing(tmp_path):
     values = TRUE.irradiation.copy()
     values[2, 0, 0] = 900.0
     weather = grid(days(), rsds=(values, {"units": "MJ m-2", "valid_range": np.array([0.0, 60.0])}))
-    found, counts = gate(open_netcdf(whole(weather, tmp_path)).compute())
+    found, counts = gate(netcdf.open_netcdf(whole(weather, tmp_path)).compute())
     assert bool(found.irradiation[2, 0, 0].isnull())
     assert counts.missing == {"irradiation": 1}
 

@@ -6,7 +6,7 @@ nothing is read twice; counts of several blocks add up. On lazy weather it becom
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from functools import partial
 from typing import Any
@@ -27,6 +27,10 @@ Array = NDArray[np.floating[Any]]
 #: days cut at another hour than the sun's, and the last degrees before polar night.
 _MARGIN_FACTOR = 1.05
 _MARGIN_MJ = 0.6
+
+#: Mark of a number that stood for missing and was taken out: it travels as infinity, which no unit conversion
+#: touches, until the gates count it and make it missing.
+TAKEN_OUT = np.inf
 
 #: Negative sunshine up to this is instrument or packing noise and becomes 0.
 _NOISE_FLOOR = {"ghi": -20.0, "dni": -20.0, "dhi": -20.0, "irradiation": -0.5}
@@ -93,11 +97,11 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
     Returns
     -------
     weather : xarray.Dataset
-        The same, small negative irradiance set to 0, and variable ``counts`` (`tally`) with what was clipped or
-        missing in each cell. Of lazy weather each block is checked and counted when it is computed, and days
-        that lie across two blocks are held against the bounds of a step only.
+        The same, small negative irradiance set to 0, numbers that were taken out missing, and variable ``counts``
+        (`tally`) with what happened in each cell. Of lazy weather each block is checked when it is computed,
+        nothing is counted, and days that lie across two blocks are held against the bounds of a step only.
     counts : GateCounts
-        Of all cells together. Empty for lazy weather, which is counted when it is computed.
+        Of all cells together. Empty for lazy weather.
 
     Raises
     ------
@@ -111,7 +115,7 @@ def gate(weather: xr.Dataset, *, where: str = "weather") -> tuple[xr.Dataset, Ga
         for name in (name for name in table if name in weather.data_vars):
             one = weather[[name]]
             changed[name] = xr.map_blocks(_checked_block, one, kwargs={"where": where}, template=one)[name]
-        return _counted(weather, table).assign(changed), GateCounts()
+        return weather.assign(changed), GateCounts()
     checked, counts = _checked(weather, where=where)
     return _counted(weather, table).assign(checked.data_vars), counts
 
@@ -142,20 +146,26 @@ def _counted(weather: xr.Dataset, table: Mapping[str, Quantity]) -> xr.Dataset:
     counted = weather
     for name in (name for name in table if name in weather.data_vars and "time" in weather[name].dims):
         values = weather[name].transpose("time", ...)
-        kinds = ("missing", "clipped") if name in _NOISE_FLOOR else ("missing",)
+        kinds = ("missing", "sentinel", "clipped") if name in _NOISE_FLOOR else ("missing", "sentinel")
         rows = cell_counts(values, partial(_count_block, kinds=kinds), kinds)
         counted = with_counts(counted, name, {**rows, "values": values.sizes["time"]})
     return counted
 
 
 def _count_block(block: NDArray[Any], *, kinds: tuple[str, ...]) -> NDArray[np.int64]:
+    tests: dict[str, Callable[[NDArray[Any]], NDArray[np.bool_]]] = {
+        "missing": lambda values: ~np.isfinite(values), "sentinel": np.isinf, "clipped": lambda values: values < 0.0,
+    }
     with np.errstate(invalid="ignore"):
-        found = [np.isnan(block) if kind == "missing" else block < 0.0 for kind in kinds]
+        found = [tests[kind](block) for kind in kinds]
     return np.stack([np.count_nonzero(one, axis=0) for one in found]).astype(np.int64)
 
 
 def _check_bounds(values: xr.DataArray, quantity: Quantity, *, where: str) -> tuple[xr.DataArray, int]:
     data = values.values
+    if np.isinf(data).any():
+        data = np.where(np.isinf(data), data.dtype.type(np.nan), data)
+        values = values.copy(data=data)
     floor = _NOISE_FLOOR.get(quantity.name)
     low = quantity.low if floor is None else floor
     with np.errstate(invalid="ignore"):

@@ -13,9 +13,9 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
+from stillfield.sources.gates import TAKEN_OUT
 from stillfield.sources.grids.grid_axes import snapped
 from stillfield.sources.grids.netcdf_pieces import Piece
-from stillfield.sources.tally import cell_counts
 
 #: Numbers that stand for "missing" in files that do not declare them.
 _SENTINELS = (-999.0, -9999.0)
@@ -68,17 +68,15 @@ def join_pieces(pieces: Sequence[Piece]) -> Series:
     parts = [first.values, *(snapped(other.values, first.values) for other in ordered[1:])]
     for other, values in zip(ordered[1:], parts[1:], strict=True):
         _check_alike(first, other, values)
-    joined = _end_to_end(parts)
     # Every file has its own valid range, as it has its own packing.
     masked = _end_to_end([_masked(part, piece.values.attrs["valid_range"])
                           for part, piece in zip(parts, ordered, strict=True)])
     notes = []
-    if not joined.indexes["time"].is_monotonic_increasing:
+    if not masked.indexes["time"].is_monotonic_increasing:
         if any(not part.indexes["time"].is_monotonic_increasing for part in parts):
             notes.append(f"Records of {first.found.name} do not stand in the order of time; they were sorted.")
-        order = np.argsort(joined.indexes["time"].to_numpy(), kind="stable")
-        joined, masked = joined.isel(time=order), masked.isel(time=order)
-    counts: dict[str, xr.DataArray | int] = {"sentinel": _taken_out(joined, masked)}
+        masked = masked.isel(time=np.argsort(masked.indexes["time"].to_numpy(), kind="stable"))
+    counts: dict[str, xr.DataArray | int] = {}
     if masked.indexes["time"].has_duplicates:
         masked, repeated = _each_once(masked, ordered)
         counts["repeated"] = repeated
@@ -127,7 +125,8 @@ def _merged(one: xr.DataArray, other: xr.DataArray, told: NDArray[Any], toleranc
 
 def _same_block(first: NDArray[Any], second: NDArray[Any], told: NDArray[Any], *, tolerance: float) -> NDArray[Any]:
     with np.errstate(invalid="ignore"):
-        apart = np.abs(first - second) > tolerance + _SAME * np.maximum(np.abs(first), np.abs(second))
+        apart = np.isfinite(first) & np.isfinite(second)
+        apart &= np.abs(first - second) > tolerance + _SAME * np.maximum(np.abs(first), np.abs(second))
     if apart.any():
         at = np.unravel_index(int(np.argmax(apart)), apart.shape)
         raise WeatherError(
@@ -135,11 +134,11 @@ def _same_block(first: NDArray[Any], second: NDArray[Any], told: NDArray[Any], *
             got=f"{float(first[at]):g} and {float(second[at]):g}; {int(apart.sum())} such values",
             cure="Leave out one of the overlapping files.",
         )
-    return np.where(np.isnan(first), second, first)
+    return np.where(np.isfinite(first), first, np.where(np.isfinite(second), second, np.fmax(first, second)))
 
 
 def _masked(values: xr.DataArray, valid: tuple[float, float]) -> xr.DataArray:
-    """Values as floats; undeclared sentinels and values outside the stated range are missing."""
+    """Values as floats; undeclared sentinels and values outside the stated range are marked `TAKEN_OUT`."""
     kind = values.dtype if np.issubdtype(values.dtype, np.floating) else np.dtype(np.float64)
     data = da.asarray(values.data)
     return values.copy(data=da.map_blocks(partial(_mask_block, valid=valid), data, dtype=kind,
@@ -154,19 +153,7 @@ def _mask_block(block: NDArray[Any], *, valid: tuple[float, float]) -> NDArray[A
             bad |= block == sentinel
         if np.isfinite(valid).any():
             bad |= (block < valid[0]) | (block > valid[1])
-    return np.where(bad, block.dtype.type(np.nan), block) if bad.any() else block
-
-
-def _taken_out(raw: xr.DataArray, masked: xr.DataArray) -> xr.DataArray:
-    """How many numbers of each cell masking took out: those missing after less those missing before."""
-    def missing(values: xr.DataArray) -> xr.DataArray:
-        return cell_counts(values, _count_missing, ("missing",))["missing"]
-
-    return missing(masked) - missing(raw) if np.issubdtype(raw.dtype, np.floating) else missing(masked)
-
-
-def _count_missing(block: NDArray[Any]) -> NDArray[np.int64]:
-    return np.asarray(np.count_nonzero(np.isnan(block), axis=0), dtype=np.int64)[np.newaxis]
+    return np.where(bad, block.dtype.type(TAKEN_OUT), block) if bad.any() else block
 
 
 def _check_alike(first: Piece, other: Piece, values: xr.DataArray) -> None:

@@ -1,7 +1,7 @@
 """Gridded or station weather in CF NetCDF files, daily or sub-daily, opened lazily.
 
-Only headers, coordinates and a few days of a few cells are read here; the weather itself is read, and held
-against the physical gates, when the dataset is computed.
+Only headers, coordinates and a few days of a few cells are read here. The weather is read when it is computed;
+numbers that stood for missing travel as `gates.TAKEN_OUT` until the gates count them.
 """
 
 from __future__ import annotations
@@ -14,7 +14,6 @@ import numpy as np
 import xarray as xr
 
 from stillfield.errors import WeatherError
-from stillfield.sources.gates import gate
 from stillfield.sources.grids.grid_axes import snapped
 from stillfield.sources.grids.joining import join_pieces
 from stillfield.sources.grids.netcdf_pieces import Piece
@@ -272,10 +271,11 @@ def _assemble(
         "record": "series",
         "step_hours": step_hours,
         "clock": "own-days" if daily else "local-standard" if "utc_offset_hours" in result.coords else "UTC",
+        "files": names,
         "origin": f"{'Daily' if daily else f'{step_hours:g}-hourly'} weather read from {names}.",
         "conventions": [*notes, *said, *also, *across, *gaps],
     }
-    return gate(result, where=names)[0]
+    return result
 
 
 def _on_cells_of(weather: xr.Dataset, row: xr.DataArray | int) -> xr.DataArray | int:
