@@ -7,7 +7,7 @@ import pytest
 
 from stillfield.errors import WeatherError
 from stillfield.physics import balance_kernel, convection, sky, wind
-from stillfield.physics.heat_balance import _cells, _numbers
+from stillfield.physics.balance_numbers import cell_rows, numbers
 from stillfield.physics.moist_air import saturated_moist_air
 from stillfield.physics.still import Panel, Still
 from stillfield.physics.vapour import latent_heat
@@ -143,10 +143,10 @@ def test_kernel_follows_the_plain_form(relation, pressure):
     water, cover = (part.ravel() for part in np.meshgrid(np.linspace(1.0, 80.0, 25), np.linspace(-10.0, 75.0, 25)))
     activity = 0.95
     still = Still("plain", (Panel(1.0, 15.0),), heat_transfer=relation)
-    cells = _cells(still, np.asarray(0.0), np.asarray(pressure), 1800.0, water.size)
+    cells = cell_rows(still, 1800.0, water.size, salinity=0.0, pressure=np.asarray(pressure))
     cells[0] = activity
     flow = balance_kernel.flow(
-        water, cover, np.zeros_like(water), balance_kernel.Cell(*cells), _numbers(still, pressure, 1800.0)
+        water, cover, np.zeros_like(water), balance_kernel.Cell(*cells), numbers(still, pressure, 1800.0)
     )
     plain = convection.exchange(water, cover, relation, activity=activity, pressure=pressure)
     np.testing.assert_allclose(flow.convected, plain.convected, rtol=5e-5, atol=1e-9)
@@ -157,8 +157,8 @@ def test_kernel_follows_the_plain_form(relation, pressure):
 @pytest.mark.parametrize("at", [(60.0, 45.0), (30.0, 20.0), (20.0, 28.0)])
 def test_slopes_of_the_kernel_are_derivatives(at):
     still = Still("plain", (Panel(1.0, 15.0),))
-    cell = balance_kernel.Cell(*_cells(still, np.asarray(30.0), np.asarray(101325.0), 1800.0, 1)[:, 0])
-    k = _numbers(still, 101325.0, 1800.0)
+    cell = balance_kernel.Cell(*cell_rows(still, 1800.0, 1, salinity=30.0, pressure=np.asarray(101325.0))[:, 0])
+    k = numbers(still, 101325.0, 1800.0)
     step = 1e-4
 
     def total(water: float, cover: float) -> float:

@@ -8,9 +8,8 @@ import numpy as np
 import pytest
 
 from stillfield.errors import MethodError
-from stillfield.physics import heat_balance
-from stillfield.physics.balance_schedule import blank_gaps, schedule
-from stillfield.physics.heat_balance import Forcing, simulate
+from stillfield.physics import balance_march
+from stillfield.physics.heat_balance import BalanceResult, Forcing, simulate
 from stillfield.physics.still import Panel, Still
 
 STILL = Still("plain", (Panel(1.0, 15.0),))
@@ -25,7 +24,7 @@ def made_days(days: int, *, peak: float = 800.0, air: float = 25.0, steps: int =
     return Forcing(0.7 * sun, 0.05 * sun, level, np.full_like(sun, 2.0), level - 12.0)
 
 
-def run(forcing: Forcing, still: Still = STILL, **more) -> heat_balance.BalanceResult:
+def run(forcing: Forcing, still: Still = STILL, **more) -> BalanceResult:
     return simulate(forcing, still, engine="numpy", **more)
 
 
@@ -68,9 +67,9 @@ def test_start_hour_moves_the_cut():
 
 
 def test_last_day_is_completed_with_its_own_early_hours():
-    plan = schedule(48, 24, 0, cyclic=False, day_start_hour=6.0)
-    assert plan.order[-6:].tolist() == [24, 25, 26, 27, 28, 29]
-    assert (plan.day_rows[0] == 1).sum() == 24
+    forcing = made_days(2)
+    repeated = Forcing(*(np.concatenate([field, field[24:]]) for field in vars(forcing).values()))
+    np.testing.assert_array_equal(run(forcing).daily_yield, run(repeated).daily_yield[:2])
 
 
 def test_blocks_do_not_change_the_litres(monkeypatch):
@@ -142,10 +141,17 @@ def test_gap_before_the_first_yield_day_counts():
 
 
 def test_gap_at_the_end_of_a_cyclic_year_reaches_its_start():
-    daily = np.ones((4, 1))
-    daily[3] = np.nan
-    blank_gaps(daily, np.zeros((4, 1), bool), np.array([False]), memory_days=2, cyclic=True)
-    assert np.isnan(daily[:, 0]).tolist() == [True, True, False, True]
+    forcing = made_days(6)
+    forcing.absorbed[-12, 0] = np.nan
+    daily = run(forcing, DEEP, cyclic=True).daily_yield
+    assert np.isnan(daily[:, 0]).tolist() == [True, True, False, False, False, True]
+    assert np.isfinite(daily[:, 1]).all()
+
+
+def test_memory_may_be_longer_than_a_cyclic_record():
+    forcing = made_days(1)
+    forcing.absorbed[12, 0] = np.nan
+    assert np.isnan(run(forcing, DEEP, cyclic=True).daily_yield).tolist() == [[True, False]]
 
 
 def test_all_missing_is_all_missing():
@@ -214,7 +220,7 @@ def test_brine_beyond_the_range_is_refused():
 
 
 def test_without_numba_auto_takes_numpy_and_compiled_says_how_to_get_it(monkeypatch):
-    monkeypatch.setattr(heat_balance, "find_spec", lambda name: None)
+    monkeypatch.setattr(balance_march, "find_spec", lambda name: None)
     forcing = made_days(1)
     np.testing.assert_array_equal(
         simulate(forcing, STILL).daily_yield, simulate(forcing, STILL, engine="numpy").daily_yield

@@ -44,13 +44,14 @@ class Numbers(NamedTuple):
     mean_high: Any
     convection: Any  # k_h as a cubic of the mean temperature, 4 numbers [W m-2 K-4/3]
     evaporation: Any  # k_e likewise [K Pa-1]
-    stefan: Any  # 1 where the flow of vapour counts, else 0
+    stefan: Any  # True where the flow of vapour counts, else None
     radiation_inside: Any  # effective emittance times sigma [W m-2 K-4]
     radiation_outside: Any  # area ratio times emittance times sigma [W m-2 K-4]
     area_ratio: Any  # cover area over basin area
     wind_base: Any  # h_w = wind_base + wind_slope v
     wind_slope: Any
     loss: Any  # U_b [W m-2 K-1]
+    absorbed_share: Any  # sunshine absorbed over that given [1]
     distilling: Any  # (1 - leak) Δt / L(T) as a cubic of degC, 4 numbers [kg W-1]
 
 
@@ -162,15 +163,16 @@ def cube_root(x: Any, k: Numbers) -> Any:
 
 
 def transfer(mean: Any, over_water: Any, over_cover: Any, cell: Cell, k: Numbers) -> Any:
-    """k_h, k_e F and 1 / (2.654 p - P_w) at a mean temperature.
-
-    Without the flow of vapour the two are constants, which arrays take as a short cut; compiled code always
-    takes `moist_transfer`, as a choice in its innermost loop costs more than the arithmetic.
-    """
-    if k.stefan == k.zero:
-        lightness = k.one / (cell.buoyancy - over_water)
-        return cell.convection * k.convection[0], cell.evaporation * k.evaporation[0], lightness
+    """k_h, k_e F and 1 / (2.654 p - P_w) at a mean temperature; compiled code holds one of the two relations."""
+    if k.stefan is None:
+        return plain_transfer(mean, over_water, over_cover, cell, k)
     return moist_transfer(mean, over_water, over_cover, cell, k)
+
+
+def plain_transfer(mean: Any, over_water: Any, over_cover: Any, cell: Cell, k: Numbers) -> Any:
+    """Without the flow of vapour: k_h and k_e are constants."""
+    lightness = k.one / (cell.buoyancy - over_water)
+    return cell.convection * k.convection[0], cell.evaporation * k.evaporation[0], lightness
 
 
 def moist_transfer(mean: Any, over_water: Any, over_cover: Any, cell: Cell, k: Numbers) -> Any:
@@ -187,8 +189,7 @@ def moist_transfer(mean: Any, over_water: Any, over_cover: Any, cell: Cell, k: N
     square = larger(air * air - k.twelfth * difference * difference, cell.pressure)
     lift = cell.buoyancy - over_water
     share = k.one / (lift * square)
-    stefan = k.one + k.stefan * (cell.pressure * air * lift * share - k.one)
-    return convection, evaporation * stefan, square * share
+    return convection, evaporation * (cell.pressure * air * lift * share), square * share
 
 
 def flow(water: Any, cover: Any, ice: Any, cell: Cell, k: Numbers) -> Flow:
@@ -319,7 +320,7 @@ def around(
     slope = k.area_ratio * (k.wind_base + k.wind_slope * wind)
     sky_k = temp_sky + k.kelvin
     sky = k.radiation_outside * sky_k * sky_k * sky_k * sky_k
-    return Weather(absorbed + k.loss * temp_air, cover_absorbed + slope * temp_air + sky, slope)
+    return Weather(k.absorbed_share * absorbed + k.loss * temp_air, cover_absorbed + slope * temp_air + sky, slope)
 
 
 def refreshed(state: State, temp_air: Any, k: Numbers) -> State:
@@ -334,7 +335,7 @@ def refreshed(state: State, temp_air: Any, k: Numbers) -> State:
 
 
 def ledger(m: Move, old: State, new: State, cell: Cell, k: Numbers) -> Any:
-    """Fluxes of a sub-step for the record, in the order of `heat_balance.CHANNELS`."""
+    """Fluxes of a sub-step for the record, in the order of `balance_records.CHANNELS`."""
     f = m.flow
     cover_k = m.cover - m.cover_move + k.kelvin
     emission_g = k.radiation_outside * cover_k * cover_k * cover_k
@@ -346,46 +347,48 @@ def ledger(m: Move, old: State, new: State, cell: Cell, k: Numbers) -> Any:
         f.radiated + f.radiated_w * m.water_move + f.radiated_g * m.cover_move,
         emission_g * (cover_k + k.four * m.cover_move),
         k.half * cell.inertia * ((new.water - new.ice) - (old.water - old.ice)),
+        distilled(m, k),
     )
 
 
+#: Rows of what the march carries from window to window: the fields of `State`, then the litres of the yield
+#: day that has begun and the most ice on it.
+CARRIED = 6
 #: Cells the compiled march carries through time together; their state stays in the first-level cache.
 BLOCK_CELLS = 256
 
 
-def march_cells(
-    forcing: Any, cells: Any, k: Numbers, schedule: Any, daily: Any, frozen: Any, record: Any
-) -> None:
-    """Carry all cells through time, cell by cell: for compilation only (see `balance_compiled`).
+def march_cells(forcing: Any, fixed: Any, walk: Any, carried: Any, results: Any) -> None:
+    """Carry all cells through a window of time, cell by cell: for compilation only (see `balance_compiled`).
 
     It stands here, beside the functions it calls, so that the compiler's cache sees every change of them.
     Arguments as in `balance_numpy.march`.
     """
-    order, rows, substeps = schedule
+    cells, k = fixed
+    record = results[2]
     work = np.empty((9, BLOCK_CELLS), cells.dtype)
     for start in range(0, cells.shape[1], BLOCK_CELLS):
         count = min(BLOCK_CELLS, cells.shape[1] - start)
-        work[0, :] = np.nan
-        clear(work, count, k)
-        for step in range(order.size):
-            row = rows[step]
-            enter_step(work, forcing, order[step], start, count, k)
-            for _ in range(substeps):
-                advance(work, cells, k, record, row, start, count)
-            note_end(record, row, work, start, count)
-            if step + 1 == order.size or rows[step + 1] != row:
-                if row >= 0:
-                    for c in range(count):
-                        daily[row, start + c] = work[7, c]
-                        frozen[row, start + c] = work[8, c] > k.zero
-                clear(work, count, k)
+        work[:CARRIED, :count] = carried[:, start : start + count]
+        for step in range(walk.order.size):
+            enter_step(work, forcing, walk.order[step], start, count, k)
+            for _ in range(walk.substeps):
+                advance(work, cells, k, record, walk.notes[step], start, count)
+            note_end(record, walk.notes[step], work, start, count)
+            if walk.ends[step]:
+                end_day(work, results, walk.rows[step], start, count, k)
+        carried[:, start : start + count] = work[:CARRIED, :count]
 
 
-def clear(work: Any, count: Any, k: Numbers) -> None:
-    """Begin a new row of the result."""
+def end_day(work: Any, results: Any, row: Any, start: Any, count: Any, k: Numbers) -> None:
+    """Give the litres of a yield day as row `row` of the result, if any, and begin the next."""
+    daily, frozen, _ = results
     for c in range(count):
-        work[7, c] = k.zero
-        work[8, c] = k.zero
+        if row >= 0:
+            daily[row, start + c] = work[4, c]
+            frozen[row, start + c] = work[5, c] > k.zero
+        work[4, c] = k.zero
+        work[5, c] = k.zero
 
 
 def enter_step(work: Any, forcing: Any, f: Any, start: Any, count: Any, k: Numbers) -> None:
@@ -400,9 +403,9 @@ def enter_step(work: Any, forcing: Any, f: Any, start: Any, count: Any, k: Numbe
         work[1, c] = state.change
         work[2, c] = state.cover
         work[3, c] = state.ice
-        work[4, c] = weather.water_gain
-        work[5, c] = weather.cover_gain
-        work[6, c] = weather.cover_slope
+        work[6, c] = weather.water_gain
+        work[7, c] = weather.cover_gain
+        work[8, c] = weather.cover_slope
 
 
 def cell_at(cells: Any, i: Any) -> Cell:
@@ -416,7 +419,7 @@ def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any
     """One sub-step of the cells of a block: the loop in which the processor takes several cells at once."""
     for c in range(count):
         old = State(work[0, c], work[1, c], work[2, c], work[3, c])
-        weather = Weather(work[4, c], work[5, c], work[6, c])
+        weather = Weather(work[6, c], work[7, c], work[8, c])
         i = start + c
         cell = cell_at(cells, i)
         moved = move(aim(old, weather, cell, k), old, weather, cell, k)
@@ -425,8 +428,8 @@ def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any
         work[1, c] = new.change
         work[2, c] = new.cover
         work[3, c] = new.ice
-        work[7, c] += distilled(moved, k)
-        work[8, c] = larger(work[8, c], new.ice)
+        work[4, c] += distilled(moved, k)
+        work[5, c] = larger(work[5, c], new.ice)
         note(record, row, i, (moved, old, new), cell, k)
 
 
@@ -435,7 +438,7 @@ def note(record: Any, row: Any, i: Any, sub_step: Any, cell: Cell, k: Numbers) -
     if record is not None and row >= 0:
         moved, old, new = sub_step
         entries = ledger(moved, old, new, cell, k)
-        for channel in range(7):
+        for channel in range(8):
             record[channel, row, i] += entries[channel]
 
 
@@ -443,5 +446,5 @@ def note_end(record: Any, row: Any, work: Any, start: Any, count: Any) -> None:
     """Write the state at the end of a step to the record; left out of the compiled code likewise."""
     if record is not None and row >= 0:
         for c in range(count):
-            record[7, row, start + c] = work[0, c]
-            record[8, row, start + c] = work[3, c]
+            record[8, row, start + c] = work[0, c]
+            record[9, row, start + c] = work[3, c]
