@@ -13,22 +13,18 @@ from stillfield.physics.gain import gain_over_steps
 from stillfield.physics.heat_balance import Forcing
 from stillfield.physics.irradiance import clearness_index
 from stillfield.physics.sky import (
+    CLOUDLESS_CLEARNESS,
     clear_sky_emissivity,
     cloudy_sky_emissivity,
     sky_temperature,
     sky_temperature_swinbank,
 )
+from stillfield.physics.step_optics import MJ_PER_WH, Engine, compiled_forcing, step_optics, uses_numba
 from stillfield.physics.still import Still
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.physics.vapour import KELVIN, dew_point
 
 Array = NDArray[np.floating[Any]]
-
-MJ_PER_WH = 3600.0 / 1e6
-
-#: Clearness of a day whose sky is taken as cloudless: the upper end of the daily clearness of clear dry
-#: places (Duffie & Beckman, fig. 2.9.2, quoted from memory). [1]
-CLOUDLESS_CLEARNESS = 0.75
 
 
 def step_forcing(
@@ -39,8 +35,12 @@ def step_forcing(
     day_of_year: NDArray[np.integer[Any]],
     steps_per_day: int,
     clock_to_solar_hours: Array | float = 0.0,
+    engine: Engine = "auto",
 ) -> tuple[Forcing, Array]:
     """Bring the weather of steps to the still.
+
+    In single precision it is compiled where numba is installed, see `step_optics`: a step is then within 0.1 W m-2
+    and 0.02 K of the exact path that double precision takes.
 
     Parameters
     ----------
@@ -57,6 +57,9 @@ def step_forcing(
         Steps in a day.
     clock_to_solar_hours : ndarray, shape (cell,)
         Hours from the clock to local mean solar time. [h]
+    engine : {'auto', 'compiled', 'numpy'}
+        'numpy' is the exact path in either precision, 'compiled' the quick one, whose results are in single
+        precision.
 
     Returns
     -------
@@ -66,6 +69,13 @@ def step_forcing(
         S, the sunshine transmitted to the basin. [MJ m-2 of basin]
     """
     ghi = weather["ghi"]
+    temp_air, wind_speed = weather["temp_air"], weather["wind_speed"]
+    if uses_numba(engine) and (engine == "compiled" or ghi.dtype == np.float32):
+        optics = step_optics(
+            still, latitude, steps_per_day=steps_per_day, clock_to_solar_hours=clock_to_solar_hours
+        )
+        in_basin, in_cover, above, daily = compiled_forcing(weather, optics, day_of_year)
+        return Forcing(in_basin, in_cover, temp_air, wind_speed, above), daily
     gain = gain_over_steps(
         still, latitude, day_of_year, ghi=ghi, dni=weather.get("dni"), dhi=weather.get("dhi"),
         clock_to_solar_hours=clock_to_solar_hours,
@@ -78,8 +88,8 @@ def step_forcing(
     forcing = Forcing(
         absorbed=absorbed(gain.transmitted, still).astype(dtype, copy=False),
         cover_absorbed=gain.cover_absorbed.astype(dtype, copy=False),
-        temp_air=weather["temp_air"],
-        wind_speed=weather["wind_speed"],
+        temp_air=temp_air,
+        wind_speed=wind_speed,
         temp_sky=sky.astype(dtype, copy=False),
     )
     daily = gain.transmitted.reshape(-1, steps_per_day, gain.transmitted.shape[1]).sum(axis=1)

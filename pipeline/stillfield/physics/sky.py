@@ -9,6 +9,10 @@ from numpy.typing import NDArray
 
 from stillfield.physics.vapour import KELVIN, Field
 
+#: Clearness of a day whose sky is taken as cloudless: the upper end of the daily clearness of clear dry
+#: places (Duffie & Beckman, fig. 2.9.2, quoted from memory). [1]
+CLOUDLESS_CLEARNESS = 0.75
+
 
 def clear_sky_emissivity(temp_dew: Field, solar_hour: Field) -> Field:
     """Emissivity of the clear sky from dew point and hour of the day.
