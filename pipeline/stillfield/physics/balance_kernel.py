@@ -356,6 +356,8 @@ def ledger(m: Move, old: State, new: State, cell: Cell, k: Numbers) -> Any:
 CARRIED = 6
 #: Cells the compiled march carries through time together; their state stays in the first-level cache.
 BLOCK_CELLS = 256
+#: Columns by which the rows of a block are longer, so that they do not all fall on the same lines of that cache.
+SPARE = 16
 
 
 def march_cells(forcing: Any, fixed: Any, walk: Any, carried: Any, results: Any) -> None:
@@ -366,14 +368,16 @@ def march_cells(forcing: Any, fixed: Any, walk: Any, carried: Any, results: Any)
     """
     cells, k = fixed
     record = results[2]
-    work = np.empty((9, BLOCK_CELLS), cells.dtype)
+    work = np.empty((9, BLOCK_CELLS + SPARE), cells.dtype)
+    block = np.empty((8, BLOCK_CELLS + SPARE), cells.dtype)
     for start in range(0, cells.shape[1], BLOCK_CELLS):
         count = min(BLOCK_CELLS, cells.shape[1] - start)
         work[:CARRIED, :count] = carried[:, start : start + count]
+        block[:, :count] = cells[:, start : start + count]
         for step in range(walk.order.size):
             enter_step(work, forcing, walk.order[step], start, count, k)
             for _ in range(walk.substeps):
-                advance(work, cells, k, record, walk.notes[step], start, count)
+                advance(work, block, k, record, walk.notes[step], start, count)
             note_end(record, walk.notes[step], work, start, count)
             if walk.ends[step]:
                 end_day(work, results, walk.rows[step], start, count, k)
@@ -408,20 +412,19 @@ def enter_step(work: Any, forcing: Any, f: Any, start: Any, count: Any, k: Numbe
         work[8, c] = weather.cover_slope
 
 
-def cell_at(cells: Any, i: Any) -> Cell:
-    """Numbers of cell `i`."""
+def cell_at(block: Any, c: Any) -> Cell:
+    """Numbers of cell `c` of a block."""
     return Cell(
-        cells[0, i], cells[1, i], cells[2, i], cells[3, i], cells[4, i], cells[5, i], cells[6, i], cells[7, i]
+        block[0, c], block[1, c], block[2, c], block[3, c], block[4, c], block[5, c], block[6, c], block[7, c]
     )
 
 
-def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any, count: Any) -> None:
+def advance(work: Any, block: Any, k: Numbers, record: Any, row: Any, start: Any, count: Any) -> None:
     """One sub-step of the cells of a block: the loop in which the processor takes several cells at once."""
     for c in range(count):
         old = State(work[0, c], work[1, c], work[2, c], work[3, c])
         weather = Weather(work[6, c], work[7, c], work[8, c])
-        i = start + c
-        cell = cell_at(cells, i)
+        cell = cell_at(block, c)
         moved = move(aim(old, weather, cell, k), old, weather, cell, k)
         new = after(moved, old, cell, k)
         work[0, c] = new.water
@@ -430,7 +433,7 @@ def advance(work: Any, cells: Any, k: Numbers, record: Any, row: Any, start: Any
         work[3, c] = new.ice
         work[4, c] += distilled(moved, k)
         work[5, c] = larger(work[5, c], new.ice)
-        note(record, row, i, (moved, old, new), cell, k)
+        note(record, row, start + c, (moved, old, new), cell, k)
 
 
 def note(record: Any, row: Any, i: Any, sub_step: Any, cell: Cell, k: Numbers) -> None:
