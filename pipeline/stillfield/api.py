@@ -17,7 +17,7 @@ from typing import Any
 import pandas as pd
 import xarray as xr
 
-from stillfield.methods.baselines import ConstantEfficiency
+from stillfield.engine.job import Missing, months_of, prepare
 from stillfield.methods.registry import get_method
 from stillfield.physics.rule import USUAL_EFFICIENCY
 from stillfield.physics.still import Still
@@ -25,11 +25,9 @@ from stillfield.settings.still_file import load_still_file
 from stillfield.sources import guess_kind
 from stillfield.sources.gates import gate
 from stillfield.sources.places import read_places
-from stillfield.stages.aggregate import aggregate
-from stillfield.stages.estimate import estimate
-from stillfield.stages.prepare import prepare
 from stillfield.stages.rank import rank_places
 from stillfield.stages.read import Box, Mask, Region, read_weather
+from stillfield.vocabulary import STEP_HOURS_DAILY
 
 __all__ = ["Box", "Mask", "Region", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
 
@@ -139,9 +137,7 @@ def monthly_yield(
     A still is no barrier to volatile contaminants; distillate must be disinfected, remineralised and tested
     before people drink it. See `stillfield.vocabulary.WATER_CAUTION`.
     """
-    prepared = prepare(weather, min_valid_hours=min_valid_hours, fill_hours=fill_hours)
-    chosen = get_method(method, hourly=prepared.steps is not None)
-    daily = estimate(
-        prepared.daily, still, chosen, rule=ConstantEfficiency(rule_efficiency), steps=prepared.steps
-    )
-    return aggregate(daily, min_valid_days_share=min_valid_days_share)
+    hourly = float(weather.attrs["step_hours"]) < STEP_HOURS_DAILY
+    prepared = prepare(weather, get_method(method, hourly=hourly))
+    missing = Missing(min_valid_hours, fill_hours, min_valid_days_share)
+    return months_of(prepared, [still], rule_efficiency=rule_efficiency, missing=missing).monthly[0]

@@ -81,6 +81,10 @@ class MethodError(StillfieldError):
     """A yield method that does not exist or lacks the weather it needs."""
 
 
+class MemoryLimitError(StillfieldError):
+    """A run that cannot be worked within the memory it is allowed."""
+
+
 class OutputError(StillfieldError):
     """An output that could not be written whole."""
 

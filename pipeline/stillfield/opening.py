@@ -10,16 +10,14 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import pandas as pd
-import xarray as xr
 
-from stillfield.methods import Method
+from stillfield.engine.job import Means, Prepared, prepare
 from stillfield.methods.registry import get_method
 from stillfield.settings.model import RunSettings
 from stillfield.settings.region import Region as RegionKeys
-from stillfield.stages.estimate import weather_for
-from stillfield.stages.prepare import Prepared, prepare
 from stillfield.stages.read import Box, Mask, Region, read_places, read_weather
 from stillfield.stages.write import check_outputs, check_raster
+from stillfield.vocabulary import STEP_HOURS_DAILY
 
 log = logging.getLogger(__name__)
 
@@ -34,19 +32,13 @@ class Opened:
         Output folder of each still, in the order of the settings.
     places : pandas.DataFrame or None
         The villages.
-    weather : xarray.Dataset
-        As the source gives it, cut to the region.
     prepared : Prepared
-        The same on local days; lazy where the source is.
-    method : Method
-        Yield method.
+        Weather, method, and how the region will be worked.
     """
 
     folders: tuple[Path, ...]
     places: pd.DataFrame | None
-    weather: xr.Dataset
     prepared: Prepared
-    method: Method
 
 
 def fits_folder(settings: RunSettings) -> Path:
@@ -94,10 +86,8 @@ def open_run(settings: RunSettings) -> Opened:
         settings.weather.kind, settings.weather.names, region=region, **settings.weather.options()
     )
     log.info("%s", weather.attrs.get("origin", ""))
-    prepared = prepare(
-        weather, min_valid_hours=settings.missing.min_valid_hours, fill_hours=settings.missing.fill_hours
-    )
-    method = get_method(settings.method, hourly=prepared.steps is not None, fits_folder=fits_folder(settings))
-    weather_for(method, prepared.daily, prepared.steps)
-    check_raster(prepared.daily)
-    return Opened(folders, places, weather, prepared, method)
+    hourly = float(weather.attrs["step_hours"]) < STEP_HOURS_DAILY
+    method = get_method(settings.method, hourly=hourly, fits_folder=fits_folder(settings))
+    check_raster(weather)
+    means = Means(settings.compute.workers, settings.compute.memory)
+    return Opened(folders, places, prepare(weather, method, stills=len(settings.stills), means=means))

@@ -12,12 +12,12 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield import __version__
+from stillfield.methods import Method
 from stillfield.methods.fit_store import fit_state
 from stillfield.methods.fitted import Fitted
 from stillfield.opening import Opened, fits_folder, open_run
 from stillfield.physics.still import Still
 from stillfield.settings.model import RunSettings
-from stillfield.stages.estimate import weather_for
 from stillfield.stages.forecast import Job, forecast
 from stillfield.stages.rank import great_circle_km
 from stillfield.stages.survey import outside_box, survey_places, survey_space, survey_time, survey_variables
@@ -64,31 +64,30 @@ def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
         What a run would raise before it computes, in the same words.
     """
     opened = open_run(settings)
-    daily, steps = opened.prepared.daily, opened.prepared.steps
-    used = weather_for(opened.method, daily, steps)
-    taken = [name for name in (*opened.method.needs, *opened.method.uses) if name in used]
-    space, time = survey_space(daily), survey_time(opened.weather, daily)
+    prepared = opened.prepared
+    weather, method, taken = prepared.weather, prepared.method, list(prepared.names)
+    space, time = survey_space(weather), survey_time(weather, prepared.local.time.to_index())
     stills = [_still(settings, still, opened, folder)
               for still, folder in zip(settings.stills, opened.folders, strict=True)]
     files = tuple(getattr(settings.weather, "paths", ()))
     cost = forecast(Job(
-        opened.method.name, steps is not None, sum(path.stat().st_size for path in files),
-        sum(used[name].nbytes for name in taken), space["land_cells"] or space["cells"], time["days"], time["years"],
+        method.name, prepared.local.steps_per_day > 1, sum(path.stat().st_size for path in files),
+        prepared.plan.memory_bytes, space["land_cells"] or space["cells"], time["days"], time["years"],
         len(stills), sum(state == "to be made" for told in stills for state in (told["fits"] or {}).values()),
         space["kind"] == "grid",
     ))
     return {
         "plan_version": PLAN_VERSION, "stillfield": __version__, "name": settings.name, "run_file": str(run_file),
         "weather": {
-            "kind": settings.weather.kind, "origin": str(opened.weather.attrs.get("origin", "")),
-            "files": len(files), "bytes": cost.bytes_to_read, "variables": survey_variables(opened.weather),
-            "conventions": [str(said) for said in opened.weather.attrs.get("conventions", [])],
+            "kind": settings.weather.kind, "origin": str(weather.attrs.get("origin", "")),
+            "files": len(files), "bytes": cost.bytes_to_read, "variables": survey_variables(weather),
+            "conventions": [str(said) for said in weather.attrs.get("conventions", [])],
             "time": time, "space": space,
             "region": None if settings.region is None else settings.region.told(),
         },
         "method": {
-            "name": opened.method.name, "resolution": opened.method.resolution, "variables": taken,
-            "variant": _variant(opened, taken, settings.stills[0]), "has_band": opened.method.knows_condition,
+            "name": method.name, "resolution": method.resolution, "variables": taken,
+            "variant": _variant(method, taken, settings.stills[0]), "has_band": method.knows_condition,
         },
         "stills": stills,
         "places": _places(settings, opened, space),
@@ -97,13 +96,13 @@ def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
     }
 
 
-def _variant(opened: Opened, taken: list[str], still: Still) -> str | None:
-    return opened.method.variant(taken, still) if isinstance(opened.method, Fitted) else None
+def _variant(method: Method, taken: list[str], still: Still) -> str | None:
+    return method.variant(taken, still) if isinstance(method, Fitted) else None
 
 
 def _still(settings: RunSettings, still: Still, opened: Opened, folder: Path) -> dict[str, Any]:
     fits = None
-    if isinstance(opened.method, Fitted):
+    if isinstance(opened.prepared.method, Fitted):
         conditions = dict.fromkeys((still.condition, still.condition_low, still.condition_high))
         fits = {
             condition: fit_state(still.in_condition(condition), fits_folder(settings)) for condition in conditions
@@ -120,7 +119,7 @@ def _places(settings: RunSettings, opened: Opened, space: dict[str, Any]) -> dic
     farthest = settings.places.max_cell_distance_km
     outside = (
         outside_box(opened.places, space["box"]) if space["kind"] == "grid"
-        else _nearest_site_km(opened.places, opened.prepared.daily) > farthest
+        else _nearest_site_km(opened.places, opened.prepared.weather) > farthest
     )
     return {"table": settings.places.table.given, **survey_places(opened.places, outside, farthest)}
 
@@ -134,7 +133,7 @@ def _nearest_site_km(places: pd.DataFrame, sites: xr.Dataset) -> NDArray[np.floa
 
 
 def _outputs(settings: RunSettings, opened: Opened, stills: list[dict[str, Any]], *, grid: bool) -> list[str]:
-    names = file_names(grid=grid, ranked=opened.places is not None, rasters=makes_rasters(opened.prepared.daily))
+    names = file_names(grid=grid, ranked=opened.places is not None, rasters=makes_rasters(opened.prepared.weather))
     outputs = [(folder / name).as_posix() for folder in opened.folders for name in names]
     for still, told in zip(settings.stills, stills, strict=True):
         made = [condition for condition, state in (told["fits"] or {}).items() if state == "to be made"]

@@ -10,16 +10,14 @@ from typing import Any
 
 import xarray as xr
 
+from stillfield.engine.job import Missing, months_of
 from stillfield.methods import Method
-from stillfield.methods.baselines import ConstantEfficiency
 from stillfield.opening import Opened, open_run
 from stillfield.physics.still import Still
 from stillfield.products.summary import Summary, summarise
 from stillfield.settings.load import resolved_yaml
 from stillfield.settings.model import RunSettings
-from stillfield.stages.aggregate import aggregate
-from stillfield.stages.audit import Audit, audit
-from stillfield.stages.estimate import estimate
+from stillfield.stages.audit import Audit, Sample, audit
 from stillfield.stages.rank import rank_places
 from stillfield.stages.read import describe_inputs
 from stillfield.stages.write import Results, write_results
@@ -53,28 +51,35 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     files += [] if settings.region is None else [str(named.path) for named in settings.region.files]
     files += [str(choice.path) for choice in settings.still]
     inputs = describe_inputs(dict.fromkeys(files), Path(run_file).parent)
-    summaries = []
-    for still, folder in zip(settings.stills, opened.folders, strict=True):
-        summaries.append(_one_still(settings, still, opened, inputs=inputs, folder=folder))
+    said = len(opened.prepared.weather.attrs.get("conventions", []))
+    log.info("estimating by method %s", settings.method)
+    outcome = months_of(
+        opened.prepared, settings.stills, rule_efficiency=settings.rule.efficiency,
+        missing=Missing(**settings.missing.model_dump()), progress=_tell_progress,
+    )
+    for sentence in outcome.monthly[0].attrs.get("conventions", [])[said:]:
+        log.info("%s", sentence)  # what was counted on the way
+    summaries = [
+        _one_still(settings, still, opened, monthly, outcome.sample, inputs=inputs, folder=folder)
+        for still, monthly, folder in zip(settings.stills, outcome.monthly, opened.folders, strict=True)
+    ]
     return Summary(
         "\n".join(summary.text for summary in summaries),
         tuple(file for summary in summaries for file in summary.files),
     )
 
 
+def _tell_progress(done: int, of: int) -> None:
+    if of > 1:
+        log.info("%d of %d blocks done", done, of)
+
+
 def _one_still(
-    settings: RunSettings, still: Still, opened: Opened, *, inputs: dict[str, dict[str, Any]], folder: Path
+    settings: RunSettings, still: Still, opened: Opened, monthly: xr.Dataset, sample: Sample, *,
+    inputs: dict[str, dict[str, Any]], folder: Path,
 ) -> Summary:
-    log.info("estimating %s by method %s", still.name, settings.method)
-    method, prepared, places = opened.method, opened.prepared, opened.places
-    daily = estimate(
-        prepared.daily, still, method, rule=ConstantEfficiency(settings.rule.efficiency),
-        steps=prepared.steps,
-    )
-    monthly = aggregate(daily, min_valid_days_share=settings.missing.min_valid_days_share)
+    method, places = opened.prepared.method, opened.places
     counts = json.loads(monthly.attrs.get("counts", "{}"))
-    for sentence in monthly.attrs.get("conventions", [])[len(prepared.daily.attrs.get("conventions", [])):]:
-        log.info("%s", sentence)  # what was counted on the way
     ranked = None
     if places is not None and settings.places is not None:
         ranked = rank_places(
@@ -84,7 +89,7 @@ def _one_still(
         )
     audited = None
     if method.name == "fitted":
-        audited = audit(method, monthly, prepared.daily, still, steps=prepared.steps)
+        audited = audit(method, monthly["annual_yield"].to_numpy().ravel(), sample, still)
         log.log(logging.INFO if audited.passed else logging.WARNING, "%s", audited.sentence())
     title = f"Solar still yield, {settings.name}"
     condition = f", {still.condition}" if method.knows_condition else ""

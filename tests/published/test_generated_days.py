@@ -10,9 +10,11 @@ import pytest
 import xarray as xr
 from scipy.integrate import quad
 from scipy.optimize import brentq
+from stillfield.stages.estimate import estimate
 
 import stillfield as sf
 from data.fetch import fetched
+from stillfield.engine.labelled import on_local_days
 from stillfield.methods.baselines import ConstantEfficiency
 from stillfield.methods.registry import get_method
 from stillfield.physics.clearness_days import (
@@ -25,8 +27,6 @@ from stillfield.physics.clearness_days import (
 )
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.stages.aggregate import aggregate
-from stillfield.stages.estimate import estimate
-from stillfield.stages.prepare import prepare
 
 STILL = Path(__file__).parents[2] / "config" / "stills" / "single-slope-glass.yaml"
 MONTH = np.repeat(np.arange(12), DAYS_IN_MONTH)
@@ -98,7 +98,7 @@ def _years() -> list[tuple[str, xr.Dataset, xr.Dataset, xr.Dataset]]:
     """Name, real days, generated days and mean days of every site: the same monthly means."""
     years = []
     for name in [*SHIPPED, *(str(fetched(name)) for name in FETCHED)]:
-        real = prepare(sf.open_weather(name)).daily.compute()
+        real = on_local_days(sf.open_weather(name)).daily.compute()
         real = real[[v for v in ("irradiation", "temp_air", "wind_speed", "temp_dew") if v in real]]
         means = real.copy(deep=True)
         for values in means.data_vars.values():

@@ -14,7 +14,7 @@ import xarray as xr
 
 import stillfield as sf
 from data.fetch import fetched
-from stillfield.stages.prepare import prepare
+from stillfield.engine.labelled import on_local_days
 from whole_runs import CONFIG
 
 #: Name, latitude, longitude, zone: from the metadata beside the files.
@@ -43,7 +43,7 @@ def compared(weather: xr.Dataset, still: str, condition: str, keep: tuple[str, .
     truth = sf.monthly_yield(weather, design, "heat-balance")
     given = weather
     if keep is not None:
-        daily = prepare(weather).daily[list(keep)]
+        daily = on_local_days(weather).daily[list(keep)]
         given = daily.assign_attrs(record="typical-year", step_hours=24.0, clock="own-days")
     ours = sf.monthly_yield(given, design, "fitted")["monthly_yield"]
     fine = (truth["frost_share"] == 0) & (truth["monthly_yield"] > 3.0)

@@ -7,9 +7,8 @@ import pandas as pd
 import pytest
 import xarray as xr
 
+from stillfield.engine.labelled import on_local_days
 from stillfield.errors import WeatherError
-from stillfield.sources.tally import totals
-from stillfield.stages.prepare import align_to_local_days, prepare
 
 LONGITUDES = np.array([-179.0, -150.0, -75.0, 0.0, 52.5, 150.0, 179.0])
 
@@ -43,7 +42,7 @@ def hourly_utc(days: int = 10, step_hours: float = 1.0, calendar: str = "standar
 @pytest.mark.parametrize("step_hours", [0.5, 1.0, 3.0, 6.0])
 def test_every_longitude_gets_its_own_solar_day(step_hours: float) -> None:
     weather = hourly_utc(step_hours=step_hours)
-    daily = prepare(weather).daily["irradiation"]
+    daily = on_local_days(weather).daily["irradiation"]
     # The integral of the half sine of amplitude A is 24 A / pi watt-hours; the midpoint sum of the step differs.
     centre = (np.arange(24 / step_hours) + 0.5) * step_hours
     weights = sunny_day(centre).sum() / 600.0 * step_hours * 3600e-6
@@ -59,14 +58,14 @@ def test_every_longitude_gets_its_own_solar_day(step_hours: float) -> None:
 def test_utc_days_would_have_been_wrong_far_from_greenwich() -> None:
     weather = hourly_utc()
     utc = weather["ghi"].coarsen(time=24).sum().isel(latitude=0, longitude=5) * 3600e-6
-    local = prepare(weather).daily["irradiation"].isel(latitude=0, longitude=5)
+    local = on_local_days(weather).daily["irradiation"].isel(latitude=0, longitude=5)
     good = local.to_numpy()[np.isfinite(local.to_numpy())]
     assert abs(utc.to_numpy()[1:-1] - good[: utc.size - 2]).max() > 0.3
 
 
 def test_energy_of_whole_days_is_conserved() -> None:
     weather = hourly_utc()
-    daily = prepare(weather).daily["irradiation"]
+    daily = on_local_days(weather).daily["irradiation"]
     ghi = weather["ghi"].to_numpy()
     for column, longitude in enumerate(LONGITUDES):
         local_day = (np.arange(len(ghi)) + round(longitude / 15.0)) // 24
@@ -77,12 +76,12 @@ def test_energy_of_whole_days_is_conserved() -> None:
 
 
 def test_edge_days_are_missing_and_counted() -> None:
-    prepared = prepare(hourly_utc())
+    prepared = on_local_days(hourly_utc())
     east = prepared.daily["irradiation"].isel(latitude=0).sel(longitude=150.0)
     greenwich = prepared.daily["irradiation"].isel(latitude=0).sel(longitude=0.0)
     assert int(greenwich.notnull().sum()) == 10
     assert int(east.notnull().sum()) == 9
-    counted = totals(prepared.daily["count"].values, prepared.daily["counts"].values)["days"]
+    counted = prepared.counts["days"]
     # 10 UTC days, shifted by -12, -10, -5, 0, 4, 10 or 12 h: each column away from Greenwich holds 9 local days whole
     # and one in part at either end; two rows of cells.
     assert counted == {"edge": 2 * 6 * 2, "incomplete": 0, "values": 2 * (10 + 6 * 11)}
@@ -91,7 +90,7 @@ def test_edge_days_are_missing_and_counted() -> None:
 @pytest.mark.parametrize("calendar", ["noleap", "360_day", "all_leap", "proleptic_gregorian"])
 def test_calendars_pass_through(calendar: str) -> None:
     weather = hourly_utc(calendar=calendar)
-    daily = prepare(weather).daily
+    daily = on_local_days(weather).daily
     assert daily["time"].dt.calendar == calendar
     assert daily.sizes["time"] >= 10
 
@@ -99,22 +98,23 @@ def test_calendars_pass_through(calendar: str) -> None:
 def test_a_missing_hour_of_sun_makes_the_day_missing() -> None:
     weather = hourly_utc()
     weather["ghi"][36, :, 3] = np.nan  # noon of the second day at Greenwich
-    daily = prepare(weather).daily["irradiation"].isel(latitude=0).sel(longitude=0.0)
+    daily = on_local_days(weather).daily["irradiation"].isel(latitude=0).sel(longitude=0.0)
     assert np.flatnonzero(np.isnan(daily.to_numpy())).tolist() == [1]
 
 
 def test_a_gap_in_time_is_not_closed_up() -> None:
     weather = hourly_utc()
-    daily = prepare(weather.isel(time=np.r_[0:60, 90:240])).daily["irradiation"].sel(longitude=0.0).isel(latitude=0)
+    holed = on_local_days(weather.isel(time=np.r_[0:60, 90:240])).daily
+    daily = holed["irradiation"].sel(longitude=0.0).isel(latitude=0)
     assert np.flatnonzero(np.isnan(daily.to_numpy())).tolist() == [2, 3]
-    whole = prepare(weather).daily["irradiation"].sel(longitude=0.0).isel(latitude=0)
+    whole = on_local_days(weather).daily["irradiation"].sel(longitude=0.0).isel(latitude=0)
     np.testing.assert_allclose(daily.to_numpy()[4:], whole.to_numpy()[4:])
 
 
 def test_backward_time_is_refused() -> None:
     weather = hourly_utc()
     with pytest.raises(WeatherError, match="time does not run forward"):
-        prepare(weather.isel(time=[0, 1, 1, 2]))
+        on_local_days(weather.isel(time=[0, 1, 1, 2]))
 
 
 def test_local_standard_days_are_kept_and_the_sun_is_told_the_rest() -> None:
@@ -127,7 +127,7 @@ def test_local_standard_days_are_kept_and_the_sun_is_told_the_rest() -> None:
         },
         attrs={"record": "typical-year", "step_hours": 1.0, "clock": "local-standard"},
     )
-    steps = align_to_local_days(weather, 1.0)
+    steps = on_local_days(weather).steps
     assert steps["ghi"].sizes == {"time": 2, "step": 24, "site": 1}
     assert float(steps["clock_to_solar_hours"][0]) == pytest.approx(103.98 / 15 - 8 + 2 / 60)
 
@@ -136,9 +136,8 @@ def test_daily_weather_passes_through_with_its_own_days() -> None:
     time = pd.date_range("2001-01-01", periods=3, freq="D")
     values = np.array([[20.0], [np.nan], [22.0]])
     weather = xr.Dataset(
-        {"irradiation": (("time", "site"), values)}, coords={"time": time, "site": ["a"]},
+        {"irradiation": (("time", "site"), values)}, coords={"time": time, "site": ["a"], "latitude": ("site", [10.0])},
         attrs={"step_hours": 24.0, "record": "series", "clock": "own-days"},
     )
-    daily = prepare(weather).daily
+    daily = on_local_days(weather).daily
     np.testing.assert_array_equal(daily["irradiation"], values)
-    assert daily["valid_hours"].to_numpy().ravel().tolist() == [24.0, 0.0, 24.0]

@@ -13,7 +13,7 @@ from stillfield.physics.clearness_days import DAYS_IN_MONTH
 from stillfield.sources import open_source
 from stillfield.stages.aggregate import aggregate
 from stillfield.stages.estimate import estimate
-from stillfield.stages.prepare import prepare
+from stillfield.engine.labelled import on_local_days
 
 LATITUDE, LONGITUDE = np.array([10.0, 12.0]), np.array([40.0, 42.0, 44.0])
 #: Mean daily irradiation of each month [MJ m-2] at the first cell; the others have a little less.
@@ -161,7 +161,7 @@ def test_days_differ_and_their_yield_is_not_that_of_the_mean_day(tmp_path, still
     rule, method = rule_and_method
     days = opened(written(means(), tmp_path / "m.nc"))
     assert float(days.irradiation.isel(latitude=0, longitude=0)[:31].std()) > 2.0
-    monthly = aggregate(estimate(prepare(days).daily, still, method, rule=rule))
+    monthly = aggregate(estimate(on_local_days(days).daily, still, method, rule=rule))
     assert "monthly_yield_poor_year" not in monthly
     assert (monthly.days_used == monthly.days_expected).all()
 

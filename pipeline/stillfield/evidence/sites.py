@@ -11,10 +11,10 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.api import open_weather
+from stillfield.engine.labelled import on_local_days
 from stillfield.errors import WeatherError
 from stillfield.methods import Block, Method
 from stillfield.physics.still import Still
-from stillfield.stages.prepare import prepare
 
 Array = NDArray[np.floating[Any]]
 
@@ -90,7 +90,7 @@ def open_sites(files: Sequence[str]) -> Sites:
     if weather.attrs.get("record") != "typical-year" or "site" not in weather.dims:
         raise WeatherError("evidence is worked out on typical years", where=", ".join(files),
                            got=str(weather.attrs.get("origin")), cure="Name typical-year files of stations.")
-    prepared = prepare(weather)
+    prepared = on_local_days(weather)
     if prepared.steps is None:
         raise WeatherError("evidence needs steps shorter than a day", where=", ".join(files), got="days")
     names = weather["name"] if "name" in weather.coords else weather["site"]

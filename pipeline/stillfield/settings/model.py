@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Annotated, Any
@@ -160,6 +161,26 @@ class Missing(Group):
     )
 
 
+def _as_bytes(value: Any) -> Any:
+    """Bytes of a size such as '2 GB'."""
+    found = re.fullmatch(r"\s*(\d+(?:\.\d+)?)\s*([kMGT]?)i?B\s*", value) if isinstance(value, str) else None
+    if found is None:
+        raise refuse(f"should be a size such as '2 GB' (got {harmless(value)!r})")
+    return round(float(found[1]) * 1000 ** " kMGT".index(found[2] or " "))
+
+
+class Compute(Group):
+    """What the run may use of the machine."""
+
+    memory: Annotated[int, BeforeValidator(_as_bytes), PlainSerializer(lambda size: f"{size / 1e6:g} MB"),
+                      WithJsonSchema({"type": "string", "pattern": r"^\s*\d+(\.\d+)?\s*[kMGT]?i?B\s*$"})] | None = Field(
+        None, description="Memory that may be used, such as '2 GB'; no limit without it"
+    )
+    workers: int | None = Field(
+        None, ge=1, le=1024, description="Blocks worked at the same time; one per processor without it"
+    )
+
+
 class Output(Group):
     """Where results go."""
 
@@ -221,6 +242,8 @@ class RunSettings(Group):
     rank: Section[Rank] = Field(default_factory=Rank, description="How the places are ordered")
     missing: Section[Missing] = Field(default_factory=Missing, description="When weather is too scarce")
     output: Section[Output] = Field(default_factory=Output, description="Where results go")
+    compute: Section[Compute] = Field(
+        default_factory=Compute, description="What the run may use of the machine")
     map: Section[Map] = Field(default_factory=Map, description="What the maps show beside the results")
 
     @field_validator("name")

@@ -7,74 +7,16 @@ value known, and set to 0.
 
 from __future__ import annotations
 
-from functools import partial
 from typing import Any
 
-import dask.array as da
 import numpy as np
-import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.physics.sun import declination, equation_of_time, sunset_hour_angle
-from stillfield.sources.calendars import solar_day_of_year
-from stillfield.sources.tally import cell_counts, with_counts
 
-#: Weather that may be bridged.
+#: Weather that may be bridged, and weather that is known by night.
 SMOOTH = ("temp_air", "temp_dew", "relative_humidity", "wind_speed")
-_SUNSHINE = ("ghi", "dni", "dhi")
-
-
-def fill_gaps(weather: xr.Dataset, *, step_hours: float, fill_hours: float) -> xr.Dataset:
-    """Bridge short gaps of smooth weather and set missing sunshine of the night to 0, each counted.
-
-    Parameters
-    ----------
-    weather : Dataset
-        Regular steps along ``time``, marked by their start; attribute ``clock``.
-    step_hours : float
-        [h]
-    fill_hours : float
-        Longest gap that is bridged; 0 bridges none. [h]
-
-    Returns
-    -------
-    Dataset
-        Lazy where `weather` is; counts of kind 'filled' and 'night' added.
-    """
-    result = weather
-    longest = int(fill_hours / step_hours + 1e-9)
-    for name in (name for name in SMOOTH if name in weather and longest):
-        before = weather[name].transpose("time", ...)
-        after = before.copy(data=_bridged(before.data, longest))
-        result = with_counts(result.assign({name: after}), name, {"filled": _became_valid(before, after)})
-    dark = None
-    for name in (name for name in _SUNSHINE if name in weather):
-        before = weather[name].transpose("time", ...)
-        dark = _solar_position(weather, step_hours) if dark is None else dark
-        after = xr.apply_ufunc(_dark_is_zero, before, *dark, kwargs={"half_step_hours": step_hours / 2.0},
-                               dask="parallelized", output_dtypes=[before.dtype], keep_attrs=True)
-        after = after.transpose(*before.dims)
-        result = with_counts(result.assign({name: after}), name, {"night": _became_valid(before, after)})
-    return result
-
-
-def _became_valid(before: xr.DataArray, after: xr.DataArray) -> xr.DataArray:
-    def missing(values: xr.DataArray) -> xr.DataArray:
-        return cell_counts(values, _count_missing, ("missing",))["missing"]
-
-    return missing(before) - missing(after)
-
-
-def _count_missing(block: NDArray[Any]) -> NDArray[np.int64]:
-    return np.asarray(np.count_nonzero(np.isnan(block), axis=0), dtype=np.int64)[np.newaxis]
-
-
-def _bridged(data: Any, longest: int) -> Any:
-    if not isinstance(data, da.Array):
-        return bridge(data, longest)
-    depth = {0: min(longest + 1, data.shape[0])}
-    return da.map_overlap(partial(bridge, longest=longest), data, depth=depth, boundary="none", dtype=data.dtype,
-                          meta=np.empty((0,) * data.ndim, data.dtype))
+SUNSHINE = ("ghi", "dni", "dhi")
 
 
 def bridge(values: NDArray[Any], longest: int) -> NDArray[Any]:
@@ -111,26 +53,32 @@ def bridge(values: NDArray[Any], longest: int) -> NDArray[Any]:
     return np.where(fill, left + share * (right - left), values).astype(values.dtype)
 
 
-def _solar_position(weather: xr.Dataset, step_hours: float) -> tuple[xr.DataArray, xr.DataArray, xr.DataArray]:
-    """Day of the year, clock hour of the middle of each step with the equation of time, and place of each cell."""
-    time = weather["time"]
-    day = solar_day_of_year(time)
-    clock = time.dt.hour.values + time.dt.minute.values / 60.0 + step_hours / 2.0 + equation_of_time(day)
-    to_solar = weather["longitude"] / 15.0
-    if weather.attrs.get("clock") == "local-standard":
-        to_solar = to_solar - weather["utc_offset_hours"]
-    days = xr.DataArray(np.asarray(day, dtype=float), dims="time")
-    middle = xr.DataArray(clock, dims="time") + to_solar.reset_coords(drop=True)
-    return days, middle, weather["latitude"].reset_coords(drop=True)
+def dark(
+    solar_hour: NDArray[Any], day_of_year: NDArray[Any], latitude: NDArray[Any], *, step_hours: float
+) -> NDArray[np.bool_]:
+    """Tell during which steps the sun is down from beginning to end.
 
+    Parameters
+    ----------
+    solar_hour : ndarray
+        Middle of the step in local mean solar time. [h]
+    day_of_year : ndarray
+        1 to 366.
+    latitude : ndarray
+        [deg north]
+    step_hours : float
+        [h]
 
-def _dark_is_zero(
-    values: NDArray[Any], day: NDArray[Any], solar_hour: NDArray[Any], latitude: NDArray[Any], *, half_step_hours: float
-) -> NDArray[Any]:
-    gap = np.isnan(values)
-    if not gap.any():
-        return values
-    sunset_hours = sunset_hour_angle(latitude, declination(day)) * (12.0 / np.pi)
-    from_noon = np.abs((solar_hour - 12.0 + 12.0) % 24.0 - 12.0)
-    dark = from_noon - half_step_hours >= sunset_hours
-    return np.where(gap & dark, values.dtype.type(0.0), values)
+    Returns
+    -------
+    ndarray of bool
+        Of the shape the three have together.
+
+    Examples
+    --------
+    >>> dark(np.array([1.5, 6.5, 12.5]), np.array(80), np.array(10.0), step_hours=1.0).tolist()
+    [True, False, False]
+    """
+    sunset_hours = sunset_hour_angle(latitude, declination(day_of_year)) * (12.0 / np.pi)
+    from_noon = np.abs((solar_hour + equation_of_time(day_of_year)) % 24.0 - 12.0)
+    return np.asarray(from_noon - step_hours / 2.0 >= sunset_hours)

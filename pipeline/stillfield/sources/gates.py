@@ -194,6 +194,28 @@ def _label(values: xr.DataArray, index: tuple[Any, ...]) -> str:
     return ", ".join(parts) or f"index {tuple(int(i) for i in index)}"
 
 
+def most_irradiation(outside: Array) -> Array:
+    """Most irradiation [MJ m-2] that a day can have by that outside the atmosphere, with a margin."""
+    return outside * _MARGIN_FACTOR + _MARGIN_MJ
+
+
+def refuse_sunshine(found: float, allowed: float, number: int, *, where: str) -> None:
+    """Refuse more sunshine than reaches the top of the atmosphere.
+
+    Raises
+    ------
+    WeatherError
+        Always.
+    """
+    raise WeatherError(
+        "more sunshine than reaches the top of the atmosphere",
+        where=where,
+        got=f"{found:.2f} MJ m-2 in the day; {number} such days",
+        wanted=f"at most {allowed:.2f} MJ m-2",
+        cure="Check the units and what the sunshine `means` (mean or total, of which period).",
+    )
+
+
 def _check_sunshine(weather: xr.Dataset, *, daily: bool, where: str) -> None:
     sun = _daily_irradiation(weather, daily=daily)
     if sun is None:
@@ -201,9 +223,10 @@ def _check_sunshine(weather: xr.Dataset, *, daily: bool, where: str) -> None:
     latitude = np.atleast_1d(weather["latitude"].values).astype(float)
     day_of_year = np.atleast_1d(solar_day_of_year(sun["time"]))
     outside = xr.DataArray(
-        extraterrestrial_irradiation(latitude, day_of_year), dims=("time", weather["latitude"].dims[0])
+        most_irradiation(extraterrestrial_irradiation(latitude, day_of_year)),
+        dims=("time", weather["latitude"].dims[0]),
     )
-    limit = (outside * _MARGIN_FACTOR + _MARGIN_MJ).transpose(*[d for d in sun.dims if d in outside.dims])
+    limit = outside.transpose(*[d for d in sun.dims if d in outside.dims])
     with np.errstate(invalid="ignore"):
         breach = (sun.drop_vars(list(sun.coords)) > limit).transpose(*sun.dims).values
     if not breach.any():
@@ -211,13 +234,7 @@ def _check_sunshine(weather: xr.Dataset, *, daily: bool, where: str) -> None:
     first = np.unravel_index(int(np.argmax(breach)), breach.shape)
     marks = dict(zip(sun.dims, first, strict=True))
     allowed = limit.isel({d: marks[d] for d in limit.dims})
-    raise WeatherError(
-        "more sunshine than reaches the top of the atmosphere",
-        where=f"{where}, {_label(sun, first)}",
-        got=f"{float(sun.values[first]):.2f} MJ m-2 in the day; {int(breach.sum())} such days",
-        wanted=f"at most {float(allowed):.2f} MJ m-2",
-        cure="Check the units and what the sunshine `means` (mean or total, of which period).",
-    )
+    refuse_sunshine(float(sun.values[first]), float(allowed), int(breach.sum()), where=f"{where}, {_label(sun, first)}")
 
 
 def _daily_irradiation(weather: xr.Dataset, *, daily: bool) -> xr.DataArray | None:

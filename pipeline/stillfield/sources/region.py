@@ -205,14 +205,16 @@ def _gap_inside(longitude: NDArray[Any]) -> bool:
 
 
 def _missing_outside(weather: xr.Dataset, inside: xr.DataArray) -> xr.Dataset:
-    """Weather missing in cells outside, which then count nothing either."""
+    """Weather missing in cells outside, which then count nothing either; coordinate ``inside`` tells them apart."""
     kept = {}
     for name, values in weather.data_vars.items():
         if not set(inside.dims) <= set(values.dims):
             continue
         kept[name] = values.where(inside, 0) if name == COUNTS else values.where(inside)
         kept[name].attrs = values.attrs
-    return weather.assign(kept)
+    if "inside" in weather.coords:
+        inside = inside & weather["inside"].drop_vars("inside")
+    return weather.assign(kept).assign_coords(inside=inside.drop_vars(list(inside.coords)))
 
 
 def _on_land(weather: xr.Dataset, mask: Mask) -> tuple[xr.Dataset, str]:

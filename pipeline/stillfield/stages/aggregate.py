@@ -1,151 +1,179 @@
 """Aggregate: days to months, months to years and a climatology, with day counts beside every figure.
 
 A month is the mean of its valid days times the days it has in its calendar, never the sum of the days that
-happen to be there; with too few valid days it is missing, not small.
+happen to be there; with too few valid days it is missing, not small. Days come window by window; of them only
+sums are kept, and of the months of every year the one figure that the poor year is taken from.
 """
 
 from __future__ import annotations
 
-import json
-from functools import partial
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from importlib.util import find_spec
 from typing import Any
 
-import dask.array as da
 import numpy as np
 import xarray as xr
-from dask.base import compute
 from numpy.typing import NDArray
 
-from stillfield.sources.tally import COUNT, COUNTS, sentences, totals
 from stillfield.vocabulary import YIELD
 
-MONTHS = 12
+Array = NDArray[np.floating[Any]]
 
-_MEANT = ("daily_yield", "daily_yield_low", "daily_yield_high", "daily_yield_rule")
-_COUNTED = ("frost", "outside_fit")
+MONTHS = 12
 #: Share of years whose month is better than the poor-year month. [1]
 POOR_YEAR_REACHED = 0.9
 
+#: What is summed over the valid days of a month, in this order; the count of these days comes last.
+CENTRAL, LOW, HIGH, SUNSHINE, FROST, OUTSIDE, COUNT = range(7)
+_ROWS = 7
+_MEANT = {
+    "monthly_yield": CENTRAL, "monthly_yield_low": LOW, "monthly_yield_high": HIGH, "monthly_yield_rule": SUNSHINE,
+}
 
-def aggregate(daily: xr.Dataset, *, min_valid_days_share: float = 0.8) -> xr.Dataset:
-    """Monthly litres of every cell: by year, climatology, band, rule, annual and worst month.
+
+@dataclass(frozen=True)
+class Months:
+    """Calendar months that the days of a record lie in.
+
+    Attributes
+    ----------
+    year, month : ndarray of int, shape (calendar month,)
+        Of every month that has a day, in order of time; 1 to 12.
+    length : ndarray, shape (calendar month,)
+        Days it has in its calendar. [d]
+    of_day : ndarray of int, shape (day,)
+        Number of the month every day lies in.
+    typical : bool
+        Whether the record is a typical year.
+    """
+
+    year: NDArray[np.int64]
+    month: NDArray[np.int64]
+    length: Array
+    of_day: NDArray[np.int64]
+    typical: bool = False
+
+    @classmethod
+    def of(cls, time: xr.DataArray, *, typical: bool = False) -> Months:
+        """Months of the dates `time`, of any CF calendar."""
+        year, month = time.dt.year.to_numpy().astype(np.int64), time.dt.month.to_numpy().astype(np.int64)
+        starts = np.concatenate([[0], np.flatnonzero(np.diff(year * MONTHS + month)) + 1])
+        of_day = np.repeat(np.arange(starts.size), np.diff([*starts, time.size]))
+        length = time.dt.days_in_month.to_numpy()[starts].astype(np.float64)
+        return cls(year[starts], month[starts], length, of_day, typical)
+
+    @property
+    def years(self) -> NDArray[np.int64]:
+        """Calendar years from the first to the last."""
+        return np.arange(self.year[0], self.year[-1] + 1)
+
+
+@dataclass
+class MonthSums:
+    """Months of some cells, filled while their days go by.
+
+    Attributes
+    ----------
+    months : Months
+        Calendar of the record.
+    min_valid_days_share : float
+        A month with a smaller share of valid days is missing. [1]
+    by_year : ndarray of float32, shape (calendar month, cell)
+        Central litres of every month; NaN where missing. [L m-2 month-1]
+    totals : ndarray, shape (CENTRAL .. OUTSIDE, 12, cell)
+        Sums over the years that have the month: of litres (sunshine: of irradiation), and of flagged days.
+    used, valid : ndarray, shape (12, cell)
+        Days used, and years that have the month.
+    """
+
+    months: Months
+    min_valid_days_share: float
+    by_year: Array
+    totals: Array
+    used: Array
+    valid: Array
+    _open: tuple[int, Array] = field(repr=False)
+
+    @classmethod
+    def begin(cls, months: Months, cells: int, *, min_valid_days_share: float) -> MonthSums:
+        """Set out with no day counted."""
+        return cls(
+            months, min_valid_days_share, np.full((months.month.size, cells), np.nan, np.float32),
+            np.zeros((COUNT, MONTHS, cells)), np.zeros((MONTHS, cells)), np.zeros((MONTHS, cells)),
+            (0, np.zeros((_ROWS, cells))),
+        )
+
+    def add(self, first_day: int, days: Sequence[Array], flags: Sequence[NDArray[np.bool_] | None]) -> None:
+        """Take in the next days.
+
+        Parameters
+        ----------
+        first_day : int
+            Number of the first of them in the record; days come in order, without a gap.
+        days : sequence of ndarray, each of shape (day, cell)
+            Central, low and high litres and irradiation. [L m-2], [MJ m-2]
+        flags : sequence of ndarray of bool or None
+            Frost, and outside the range of the method.
+        """
+        count = days[0].shape[0]
+        if count == 0:
+            return
+        slot = self.months.of_day[first_day:first_day + count]
+        started, carried = self._open
+        sums = np.zeros((int(slot[-1]) - started + 1, *carried.shape))
+        sums[0] = carried
+        _month_sums()(days, flags, slot - started, sums)
+        ended = slot[-1] + (first_day + count == self.months.of_day.size)
+        for month in range(started, int(ended)):
+            self._close(month, sums[month - started])
+        self._open = (int(ended), sums[-1] if ended == slot[-1] else np.zeros_like(carried))
+
+    def _close(self, number: int, sums: Array) -> None:
+        count, length = sums[COUNT], float(self.months.length[number])
+        row = self.months.month[number] - 1
+        enough = count >= self.min_valid_days_share * length
+        stretch = np.where(enough, length / np.maximum(count, 1.0), 0.0)
+        self.by_year[number] = np.where(enough, sums[CENTRAL] * stretch, np.nan)
+        self.totals[:FROST, row] += sums[:FROST] * stretch
+        self.totals[FROST:, row] += sums[FROST:COUNT] * enough
+        self.used[row] += count * enough
+        self.valid[row] += enough
+
+
+def _month_sums() -> Any:
+    if find_spec("numba") is None:
+        return month_sums
+    from stillfield.stages.month_sums_compiled import month_sums as compiled
+
+    return compiled
+
+
+def month_sums(
+    days: Sequence[Array], flags: Sequence[NDArray[np.bool_] | None], slot: NDArray[np.int64], out: Array
+) -> None:
+    """Add days with central litres to the sums of their months, strictly one after the other.
 
     Parameters
     ----------
-    daily : xarray.Dataset
-        Daily yields as `estimate` gives them; may be lazy, everything is worked in one pass.
-    min_valid_days_share : float
-        A month with a smaller share of valid days is missing. [1]
-
-    Returns
-    -------
-    xarray.Dataset
-        In memory; dimension ``month`` (1 to 12), ``year`` for the yearly values, and space.
-        ``monthly_yield``, ``monthly_yield_low``, ``monthly_yield_high``, ``monthly_yield_rule``
-        [L m-2 month-1], means over the years; ``monthly_yield_by_year``; ``monthly_yield_poor_year``,
-        reached or passed in 9 of 10 years (absent for typical years); ``annual_yield`` [L m-2 year-1];
-        ``worst_month`` (1 to 12, fewest litres per day) and ``worst_month_yield`` [L m-2 d-1];
-        ``days_used`` and ``days_expected`` (all years together), ``frost_days_share``,
-        ``outside_fit_share`` of the days used. Attribute ``counts`` (JSON: quantity, kind, number; see
-        `stillfield.sources.tally`) says what was clipped, filled, missing or dropped in the weather.
+    days, flags
+        As for `MonthSums.add`.
+    slot : ndarray of int, shape (day,)
+        Row of `out` of every day.
+    out : ndarray, shape (month, row, cell)
+        Changed in place.
     """
-    years, month_of, starts, ends = _calendar(daily["time"])
-    expected = _days_in_month(daily["time"], starts)
-    sums, counted = _month_sums(daily, starts, ends)
-    counts = sums["count"]
-    enough = counts >= min_valid_days_share * expected[(slice(None), *[None] * (counts.ndim - 1))]
-    space = [dim for dim in daily["daily_yield"].dims if dim != "time"]
-    slot = (years - years[0]) * MONTHS + month_of - 1
-    shape = (int(years[-1] - years[0]) + 1, MONTHS, *[daily.sizes[dim] for dim in space])
-    by_year = {
-        name: _filled(np.where(enough, sums[name] / np.maximum(counts, 1) * _stretch(expected, counts), np.nan),
-                      slot, shape)
-        for name in _MEANT
-    }
-    used = _filled(np.where(enough, counts, 0.0), slot, shape, empty=0.0)
-    flags = {name: _filled(np.where(enough, sums[name], 0.0), slot, shape, empty=0.0) for name in _COUNTED}
-    length = _filled(np.broadcast_to(_stretch(expected, counts), counts.shape), slot, shape)
-    result = _climatology(by_year, used, flags, length)
-    result["monthly_yield_by_year"] = by_year["daily_yield"]
-    typical = daily.attrs.get("record") == "typical-year"
-    if not typical and shape[0] > 1:
-        result["monthly_yield_poor_year"] = _quantile(by_year["daily_yield"], 1.0 - POOR_YEAR_REACHED)
-    year_axis = np.unique(np.arange(years[0], years[-1] + 1))
-    labelled = _labelled(result, daily, space, year_axis)
-    return _with_counts(labelled, totals(daily[COUNT].to_numpy(), counted)) if COUNTS in daily else labelled
+    for day, month in enumerate(slot):
+        valid = np.isfinite(days[0][day])
+        for row, values in enumerate(days):
+            out[month, row] += np.where(valid, values[day], 0.0)
+        for row, flag in enumerate(flags, start=FROST):
+            if flag is not None:
+                out[month, row] += flag[day] & valid
+        out[month, COUNT] += valid
 
 
-def _with_counts(result: xr.Dataset, counted: dict[str, dict[str, int]]) -> xr.Dataset:
-    """Result with the counts of its weather, in figures and, where something happened, in words."""
-    said = dict.fromkeys([*result.attrs.get("conventions", []), *sentences(counted)])
-    return result.assign_attrs(counts=json.dumps(counted), conventions=list(said))
-
-
-def _calendar(time: xr.DataArray) -> tuple[NDArray[Any], NDArray[Any], NDArray[Any], NDArray[Any]]:
-    """Year and month of every calendar month present, and where its days start and end."""
-    year, month = time.dt.year.to_numpy(), time.dt.month.to_numpy()
-    key = year.astype(np.int64) * MONTHS + month
-    starts = np.concatenate([[0], np.flatnonzero(np.diff(key)) + 1])
-    ends = np.concatenate([starts[1:], [len(key)]])
-    return year[starts], month[starts], starts, ends
-
-
-def _days_in_month(time: xr.DataArray, starts: NDArray[Any]) -> NDArray[np.float64]:
-    return np.asarray(time.dt.days_in_month.to_numpy()[starts], dtype=np.float64)
-
-
-def _stretch(expected: NDArray[np.float64], like: NDArray[Any]) -> NDArray[np.float64]:
-    return expected.reshape(-1, *[1] * (like.ndim - 1))
-
-
-def _month_sums(
-    daily: xr.Dataset, starts: NDArray[Any], ends: NDArray[Any]
-) -> tuple[dict[str, NDArray[np.float64]], NDArray[Any]]:
-    """Sums over the valid days of each month, and their count, and the counts of the weather; one pass over all."""
-    kernel = partial(_block_sums, starts=starts, ends=ends)
-    names = [*_MEANT, *_COUNTED]
-    arrays = [da.asarray(daily[name].data) for name in names]
-    arrays = [array.rechunk({0: -1}) for array in arrays]
-    axes = "t" + "yx"[-(arrays[0].ndim - 1):]
-    stacked = da.blockwise(
-        kernel, "om" + axes[1:], *[item for array in arrays for item in (array, axes)],
-        new_axes={"o": len(names) + 1, "m": len(starts)}, concatenate=True, dtype=np.float64,
-        meta=np.empty((0,) * (arrays[0].ndim + 1)),
-    )
-    counts = daily[COUNTS].transpose(COUNT, ...).data if COUNTS in daily else np.empty(0)
-    sums, counted = compute(stacked, counts, scheduler="threads")
-    return dict(zip([*names, "count"], sums, strict=True)), counted
-
-
-def _block_sums(*arrays: NDArray[Any], starts: NDArray[Any], ends: NDArray[Any]) -> NDArray[np.float64]:
-    central = arrays[0]
-    out = np.empty((len(arrays) + 1, len(starts), *central.shape[1:]))
-    for month, (start, end) in enumerate(zip(starts, ends, strict=True)):
-        valid = np.isfinite(central[start:end])
-        for row, values in enumerate(arrays):
-            out[row, month] = np.where(valid, values[start:end], 0.0).sum(axis=0, dtype=np.float64)
-        out[-1, month] = valid.sum(axis=0)
-    return out
-
-
-def _filled(
-    values: NDArray[Any], slot: NDArray[Any], shape: tuple[int, ...], empty: float = np.nan
-) -> NDArray[np.float64]:
-    """Lay months in the order of the record into a full year-by-month box."""
-    box = np.full((shape[0] * MONTHS, *shape[2:]), empty)
-    box[slot] = values
-    return box.reshape(shape)
-
-
-def _mean_of_years(values: NDArray[Any]) -> NDArray[np.float64]:
-    """Mean over the years that have the month; NaN where none has."""
-    valid = np.isfinite(values)
-    count = valid.sum(axis=0)
-    total = np.where(valid, values, 0.0).sum(axis=0)
-    return np.where(count > 0, total / np.maximum(count, 1), np.nan)
-
-
-def _quantile(values: NDArray[Any], q: float) -> NDArray[np.float64]:
+def _quantile(values: Array, q: float) -> Array:
     """Quantile over the valid years, linear between ranks as numpy's default; NaN where there is none.
 
     By one sort, which puts NaN last: numpy's nanquantile calls Python for every cell.
@@ -160,28 +188,88 @@ def _quantile(values: NDArray[Any], q: float) -> NDArray[np.float64]:
     return np.where(count > 0, low + (place - below) * (high - low), np.nan)
 
 
-def _climatology(
-    by_year: dict[str, NDArray[Any]], used: NDArray[Any], flags: dict[str, NDArray[Any]], length: NDArray[Any]
-) -> dict[str, NDArray[Any]]:
-    result = {
-        name.replace("daily_yield", "monthly_yield"): _mean_of_years(values) for name, values in by_year.items()
-    }
-    days = _mean_of_years(length)
-    per_day = result["monthly_yield"] / days
+def climatology(sums: MonthSums, *, rule_litres_per_mj: float) -> dict[str, Array]:
+    """Monthly litres of every cell: by year, climatology, band, rule, annual and worst month.
+
+    Parameters
+    ----------
+    sums : MonthSums
+        All days taken in.
+    rule_litres_per_mj : float
+        What the constant-efficiency rule makes of a MJ m-2. [L MJ-1]
+
+    Returns
+    -------
+    dict of str to ndarray
+        Name in the result to values of shape (year, 12, cell), (12, cell) or (cell,); see `aggregate`.
+    """
+    months = sums.months
+    count = np.where(sums.valid > 0, sums.valid, np.nan)
+    result = {name: sums.totals[row] / count for name, row in _MEANT.items()}
+    result["monthly_yield_rule"] *= rule_litres_per_mj
+    there = months.month - 1
+    expected = np.bincount(there, weights=months.length, minlength=MONTHS)
+    seen = np.bincount(there, minlength=MONTHS)
+    days = np.where(seen > 0, expected / np.maximum(seen, 1), np.nan)
+    per_day = result["monthly_yield"] / days[:, None]
     # A cell with any month missing has no worst month: the missing one might be it.
     known = np.isfinite(per_day).all(axis=0)
     worst = np.argmin(np.where(known, per_day, np.inf), axis=0)
-    result["annual_yield"] = result["monthly_yield"].sum(axis=0)
-    result["annual_yield_low"] = result["monthly_yield_low"].sum(axis=0)
-    result["annual_yield_high"] = result["monthly_yield_high"].sum(axis=0)
+    for name, end in (("annual_yield", ""), ("annual_yield_low", "_low"), ("annual_yield_high", "_high")):
+        result[name] = result[f"monthly_yield{end}"].sum(axis=0)
     result["worst_month"] = np.where(known, worst + 1, np.nan)
     result["worst_month_yield"] = np.where(known, np.take_along_axis(per_day, worst[None], axis=0)[0], np.nan)
-    result["days_used"] = used.sum(axis=0)
-    result["days_expected"] = np.nansum(length, axis=0)
-    for name, values in flags.items():
-        share = values.sum(axis=0) / np.maximum(result["days_used"], 1.0)
-        result[f"{name}_share"] = np.where(result["days_used"] > 0, share, np.nan)
+    result["days_used"] = sums.used
+    result["days_expected"] = np.broadcast_to(expected[:, None], sums.used.shape).copy()
+    used = np.where(sums.used > 0, sums.used, np.nan)
+    result["frost_share"], result["outside_fit_share"] = sums.totals[FROST] / used, sums.totals[OUTSIDE] / used
+    box = np.full((months.years.size * MONTHS, sums.by_year.shape[1]), np.nan, np.float32)
+    box[(months.year - months.year[0]) * MONTHS + there] = sums.by_year
+    result["monthly_yield_by_year"] = box.reshape(months.years.size, MONTHS, -1)
+    if not months.typical and months.years.size > 1:
+        result["monthly_yield_poor_year"] = _quantile(result["monthly_yield_by_year"], 1.0 - POOR_YEAR_REACHED)
     return result
+
+
+def aggregate(values: dict[str, Array], months: Months, weather: xr.Dataset, space: Sequence[str]) -> xr.Dataset:
+    """Label the months of all cells.
+
+    Parameters
+    ----------
+    values : dict of str to ndarray
+        From `climatology`, of all cells in their order.
+    months : Months
+        Calendar of the record.
+    weather : xarray.Dataset
+        Gives coordinates and attributes.
+    space : sequence of str
+        Dimensions of space.
+
+    Returns
+    -------
+    xarray.Dataset
+        Dimension ``month`` (1 to 12), ``year`` for the yearly values, and space.
+        ``monthly_yield``, ``monthly_yield_low``, ``monthly_yield_high``, ``monthly_yield_rule``
+        [L m-2 month-1], means over the years; ``monthly_yield_by_year``; ``monthly_yield_poor_year``,
+        reached or passed in 9 of 10 years (absent for typical years); ``annual_yield`` [L m-2 year-1];
+        ``worst_month`` (1 to 12, fewest litres per day) and ``worst_month_yield`` [L m-2 d-1];
+        ``days_used`` and ``days_expected`` (all years together), ``frost_share``, ``outside_fit_share`` of the
+        days used.
+    """
+    sizes = [weather.sizes[dim] for dim in space]
+    variables: dict[str, Any] = {}
+    for name, array in values.items():
+        lead = {1: (), 2: ("month",), 3: ("year", "month")}[array.ndim]
+        unit, meaning = _MEANINGS[name]
+        shaped = array.reshape(*array.shape[:-1], *sizes)
+        variables[name] = ((*lead, *space), shaped, {"units": unit, "long_name": meaning})
+    coords = {
+        name: coord for name, coord in weather.coords.items() if set(coord.dims) <= set(space) and name != "inside"
+    }
+    year, meaning = (np.zeros(1, dtype=int), "Typical year") if months.typical else (months.years, "Calendar year")
+    coords["month"] = ("month", np.arange(1, MONTHS + 1), {"long_name": "Month of the year", "units": "1"})
+    coords["year"] = ("year", year, {"long_name": meaning, "units": "1"})
+    return xr.Dataset(variables, coords=coords, attrs=weather.attrs)
 
 
 _MEANINGS = {
@@ -201,20 +289,3 @@ _MEANINGS = {
     "frost_share": ("1", "Share of the days used on which the brine froze"),
     "outside_fit_share": ("1", "Share of the days used outside the range of the method"),
 }
-
-
-def _labelled(
-    result: dict[str, NDArray[Any]], daily: xr.Dataset, space: list[Any], years: NDArray[Any]
-) -> xr.Dataset:
-    variables: dict[str, Any] = {}
-    for name, values in result.items():
-        lead = {len(space): (), len(space) + 1: ("month",), len(space) + 2: ("year", "month")}[values.ndim]
-        unit, meaning = _MEANINGS[name]
-        variables[name] = ((*lead, *space), values, {"units": unit, "long_name": meaning})
-    coords = {name: coord for name, coord in daily.coords.items() if "time" not in coord.dims}
-    coords |= {"month": ("month", np.arange(1, MONTHS + 1)), "year": ("year", years)}
-    for name, text in (("month", "Month of the year"), ("year", "Calendar year")):
-        coords[name] = (name, coords[name][1], {"long_name": text, "units": "1"})
-    if daily.attrs.get("record") == "typical-year":
-        coords["year"] = ("year", np.zeros(1, dtype=int), {"long_name": "Typical year", "units": "1"})
-    return xr.Dataset(variables, coords=coords, attrs=daily.attrs)

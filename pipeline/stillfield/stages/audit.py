@@ -6,10 +6,9 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
-import xarray as xr
 from numpy.typing import NDArray
 
-from stillfield.methods import Block, Method
+from stillfield.methods import Block, Method, whole_record
 from stillfield.methods.heat_balance import HeatBalance
 from stillfield.physics.climates import hours_of_broken_sky
 from stillfield.physics.irradiance import disaggregate_day
@@ -68,9 +67,26 @@ class Audit:
         return text if self.passed else f"WARNING: {text} The correlation does not fit this weather well."
 
 
-def audit(
-    method: Method, monthly: xr.Dataset, daily: xr.Dataset, still: Still, *, steps: xr.Dataset | None = None
-) -> Audit:
+@dataclass(frozen=True)
+class Sample:
+    """Weather of some cells over the first days of a record, kept while the run went by.
+
+    Attributes
+    ----------
+    cells : ndarray of int, shape (cell,)
+        Numbers of the cells in the region.
+    block : Block
+        Their weather, as the method took it.
+    month : ndarray of int, shape (day,)
+        A number that rises by one from month to month.
+    """
+
+    cells: NDArray[np.int64]
+    block: Block
+    month: NDArray[np.int64]
+
+
+def audit(method: Method, annual: Array, sample: Sample, still: Still) -> Audit:
     """Run the hourly balance on a sample and compare the months.
 
     The sample is spread over the cells from the least to the most productive and takes the first two years of
@@ -80,62 +96,36 @@ def audit(
     ----------
     method : Method
         The method to audit.
-    monthly : xarray.Dataset
-        The run's monthly yields, which tell the productive cells from the others.
-    daily : xarray.Dataset
-        Weather of local days.
+    annual : ndarray, shape (cell,)
+        The run's annual yields of all cells of the region, which tell the productive cells from the others.
+    sample : Sample
+        Weather to choose from.
     still : Still
         The design in its central condition.
-    steps : xarray.Dataset, optional
-        The same days in steps.
 
     Returns
     -------
     Audit
     """
-    space = [dim for dim in daily["irradiation"].dims if dim != "time"]
-    picked = _spread(_flat(monthly["annual_yield"], space))
-    hours = "daily values spread over the day" if steps is None else "the weather"
+    by_days = sample.block.steps_per_day == 1
+    hours = "daily values spread over the day" if by_days else "the weather"
+    picked = _spread(annual[sample.cells])
     if picked.size == 0:
         return Audit(0, 0, 0, float("nan"), float("nan"), float("nan"), hours)
-    by_days = _sample(daily, picked, space)
-    by_steps = _spread_over_hours(by_days) if steps is None else _sample(steps, picked, space)
-    said = method.daily_yield(by_days if method.resolution == "daily" else by_steps, still).litres
-    truth = HeatBalance().daily_yield(by_steps, still)
+    given = _some_cells(sample.block, picked)
+    by_steps = _spread_over_hours(given) if by_days else given
+    said = whole_record(method, given, still, [still.condition])[0].litres
+    truth = whole_record(HeatBalance(), by_steps, still, [still.condition])[0]
     frost = np.zeros_like(truth.litres, dtype=bool) if truth.frost is None else truth.frost
-    time = daily["time"].isel(time=slice(0, MOST_DAYS)).dt
-    months = _months(truth.litres, said, frost, time.year.to_numpy() * 12 + time.month.to_numpy())
+    months = _months(truth.litres, said, frost, sample.month)
     return _compared(*months, picked.size, len(truth.litres), hours)
 
 
-def _sample(source: xr.Dataset, picked: NDArray[np.intp], space: list[Any]) -> Block:
-    """Weather of the picked cells over the first days, as a method takes it."""
-    some = source.isel(time=slice(0, MOST_DAYS))
-    steps = some.sizes.get("step", 1)
-    weather = {
-        str(name): _flat(values, space)[..., picked].reshape(-1, picked.size)
-        for name, values in some.data_vars.items() if "time" in values.dims
-    }
+def _some_cells(block: Block, picked: NDArray[np.intp]) -> Block:
     return Block(
-        weather,
-        latitude=_per_cell(source, "latitude", space)[picked],
-        day_of_year=some["time"].dt.dayofyear.to_numpy(),
-        steps_per_day=steps,
-        clock_to_solar_hours=_per_cell(source, "clock_to_solar_hours", space)[picked],
+        {name: values[:, picked].astype(np.float64) for name, values in block.weather.items()},
+        block.latitude[picked], block.day_of_year, block.steps_per_day, block.clock_to_solar_hours[picked],
     )
-
-
-def _flat(values: xr.DataArray, space: list[Any]) -> Array:
-    lead = [dim for dim in values.dims if dim not in space]
-    data = values.transpose(*lead, *space).to_numpy()
-    return np.asarray(data.reshape(*data.shape[: len(lead)], -1), dtype=np.float64)
-
-
-def _per_cell(source: xr.Dataset, name: str, space: list[Any]) -> Array:
-    template = xr.DataArray(np.zeros([source.sizes[dim] for dim in space]), dims=space)
-    if name not in source.coords:
-        return template.to_numpy().ravel()
-    return np.asarray((source[name].drop_vars(list(source[name].coords)) + template).transpose(*space)).ravel()
 
 
 def _spread(annual: Array) -> NDArray[np.intp]:

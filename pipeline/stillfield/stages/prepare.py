@@ -1,8 +1,11 @@
-"""Prepare: weather steps to local days, with the hours that count beside every value.
+"""Prepare: weather steps to local days.
 
 The day is the local solar day of the cell. A UTC day cuts the sunshine of one day in two wherever the
-longitude is far from Greenwich; so hourly UTC weather is shifted by whole steps, per column of the grid,
-before days are summed. Station files keep their local standard day. Daily input passes through.
+longitude is far from Greenwich; so hourly UTC weather is shifted by whole steps, per column of the grid, as it
+is read. Station files keep their local standard day. Daily weather keeps its own days.
+
+`LocalDays` tells from the labels of a record alone where each of its steps falls; the functions below work on
+arrays of steps already in their place, of shape (day * steps_per_day, cell).
 """
 
 from __future__ import annotations
@@ -16,145 +19,151 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
-from stillfield.sources.gaps import fill_gaps
-from stillfield.sources.plausible import count_doubtful
-from stillfield.sources.tally import COUNTS, cell_counts, with_counts
-from stillfield.vocabulary import DAY_WEATHER, STEP_HOURS_DAILY, STEP_WEATHER
+from stillfield.sources.calendars import solar_day_of_year
+from stillfield.vocabulary import STEP_HOURS_DAILY
+
+Array = NDArray[np.floating[Any]]
 
 MJ_PER_WH = 3600.0 / 1e6
 MIDSTEP_MINUTES_PER_HOUR = 30.0
-_SPANS = ("whole_days", "edge_days")
 
 
 @dataclass(frozen=True)
-class Prepared:
-    """Weather on local days.
+class LocalDays:
+    """How the records of some weather fall into local days.
+
+    Slots count the steps of a regular axis from the first record on; absent records leave their slot empty.
 
     Attributes
     ----------
-    daily : xarray.Dataset
-        Dimensions ``time`` (day) and space; `vocabulary.DAY_WEATHER` variables and units.
-    steps : xarray.Dataset or None
-        Dimensions ``time`` (day), ``step`` and space; `vocabulary.STEP_WEATHER` variables, aligned to the
-        same days; coordinate ``clock_to_solar_hours`` on space. None for daily weather.
+    time : xarray.DataArray
+        Dates of the days, any CF calendar: every day that is whole for at least one cell.
+    steps_per_day : int
+        1 for daily weather.
+    slots : ndarray of int, shape (record,)
+        Slot of every record; rising.
+    start : ndarray of int, shape (column,)
+        Slot at which the first day begins in each column of the grid, or at each site; negative where the record
+        begins later.
+    clock_to_solar_hours : ndarray, shape (cell,)
+        Hours from the clock by which days are cut to local mean solar time. [h]
+    latitude : ndarray, shape (cell,)
+        [deg north]
     """
 
-    daily: xr.Dataset
-    steps: xr.Dataset | None = None
+    time: xr.DataArray
+    steps_per_day: int
+    slots: NDArray[np.int64]
+    start: NDArray[np.int64]
+    clock_to_solar_hours: Array
+    latitude: Array
+
+    @property
+    def step_hours(self) -> float:
+        """Length of a step. [h]"""
+        return STEP_HOURS_DAILY / self.steps_per_day
+
+    @property
+    def days(self) -> int:
+        """Number of days."""
+        return int(self.time.size)
+
+    @property
+    def day_of_year(self) -> NDArray[np.int64]:
+        """1 to 366, as the sun knows it, of every day."""
+        return solar_day_of_year(self.time)
+
+    def held(self) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+        """Days that the record holds whole, and days that it begins or ends within, by column.
+
+        Examples
+        --------
+        >>> hours = xr.DataArray(np.arange("2019-03-01", "2019-03-03", dtype="M8[h]").astype("M8[ns]"), dims="time")
+        >>> cells = {"time": hours, "latitude": [0.0], "longitude": [0.0, 150.0]}
+        >>> weather = xr.Dataset(coords=cells, attrs={"step_hours": 1.0, "clock": "UTC"})
+        >>> [held.tolist() for held in local_days(weather).held()]
+        [[2, 1], [0, 2]]
+        """
+        first, length = -self.start, int(self.slots[-1]) + 1
+        begin, end = first / self.steps_per_day, (first + length) / self.steps_per_day
+        whole = np.maximum(np.floor(end) - np.ceil(begin), 0.0)
+        touched = np.ceil(end) - np.floor(begin)
+        return whole.astype(np.int64), (touched - whole).astype(np.int64)
 
 
-def prepare(weather: xr.Dataset, *, min_valid_hours: float = 20.0, fill_hours: float = 3.0) -> Prepared:
-    """Bring weather of any step to local days.
+def local_days(weather: xr.Dataset) -> LocalDays:
+    """Find out how the steps of weather fall into local days, from its labels alone.
 
     Parameters
     ----------
     weather : xarray.Dataset
         As a source gives it.
-    min_valid_hours : float
-        A day's mean temperature, wind and humidity need at least this many valid hours; its irradiation
-        needs every step, because an hour of sunshine cannot be averaged away. [h]
-    fill_hours : float
-        Longest gap in temperature, humidity or wind that is bridged by a straight line. [h]
 
     Returns
     -------
-    Prepared
-        `Prepared.daily` carries the counts of `stillfield.sources.tally`.
+    LocalDays
 
     Raises
     ------
     WeatherError
-        If the steps do not divide the day, or the record holds no whole day.
+        If the steps are uneven, run backward, do not divide the day, or the record holds no whole day.
     """
     step_hours = float(weather.attrs["step_hours"])
+    latitude = over_cells(weather, weather["latitude"]) if "latitude" in weather.coords else np.zeros(_cells(weather))
     if step_hours == STEP_HOURS_DAILY:
-        return Prepared(count_doubtful(_pass_daily(weather)))
-    steps = align_to_local_days(weather, step_hours, fill_hours=fill_hours)
-    whole, edge = (steps[name].reset_coords(drop=True) for name in _SPANS)
-    steps = steps.drop_vars(_SPANS)
-    daily = _daily_from_steps(steps.drop_vars(COUNTS, errors="ignore"), step_hours, min_valid_hours)
-    beyond = daily.sizes["time"] - whole
-    gaps = cell_counts(daily["irradiation"], _count_missing, ("missing",))["missing"] - beyond
-    lost: dict[str, xr.DataArray | int] = {"edge": edge, "incomplete": gaps.clip(min=0), "values": whole + edge}
-    if COUNTS in steps:
-        daily = daily.assign({COUNTS: steps[COUNTS]})
-    daily = count_doubtful(with_counts(daily, "days", lost))
-    return Prepared(daily, steps.drop_vars(COUNTS, errors="ignore"))
-
-
-def _count_missing(block: NDArray[Any]) -> NDArray[np.int64]:
-    return np.asarray(np.count_nonzero(np.isnan(block), axis=0), dtype=np.int64)[np.newaxis]
-
-
-def _pass_daily(weather: xr.Dataset) -> xr.Dataset:
-    daily = weather[[name for name in weather.data_vars if name in DAY_WEATHER]]
-    if "valid_hours" not in daily and "irradiation" in daily:
-        hours = daily["irradiation"].notnull() * np.float32(STEP_HOURS_DAILY)
-        daily = daily.assign(valid_hours=hours.astype(np.float32))
-    if COUNTS in weather:
-        daily = daily.assign({COUNTS: weather[COUNTS]})
-    return daily.assign_attrs(weather.attrs)
-
-
-def align_to_local_days(weather: xr.Dataset, step_hours: float, *, fill_hours: float = 0.0) -> xr.Dataset:
-    """Cut step weather into local days: dimensions ``time`` (day), ``step`` and space.
-
-    Parameters
-    ----------
-    weather : xarray.Dataset
-        Steps shorter than a day; regular in time apart from gaps.
-    step_hours : float
-        Length of a step; must divide 24. [h]
-    fill_hours : float
-        As for `prepare`. [h]
-
-    Returns
-    -------
-    xarray.Dataset
-        Every day that is whole for at least one cell; steps before or after the record are NaN. Coordinates
-        ``whole_days`` and ``edge_days`` tell how many local days of a cell the record holds whole, and how many
-        it begins or ends within.
-
-    Raises
-    ------
-    WeatherError
-        If the step does not divide the day or there is no whole day.
-    """
+        records = np.arange(weather.sizes["time"])
+        columns = np.zeros(_columns(weather), dtype=np.int64)
+        return LocalDays(weather["time"].drop_vars(list(set(weather["time"].coords) - {"time"})), 1, records, columns,
+                         np.zeros(latitude.size), latitude)
     per_day = round(STEP_HOURS_DAILY / step_hours)
     if abs(per_day * step_hours - STEP_HOURS_DAILY) > 1e-6:
         raise WeatherError(
             "the time step does not divide the day", got=f"{step_hours:g} h", wanted="0.25, 0.5, 1, 2, 3, 4 or 6 h"
         )
-    steps = weather[[name for name in weather.data_vars if name in STEP_WEATHER]]
-    counts = weather.get(COUNTS)
-    steps = fill_gaps(_regular(steps, step_hours).assign({} if counts is None else {COUNTS: counts}),
-                      step_hours=step_hours, fill_hours=fill_hours)
-    counts = steps.get(COUNTS)
-    steps = steps.drop_vars(COUNTS, errors="ignore").drop_dims("count", errors="ignore")
-    shift_hours, residual_hours = _clock_shift(weather, step_hours)
-    first_step, days = _day_axis(steps, step_hours, per_day, shift_hours)
-    starts = first_step - np.round(shift_hours / step_hours).astype(int)
-    aligned = _take_windows(steps, starts, len(days) * per_day)
-    aligned = _fold_days(aligned, days, per_day)
-    like = xr.zeros_like(residual_hours, dtype=np.int64)
-    spans = zip(_SPANS, _days_held(-starts, per_day, steps.sizes["time"]), strict=True)
-    held = {name: like + xr.DataArray(days_held, dims=weather["longitude"].dims) for name, days_held in spans}
-    aligned = aligned.assign_coords({"clock_to_solar_hours": residual_hours, **held})
-    aligned = aligned.assign({} if counts is None else {COUNTS: counts})
-    return aligned.assign_attrs(weather.attrs)
+    slots = _slots(weather, step_hours)
+    shift_hours, rest_hours = _clock_shift(weather, step_hours)
+    shifts = np.round(shift_hours / step_hours).astype(np.int64)
+    first, days = _day_axis(weather, per_day, shifts, int(slots[-1]) + 1)
+    return LocalDays(xr.DataArray(days, dims="time", coords={"time": days}), per_day, slots, first - shifts,
+                     over_cells(weather, rest_hours), latitude)
 
 
-def _days_held(first: NDArray[np.int_], per_day: int, length: int) -> tuple[NDArray[np.int_], NDArray[np.int_]]:
-    """Days that a record of `length` steps from step `first` after some midnight holds whole, and those it cuts."""
-    start, end = first / per_day, (first + length) / per_day
-    whole = np.maximum(np.floor(end) - np.ceil(start), 0.0)
-    touched = np.ceil(end) - np.floor(start)
-    return whole.astype(np.int_), (touched - whole).astype(np.int_)
+def space_of(weather: xr.Dataset) -> tuple[str, ...]:
+    """Name the dimensions of space of weather, in the order in which cells are counted."""
+    return ("site",) if "site" in weather.dims else ("latitude", "longitude")
 
 
-def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
-    """Put steps on a regular axis; gaps become NaN."""
-    index = steps.indexes["time"]
+def over_cells(weather: xr.Dataset, values: xr.DataArray) -> Array:
+    """Values of rows, columns or sites spread over all cells, in their order.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        With the cells.
+    values : xarray.DataArray
+        On some of the dimensions of space.
+
+    Returns
+    -------
+    ndarray of float, shape (cell,)
+    """
+    space = [dim for dim in space_of(weather) if dim in weather.dims]
+    template = xr.DataArray(np.zeros([weather.sizes[dim] for dim in space]), dims=space)
+    bare = values.drop_vars(list(values.coords))
+    return np.asarray((bare + template).transpose(*space).to_numpy().ravel(), dtype=np.float64)
+
+
+def _cells(weather: xr.Dataset) -> int:
+    return int(np.prod([weather.sizes[dim] for dim in space_of(weather) if dim in weather.dims]))
+
+
+def _columns(weather: xr.Dataset) -> int:
+    return int(weather.sizes[space_of(weather)[-1]])
+
+
+def _slots(weather: xr.Dataset, step_hours: float) -> NDArray[np.int64]:
+    """Place of every record on a regular axis."""
+    index = weather.indexes["time"]
     if len(index) < 2:
         raise WeatherError("a single time step makes no day", got=f"{len(index)} step")
     marks = index.to_numpy()
@@ -168,21 +177,13 @@ def _regular(steps: xr.Dataset, step_hours: float) -> xr.Dataset:
             where=str(index[int(np.argmax(width <= 0)) + 1]),
             cure="Remove duplicate records and sort the files.",
         )
-    if np.allclose(width, step_hours, rtol=1e-4):
-        return steps
     at = np.concatenate([[0.0], np.cumsum(width)]) / step_hours
     if not np.allclose(at, np.round(at), atol=1e-3):
         raise WeatherError("time steps are irregular", got=f"steps of {width.min():g} to {width.max():g} h")
-    # Whole numbers of steps serve every calendar, where dates of a foreign one cannot be looked up by nearness.
-    count = round(at[-1]) + 1
-    numbered = steps.assign_coords(time=np.round(at).astype(np.int64)).reindex(time=np.arange(count))
-    seconds = round(step_hours * 3600)
-    axis = (index[0].to_numpy() + np.arange(count) * np.timedelta64(seconds, "s") if index.dtype.kind == "M"
-            else [index[0] + timedelta(seconds=seconds * i) for i in range(count)])
-    return numbered.assign_coords(time=axis)
+    return np.round(at).astype(np.int64)
 
 
-def _clock_shift(weather: xr.Dataset, step_hours: float) -> tuple[np.ndarray, xr.DataArray]:
+def _clock_shift(weather: xr.Dataset, step_hours: float) -> tuple[Array, xr.DataArray]:
     """Hours to add to the record's clock to get the day's clock (per column or site), and the rest to the sun.
 
     The rest includes the measured misfit between a file's stamps and the sun, where a source reports it.
@@ -197,29 +198,21 @@ def _clock_shift(weather: xr.Dataset, step_hours: float) -> tuple[np.ndarray, xr
         rest = longitude / 15.0 - xr.DataArray(shift, dims=longitude.dims)
     if "sun_offset_minutes" in weather.coords:
         rest = rest + (weather["sun_offset_minutes"] - MIDSTEP_MINUTES_PER_HOUR * step_hours) / 60.0
-    space = [dim for dim in weather.dims if dim in ("latitude", "longitude", "site")]
-    shape = xr.DataArray(
-        np.zeros([weather.sizes[dim] for dim in space]), dims=space, coords={d: weather[d] for d in space}
-    )
-    return shift, (rest.reset_coords(drop=True) + shape).transpose(*space)
+    return shift, rest
 
 
-def _day_axis(
-    steps: xr.Dataset, step_hours: float, per_day: int, shift_hours: np.ndarray
-) -> tuple[int, Any]:
-    """Return the index of the record's step at 00:00 (clock) of the first local day, and the days."""
-    index = steps.indexes["time"]
+def _day_axis(weather: xr.Dataset, per_day: int, shifts: NDArray[np.int64], length: int) -> tuple[int, Any]:
+    """Slot at 00:00 of the first local day by the record's clock, and the days."""
+    index = weather.indexes["time"]
     first = index[0]
-    into_day = (first.hour + first.minute / 60.0 + first.second / 3600.0) / step_hours
+    into_day = (first.hour + first.minute / 60.0 + first.second / 3600.0) * per_day / STEP_HOURS_DAILY
     offset = round(into_day)
     if abs(into_day - offset) > 1e-3:
         raise WeatherError("steps do not start on multiples of the step", got=str(first))
-    shifts = np.round(shift_hours / step_hours).astype(int)
-    length = steps.sizes["time"]
     begin = np.ceil((offset + shifts) / per_day).min()
     end = np.floor((offset + shifts + length) / per_day).max()
     if end <= begin:
-        raise WeatherError("the record holds no whole day", got=f"{length} steps of {step_hours:g} h")
+        raise WeatherError("the record holds no whole day", got=f"{length} steps of {24 / per_day:g} h")
     midnight = first.replace(hour=0, minute=0, second=0, microsecond=0)
     if index.dtype.kind == "M":
         midnight = midnight.replace(nanosecond=0).to_datetime64()
@@ -229,55 +222,88 @@ def _day_axis(
     return int(begin) * per_day - offset, days
 
 
-def _take_windows(steps: xr.Dataset, starts: np.ndarray, length: int) -> xr.Dataset:
-    """Take `length` steps from `starts` on, one start per column or site, padding with NaN outside."""
-    along = "site" if "site" in steps.dims else "longitude"
-    pieces = []
-    cuts = np.flatnonzero(np.diff(starts)) + 1
-    for piece in np.split(np.arange(len(starts)), cuts):
-        start = int(starts[piece[0]])
-        part = steps.isel({along: piece, "time": slice(max(start, 0), max(start + length, 0))})
-        before = max(-start, 0)
-        after = length - before - part.sizes["time"]
-        part = part.drop_vars("time")
-        if before or after:
-            part = part.pad(time=(before, after))
-        pieces.append(part)
-    return pieces[0] if len(pieces) == 1 else xr.concat(pieces, dim=along, data_vars="minimal", coords="minimal",
-                                                       compat="override", join="exact")
+def count_days(
+    local: LocalDays, columns: slice, kept: NDArray[np.bool_], missing_days: NDArray[np.int64]
+) -> dict[str, int]:
+    """Count the local days that the record cuts, and those with a gap in their sunshine.
+
+    Parameters
+    ----------
+    local : LocalDays
+        How the record falls into days.
+    columns : slice
+        Columns of the cells.
+    kept : ndarray of bool, shape (row, column)
+        Cells that count.
+    missing_days : ndarray of int, shape (row, column)
+        Days without irradiation.
+
+    Returns
+    -------
+    dict of str to int
+        Kinds 'edge', 'incomplete' and 'values' of `stillfield.sources.tally.SENTENCES`, in cell-days.
+    """
+    whole, edge = (held[columns] for held in local.held())
+    gaps = np.maximum(missing_days - (local.days - whole), 0)
+    return {
+        "edge": int((edge * kept).sum()), "incomplete": int(gaps[kept].sum()),
+        "values": int(((whole + edge) * kept).sum()),
+    }
 
 
-def _fold_days(aligned: xr.Dataset, days: Any, per_day: int) -> xr.Dataset:
-    folded = {}
-    for name, values in aligned.data_vars.items():
-        data = values.transpose("time", ...).data
-        folded[name] = (
-            ("time", "step", *values.transpose("time", ...).dims[1:]),
-            data.reshape(len(days), per_day, *data.shape[1:]),
-            values.attrs,
-        )
-    coords = {name: coord for name, coord in aligned.coords.items() if "time" not in coord.dims}
-    return xr.Dataset(folded, coords={**coords, "time": ("time", days)})
+def irradiation_of_days(ghi: Array, steps_per_day: int) -> Array:
+    """Irradiation of days from the mean irradiance of their steps.
+
+    Parameters
+    ----------
+    ghi : ndarray, shape (day * steps_per_day, cell)
+        [W m-2]
+    steps_per_day : int
+        Steps in a day.
+
+    Returns
+    -------
+    ndarray, shape (day, cell)
+        NaN where any step is: an hour of sunshine cannot be averaged away. [MJ m-2]
+
+    Examples
+    --------
+    >>> irradiation_of_days(np.full((24, 1), 250.0), 24).round(3).tolist()
+    [[21.6]]
+    """
+    steps = ghi.reshape(-1, steps_per_day, ghi.shape[-1])
+    total = steps.sum(axis=1)
+    total *= ghi.dtype.type(STEP_HOURS_DAILY / steps_per_day * MJ_PER_WH)
+    return np.asarray(total)
 
 
-def _daily_from_steps(steps: xr.Dataset, step_hours: float, min_valid_hours: float) -> xr.Dataset:
-    daily: dict[str, xr.DataArray] = {}
-    sunshine = steps["ghi"]
-    daily["irradiation"] = (sunshine.clip(min=0.0).sum("step", skipna=False) * (step_hours * MJ_PER_WH)).astype(
-        np.float32
-    )
-    complete = sunshine.notnull()
-    for name in ("temp_air", "wind_speed", "temp_dew", "relative_humidity"):
-        if name in steps:
-            valid = steps[name].notnull()
-            enough = valid.sum("step") * step_hours >= min_valid_hours
-            daily[name] = steps[name].mean("step").where(enough)
-            complete = complete & valid if name in ("temp_air", "wind_speed") else complete
-    if "temp_air" in steps:
-        daily["temp_air_min"] = steps["temp_air"].min("step").where(daily["temp_air"].notnull())
-        daily["temp_air_max"] = steps["temp_air"].max("step").where(daily["temp_air"].notnull())
-    daily["valid_hours"] = (complete.sum("step") * step_hours).astype(np.float32)
-    for name, values in daily.items():
-        quantity = DAY_WEATHER[name]
-        values.attrs = {"units": quantity.unit, "long_name": quantity.meaning}
-    return xr.Dataset(daily).assign_attrs(steps.attrs)
+def days_of_steps(weather: dict[str, Array], steps_per_day: int, *, min_valid_hours: float) -> dict[str, Array]:
+    """Weather of days from that of their steps.
+
+    Parameters
+    ----------
+    weather : dict of str to ndarray, shape (day * steps_per_day, cell)
+        By name of `vocabulary.STEP_WEATHER`; ``ghi`` must be there.
+    steps_per_day : int
+        Steps in a day.
+    min_valid_hours : float
+        A mean of temperature, wind or humidity needs at least this many valid hours. [h]
+
+    Returns
+    -------
+    dict of str to ndarray, shape (day, cell)
+        By name of `vocabulary.DAY_WEATHER`.
+    """
+    daily = {"irradiation": irradiation_of_days(weather["ghi"], steps_per_day)}
+    least = min_valid_hours * steps_per_day / STEP_HOURS_DAILY
+    for name in (name for name in ("temp_air", "wind_speed", "temp_dew", "relative_humidity") if name in weather):
+        steps = weather[name].reshape(-1, steps_per_day, weather[name].shape[-1])
+        valid = np.isfinite(steps)
+        count = valid.sum(axis=1)
+        known = count >= max(least, 1.0)
+        mean = np.where(valid, steps, 0.0).sum(axis=1, dtype=np.float64) / np.maximum(count, 1)
+        daily[name] = np.where(known, mean, np.nan).astype(steps.dtype)
+        if name == "temp_air":
+            daily["temp_air_min"] = np.where(known, np.fmin.reduce(steps, axis=1), np.nan).astype(steps.dtype)
+            daily["temp_air_max"] = np.where(known, np.fmax.reduce(steps, axis=1), np.nan).astype(steps.dtype)
+    return daily

@@ -51,13 +51,15 @@ def survey_variables(weather: xr.Dataset) -> list[dict[str, Any]]:
     ]
 
 
-def survey_time(weather: xr.Dataset, daily: xr.Dataset) -> dict[str, Any]:
+def survey_time(weather: xr.Dataset, days: pd.Index) -> dict[str, Any]:
     """Span, step and clock of weather, and its local days.
 
     Parameters
     ----------
-    weather, daily : xarray.Dataset
-        As a source gives it, and on local days.
+    weather : xarray.Dataset
+        As a source gives it.
+    days : pandas.Index
+        Its local days.
 
     Returns
     -------
@@ -65,7 +67,7 @@ def survey_time(weather: xr.Dataset, daily: xr.Dataset) -> dict[str, Any]:
         ``record``, ``clock``, ``step_hours``, ``first`` and ``last`` step, ``first_day``, ``last_day``, ``days``,
         ``years`` (calendar years touched), ``calendar``.
     """
-    steps, days = weather.indexes["time"], daily.indexes["time"]
+    steps = weather.indexes["time"]
     return {
         "record": str(weather.attrs["record"]),
         "clock": str(weather.attrs["clock"]),
@@ -76,7 +78,7 @@ def survey_time(weather: xr.Dataset, daily: xr.Dataset) -> dict[str, Any]:
         "last_day": _stamp(days[-1])[:10],
         "days": len(days),
         "years": int(days[-1].year - days[0].year + 1),
-        "calendar": str(daily["time"].dt.calendar),
+        "calendar": str(weather["time"].dt.calendar),
     }
 
 
