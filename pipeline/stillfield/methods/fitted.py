@@ -11,7 +11,8 @@ import numpy as np
 
 from stillfield.methods import Block, DailyYield
 from stillfield.methods.fit_store import fit_for
-from stillfield.physics.correlation import Day, daily_litres
+from stillfield.physics.correlation import Day
+from stillfield.physics.correlation_march import daily_litres
 from stillfield.physics.day_shape import day_from_days, day_from_steps
 from stillfield.physics.forcing import step_forcing
 from stillfield.physics.gain import GainTable

@@ -30,12 +30,12 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from functools import lru_cache
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.signal import lfilter
+
+from stillfield.physics.correlation_polynomials import POLYNOMIALS
 
 Array = NDArray[np.floating[Any]]
 
@@ -61,6 +61,22 @@ VARIANTS: dict[str, tuple[str, ...]] = {
 
 #: Terms of the frost factor, whatever the variant.
 FROST_TERMS = ("1", "T", "S", "E", "m", "n", "ST", "N", "w")
+#: Letters of the predictors, in the order in which the written-out polynomials take them.
+LETTERS = "STwNEmnKDhPqkv"
+#: Field of `Day`, divisor and summand of the predictors that are a scaled field.
+SCALES: dict[str, tuple[str, float, float]] = {
+    "S": ("transmitted", 20.0, 0.0),
+    "T": ("temp_air", 20.0, -1.0),
+    "N": ("day_length", 4.0, -3.0),
+    "K": ("clearness", 0.25, -2.0),
+    "D": ("temp_range", 10.0, -1.0),
+    "h": ("dew_depression", 15.0, -0.7),
+    "P": ("peakiness", 2.5, -1.0),
+    "q": ("warm_hours", 5.0, -0.5),
+    "k": ("sky_depression", 15.0, -0.9),
+    "v": ("windy_hours", 1.0, 0.0),
+}
+
 #: Above this mean air temperature the frost factor is 1. [degC]
 FROST_BELOW_DEGC = 12.0
 #: A day whose frost factor is below this is flagged. [1]
@@ -156,7 +172,7 @@ class DailyCorrelation:
         Parameters
         ----------
         day : Day
-            Predictors of consecutive days.
+            Predictors of a whole record.
         cyclic : bool
             True for a typical year: the day before the first is the last.
 
@@ -166,6 +182,8 @@ class DailyCorrelation:
             [L m-2]; NaN where a predictor is.
         frost, outside : ndarray of bool, same shape
         """
+        from stillfield.physics.correlation_march import daily_litres  # it walks records of this class
+
         return daily_litres((self,), day, cyclic=cyclic)[0]
 
     def outside(self, day: Day) -> NDArray[np.bool_]:
@@ -177,102 +195,57 @@ class DailyCorrelation:
         return flags
 
 
-def daily_litres(
-    correlations: Sequence[DailyCorrelation], day: Day, *, cyclic: bool = False
-) -> list[tuple[Array, NDArray[np.bool_], NDArray[np.bool_]]]:
-    """Daily yields by several correlations of one variant and memory, as the conditions of a still are.
-
-    The products of predictors are made once for all of them.
-
-    Parameters
-    ----------
-    correlations : sequence of DailyCorrelation
-        Same variant, same memory.
-    day : Day
-        Predictors of consecutive days.
-    cyclic : bool
-        True for a typical year.
-
-    Returns
-    -------
-    list of (litres, frost, outside)
-        As `DailyCorrelation.litres` gives them.
-
-    Raises
-    ------
-    ValueError
-        If variants or memories differ, or coefficients do not match the terms.
-    """
-    first = correlations[0]
-    if any((one.variant, one.memory) != (first.variant, first.memory) for one in correlations):
-        raise ValueError("correlations of different variants or memories")
-    predictors = scaled_predictors(day, first.memory, cyclic=cyclic)
-    raw = polynomials(predictors, VARIANTS[first.variant], np.array([one.coefficients for one in correlations]))
-    sunshine = day.transmitted + 2.0 * first.memory * 20.0 * (predictors["E"] + predictors["S"])
-    factors = frost_factors(day.temp_air, predictors, np.array([one.frost for one in correlations]))
-    found = []
-    for one, litres, factor in zip(correlations, raw, factors, strict=True):
-        np.maximum(litres, 0.0, out=litres)
-        np.multiply(litres, factor, out=litres)
-        np.minimum(litres, np.maximum(one.ceiling * sunshine, 0.0), out=litres)
-        found.append((litres, factor < FROST_FLAG, one.outside(day)))
-    return found
-
-
-def scaled_predictors(day: Day, memory: float, *, cyclic: bool) -> dict[str, Array]:
+def scaled_predictors(
+    day: Day, memory: float, *, state: Array | None = None, temp_next: Array | None = None
+) -> dict[str, Array]:
     """Bring the predictors to the scales of the module's table.
 
     Parameters
     ----------
     day : Day
-        Predictors as measured.
+        Predictors of consecutive days as measured.
     memory : float
         Share of what the basin remembers that is left a day later. [1]
-    cyclic : bool
-        Whether the day before the first is the last.
+    state : ndarray, shape (2, cell), optional
+        What the basin remembers of S and T before the first day, as `remembered` takes and changes it.
+    temp_next : ndarray, shape (day, cell), optional
+        Mean air temperature of the day after each. Without it that of the next row; the last day is its own
+        tomorrow. [degC]
 
     Returns
     -------
-    dict of str to ndarray
+    dict of str to ndarray, shape (day, cell)
         By the letter of the predictor; only those that are known.
     """
-    S = day.transmitted / 20.0
-    T = (day.temp_air - 20.0) / 20.0
-    found = {
-        "S": S,
-        "T": T,
-        "w": np.sqrt(np.maximum(day.wind_speed, 0.0) / 2.0) - 1.0,
-        "N": np.broadcast_to((day.day_length - 12.0) / 4.0, np.shape(S)),
-        "E": remembered(S, memory, cyclic=cyclic) - S,
-        "m": remembered(T, memory, cyclic=cyclic) - T,
-        "n": _tomorrow(T, cyclic=cyclic) - T,
-    }
-    optional = {
-        "K": (day.clearness, 0.25, -2.0),
-        "D": (day.temp_range, 10.0, -1.0),
-        "h": (day.dew_depression, 15.0, -0.7),
-        "P": (day.peakiness, 2.5, -1.0),
-        "q": (day.warm_hours, 5.0, -0.5),
-        "k": (day.sky_depression, 15.0, -0.9),
-        "v": (day.windy_hours, 1.0, 0.0),
-    }
-    for letter, (values, scale, offset) in optional.items():
+    shape = np.shape(day.transmitted)
+    found = {}
+    for letter, (field, scale, offset) in SCALES.items():
+        values = getattr(day, field)
         if values is not None:
-            found[letter] = values / scale + offset
+            found[letter] = np.broadcast_to(values / scale + offset, shape)
+    found["w"] = np.broadcast_to(np.sqrt(np.maximum(day.wind_speed, 0.0) / 2.0) - 1.0, shape)
+    S, T = found["S"], found["T"]
+    past = np.full((2, *shape[1:]), np.nan) if state is None else state
+    found["E"] = remembered(S, memory, past[0]) - S
+    found["m"] = remembered(T, memory, past[1]) - T
+    after = np.concatenate([T[1:], T[-1:]]) if temp_next is None else temp_next / 20.0 - 1.0
+    found["n"] = np.where(np.isfinite(after), after, T) - T
     return found
 
 
-def remembered(values: Array, memory: float, *, cyclic: bool) -> Array:
+def remembered(values: Array, memory: float, state: Array | None = None) -> Array:
     """What a basin remembers of the days before: their mean, each fading by `memory` a day.
+
+    Before its first day the basin remembers that day, or where it is missing the first that is not.
 
     Parameters
     ----------
     values : ndarray, shape (day, cell)
-        Any quantity of the day; NaN leaves the memory as it is.
+        Any quantity of the day; a value that is not finite leaves the memory as it is.
     memory : float
         Share that is left a day later. [1]
-    cyclic : bool
-        Whether the days before the first are the last.
+    state : ndarray, shape (cell,), optional
+        What it remembers on the first day, NaN for nothing yet; changed to what it remembers after the last.
 
     Returns
     -------
@@ -280,107 +253,53 @@ def remembered(values: Array, memory: float, *, cyclic: bool) -> Array:
 
     Examples
     --------
-    >>> remembered(np.array([[1.0], [3.0], [3.0]]), 0.5, cyclic=False).ravel()
+    >>> remembered(np.array([[1.0], [3.0], [3.0]]), 0.5).ravel()
     array([1., 1., 2.])
     """
-    # Before the first day the basin remembers that day, or where it is missing the first that is not.
-    first = np.argmax(np.isfinite(values), axis=0)
-    state = np.nan_to_num(np.take_along_axis(values, first[None], axis=0)[0])
-    run = np.concatenate([values[-_WARM_UP_DAYS:], values]) if cyclic else values
-    if np.isfinite(run).all():
-        faded, _ = lfilter([1.0 - memory], [1.0, -memory], run, axis=0, zi=memory * state[None])
-        before = np.concatenate([state[None], faded[:-1]])
-        return np.asarray(before[len(run) - len(values):])
-    out = np.empty_like(run)
-    for index, today in enumerate(run):
-        out[index] = state
-        state = np.where(np.isfinite(today), memory * state + (1.0 - memory) * today, state)
-    return out[len(run) - len(values):]
-
-
-#: Days at the end of a typical year that are run through before its first.
-_WARM_UP_DAYS = 30
-
-
-def _tomorrow(values: Array, *, cyclic: bool) -> Array:
-    """Values of the next day; the last day, and one before a gap, is its own tomorrow."""
-    after = np.concatenate([values[1:], values[:1] if cyclic else values[-1:]])
-    return np.where(np.isfinite(after), after, values)
-
-
-def polynomials(predictors: Mapping[str, Array], terms: tuple[str, ...], coefficients: Array) -> Array:
-    """Sums of coefficient times product of predictors, for several sets of coefficients at once.
-
-    Worked through in pieces that stay in the cache: each product is made once, from a shorter one, and one
-    matrix product serves all sets.
-
-    Parameters
-    ----------
-    predictors : mapping of str to ndarray, shape (day, cell)
-        By letter.
-    terms : tuple of str
-        Products of predictors, '1' for the constant.
-    coefficients : ndarray, shape (set, term)
-        [any]
-
-    Returns
-    -------
-    ndarray, shape (set, day, cell)
-
-    Raises
-    ------
-    ValueError
-        If there is not one coefficient per term.
-
-    Examples
-    --------
-    >>> day = {"S": np.array([[2.0]]), "T": np.array([[3.0]])}
-    >>> polynomials(day, ("1", "S", "SST"), np.array([[1.0, 10.0, 100.0], [0.0, 0.0, 1.0]])).ravel()
-    array([1221.,   12.])
-    """
-    plan, rows = _plan(terms)
-    if coefficients.shape[1] != len(terms):
-        raise ValueError(f"{coefficients.shape[1]} coefficients for {len(terms)} terms")
-    spread = np.zeros((len(coefficients), len(plan)))
-    spread[:, rows] = coefficients
-    days, cells = predictors["S"].shape
-    out = np.empty((len(coefficients), days, cells))
-    length = max(1, _PIECE // max(cells, 1))
-    work = np.empty((len(plan), length * cells))
-    for start in range(0, days, length):
-        piece = slice(start, min(start + length, days))
-        some = {letter: np.ravel(values[piece]) for letter, values in predictors.items()}
-        products = work[:, : some["S"].size]
-        for row, (parent, letter) in enumerate(plan):
-            if not letter:
-                products[row] = 1.0
-            elif parent < 0:
-                products[row] = some[letter]
-            else:
-                np.multiply(products[parent], some[letter], out=products[row])
-        out[:, piece] = (spread @ products).reshape(len(coefficients), -1, cells)
+    out = np.empty_like(values)
+    now = np.full(values.shape[1:], np.nan) if state is None else state
+    known = np.isfinite(values)
+    for index, today in enumerate(values):
+        if np.isnan(now).any():
+            np.copyto(now, today, where=known[index] & np.isnan(now))
+        out[index] = now
+        if known[index].all():
+            now *= memory
+            now += (1.0 - memory) * today
+        else:
+            np.copyto(now, memory * now + (1.0 - memory) * today, where=known[index])
     return out
 
 
-#: Values of a predictor worked on at a time: with the products of all terms about a megabyte.
-_PIECE = 4096
+def evaluate(name: str, predictors: Mapping[str, Array], coefficients: Sequence[float]) -> Array:
+    """Sum of coefficients times products of predictors.
 
+    Every number comes from its own predictors by the same operations, whatever stands beside it.
 
-@lru_cache(maxsize=16)
-def _plan(terms: tuple[str, ...]) -> tuple[tuple[tuple[int, str], ...], tuple[int, ...]]:
-    """How to make the products: (row of the shorter product or -1, letter) per row; and the row of each term."""
-    rows: dict[str, int] = {}
-    plan: list[tuple[int, str]] = []
+    Parameters
+    ----------
+    name : str
+        A key of `VARIANTS`, or 'frost' for `FROST_TERMS`.
+    predictors : mapping of str to ndarray, all of one shape
+        By letter.
+    coefficients : sequence of float
+        One per term. [any]
 
-    def row_of(term: str) -> int:
-        if term not in rows:
-            parent = -1 if len(term) <= 1 else row_of(term[:-1])
-            plan.append((parent, term[-1:]))
-            rows[term] = len(plan) - 1
-        return rows[term]
+    Returns
+    -------
+    ndarray, shape of the predictors
 
-    order = tuple(row_of(term.replace("1", "")) for term in terms)
-    return tuple(plan), order
+    Examples
+    --------
+    >>> day = {letter: np.zeros((1, 2)) for letter in LETTERS} | {"S": np.array([[1.0, 2.0]])}
+    >>> evaluate("frost", day, [0.5, 0.0, 10.0, 0.0, 0.0, 0.0, 0.0, 0.0, 0.0])
+    array([[10.5, 20.5]])
+    """
+    shape = np.shape(predictors["S"])
+    rows = [np.reshape(predictors[letter], (1, -1)) if letter in predictors else None for letter in LETTERS]
+    out = np.empty((1, int(np.prod(shape))))
+    POLYNOMIALS[name](rows, coefficients, out, 1)
+    return out.reshape(shape)
 
 
 def design_matrix(predictors: Mapping[str, Array], terms: tuple[str, ...]) -> Array:
@@ -391,17 +310,25 @@ def design_matrix(predictors: Mapping[str, Array], terms: tuple[str, ...]) -> Ar
     predictors : mapping of str to ndarray, each of shape (sample,)
         By letter.
     terms : tuple of str
-        Products of predictors.
+        Products of predictors, '1' for the constant.
 
     Returns
     -------
     ndarray, shape (sample, term)
+
+    Examples
+    --------
+    >>> design_matrix({"S": np.array([2.0]), "T": np.array([3.0])}, ("1", "S", "SST"))
+    array([[ 1.,  2., 12.]])
     """
-    rows = {letter: values[None] for letter, values in predictors.items()}
-    return polynomials(rows, terms, np.eye(len(terms)))[:, 0].T
+    matrix = np.ones((len(predictors["S"]), len(terms)))
+    for column, term in enumerate(terms):
+        for letter in term.replace("1", ""):
+            matrix[:, column] *= predictors[letter]
+    return matrix
 
 
-def frost_factors(temp_air: Array, predictors: Mapping[str, Array], coefficients: Array) -> Array:
+def frost_factor(temp_air: Array, predictors: Mapping[str, Array], coefficients: Sequence[float]) -> Array:
     """Share of the litres that is left when part of the brine may be frozen, 1 on warm days.
 
     Parameters
@@ -410,20 +337,20 @@ def frost_factors(temp_air: Array, predictors: Mapping[str, Array], coefficients
         Mean of the day. [degC]
     predictors : mapping of str to ndarray, shape (day, cell)
         By letter.
-    coefficients : ndarray, shape (set, term)
+    coefficients : sequence of float
         Per term of `FROST_TERMS`.
 
     Returns
     -------
-    ndarray, shape (set, day, cell)
+    ndarray, shape (day, cell)
         0 to 1. [1]
     """
-    factors = np.ones((len(coefficients), *temp_air.shape))
+    factor = np.ones(np.shape(temp_air))
     cold = temp_air < FROST_BELOW_DEGC
     if np.any(cold):
-        some = {letter: values[cold][None] for letter, values in predictors.items()}
-        factors[:, cold] = thaw(polynomials(some, FROST_TERMS, coefficients)[:, 0])
-    return factors
+        some = {letter: values[cold] for letter, values in predictors.items()}
+        factor[cold] = thaw(evaluate("frost", some, coefficients))
+    return factor
 
 
 def thaw(score: Array) -> Array:

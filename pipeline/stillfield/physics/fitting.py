@@ -19,7 +19,7 @@ from stillfield.physics.correlation import (
     DailyCorrelation,
     Day,
     design_matrix,
-    polynomials,
+    evaluate,
     scaled_predictors,
     thaw,
 )
@@ -129,11 +129,11 @@ def _sample(still: Still, climates: ClimateSet) -> _Sample:
 
 def _fit_variant(variant: str, sample: _Sample, *, memory: float, ceiling: float) -> DailyCorrelation:
     day = sample.by_steps if variant == "hourly" else sample.by_days
-    predictors = scaled_predictors(day, memory, cyclic=False)
+    predictors = scaled_predictors(day, memory)
     warm = sample.usable & ~sample.frost
     picked = {letter: values[warm] for letter, values in predictors.items()}
     coefficients = _least_squares(design_matrix(picked, VARIANTS[variant]), sample.litres[warm])
-    raw = np.maximum(polynomials(predictors, VARIANTS[variant], np.array([coefficients]))[0], 0.0)
+    raw = np.maximum(evaluate(variant, predictors, coefficients), 0.0)
     frost = _fit_frost(day, predictors, sample, raw)
     fitted = DailyCorrelation(
         variant=variant, coefficients=coefficients, frost=frost, memory=memory, ceiling=ceiling,
