@@ -11,7 +11,7 @@ from collections.abc import Callable
 
 import numpy as np
 
-from stillfield.methods import Block
+from stillfield.methods import Block, whole_record
 from stillfield.methods.fit_store import fit_for
 from stillfield.methods.fitted import Fitted
 from stillfield.methods.heat_balance import HeatBalance
@@ -19,7 +19,7 @@ from stillfield.physics.climates import invented_climates
 from stillfield.physics.correlation import VARIANTS, scaled_predictors
 from stillfield.physics.day_shape import day_from_days
 from stillfield.physics.fitting import fit_still
-from stillfield.physics.gain import GainTable
+from stillfield.physics.gain_table import GainTable
 from stillfield.settings.still_file import load_still_file
 
 CELLS, DAYS, HOURLY_CELLS = 2000, 730, 300
@@ -74,7 +74,9 @@ def main() -> None:
         "  of it the correlation alone": (seconds(lambda: correlation.litres(day)), DAYS * CELLS),
         "the correlation as a plain expression": (seconds(plain), DAYS * CELLS),
         "fitted, hourly weather": (seconds(lambda: Fitted("hourly").daily_yield(hours, still)), 365 * HOURLY_CELLS),
-        "heat balance, hourly weather": (seconds(lambda: HeatBalance().daily_yield(hours, still)), 365 * HOURLY_CELLS),
+        "heat balance, hourly weather": (
+            seconds(lambda: whole_record(HeatBalance(), hours, still, [still.condition])), 365 * HOURLY_CELLS
+        ),
     }
     base = figures["fitted, daily weather, one condition"]
     print(f"{'':<42} {'M cell-days/s':>14} {'time per cell-day':>18}")

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from stillfield.evidence.days import LATENT_MJ, household_still, made_day
 from stillfield.evidence.row import MEMORY, PRACTICE, Row, between
 from stillfield.evidence.sites import MIAMI, open_sites
+from stillfield.methods import whole_record
 from stillfield.methods.heat_balance import HeatBalance
 from stillfield.physics.published_fits import NAFEY_2000
 from stillfield.physics.still import CoverMaterial, Panel, Still
@@ -179,7 +180,7 @@ def _year_and_plants() -> list[Row]:
     sun = miami.by_days.weather["irradiation"][:, 0]
 
     def daily(still: Still) -> NDArray[np.floating[Any]]:
-        return HeatBalance().daily_yield(miami.by_steps, still).litres[:, 0]
+        return whole_record(HeatBalance(), miami.by_steps, still, [still.condition])[0].litres[:, 0]
 
     litres = daily(household_still())
     bright = sun > LEAST_SUN_MJ

@@ -11,7 +11,7 @@ from stillfield.physics import balance_kernel as kernel
 
 #: A multiplication and the addition after it may be one instruction, which rounds once; nothing else moves.
 FUSED = {"contract"}
-INLINE = {"forceinline": True, "fastmath": FUSED}
+INLINE: Any = {"forceinline": True, "fastmath": FUSED}
 
 
 @overload(kernel.choose, strict=False, jit_options=INLINE)
@@ -52,7 +52,7 @@ def _note_end(record: Any, row: Any, work: Any, start: Any, count: Any) -> Any:
 for _function in (
     kernel.vapour, kernel.cubic, kernel.cube_root, kernel.plain_transfer, kernel.moist_transfer, kernel.flow,
     kernel.system, kernel.passing, kernel.dry, kernel.aim, kernel.move, kernel.after, kernel.distilled,
-    kernel.around, kernel.refreshed, kernel.ledger, kernel.cell_at, kernel.enter_step, kernel.end_day,
+    kernel.around, kernel.refreshed, kernel.ledger, kernel.enter_step, kernel.end_day,
     kernel.advance,
 ):
     register_jitable(**INLINE)(_function)

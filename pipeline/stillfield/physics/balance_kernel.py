@@ -412,19 +412,14 @@ def enter_step(work: Any, forcing: Any, f: Any, start: Any, count: Any, k: Numbe
         work[8, c] = weather.cover_slope
 
 
-def cell_at(block: Any, c: Any) -> Cell:
-    """Numbers of cell `c` of a block."""
-    return Cell(
-        block[0, c], block[1, c], block[2, c], block[3, c], block[4, c], block[5, c], block[6, c], block[7, c]
-    )
-
-
 def advance(work: Any, block: Any, k: Numbers, record: Any, row: Any, start: Any, count: Any) -> None:
     """One sub-step of the cells of a block: the loop in which the processor takes several cells at once."""
     for c in range(count):
         old = State(work[0, c], work[1, c], work[2, c], work[3, c])
         weather = Weather(work[6, c], work[7, c], work[8, c])
-        cell = cell_at(block, c)
+        cell = Cell(
+            block[0, c], block[1, c], block[2, c], block[3, c], block[4, c], block[5, c], block[6, c], block[7, c]
+        )
         moved = move(aim(old, weather, cell, k), old, weather, cell, k)
         new = after(moved, old, cell, k)
         work[0, c] = new.water

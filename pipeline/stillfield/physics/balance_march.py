@@ -177,7 +177,8 @@ class BalanceMarch:
 
     def _missing_at_first(self, fields: Fields) -> NDArray[np.bool_]:
         """Whether weather is missing before the first yield day starts."""
-        return np.isnan(np.sum([field[: self._skipped].sum(axis=0) for field in fields], axis=0))
+        sums = [field[: self._skipped].sum(axis=0) for field in fields]
+        return np.asarray(np.isnan(np.sum(sums, axis=0)))
 
     def _walk(self, fields: Fields, lead: NDArray[Any], night: NDArray[Any]) -> BalanceResult:
         """Take the steps of a window and give its days, gaps still to be blanked."""
