@@ -10,13 +10,10 @@ import pytest
 import xarray as xr
 from scipy.integrate import quad
 from scipy.optimize import brentq
-from stillfield.stages.estimate import estimate
 
 import stillfield as sf
 from data.fetch import fetched
 from stillfield.engine.labelled import on_local_days
-from stillfield.methods.baselines import ConstantEfficiency
-from stillfield.methods.registry import get_method
 from stillfield.physics.clearness_days import (
     DAYS_IN_MONTH,
     ORDER,
@@ -26,7 +23,6 @@ from stillfield.physics.clearness_days import (
     order_of_days,
 )
 from stillfield.physics.sun import extraterrestrial_irradiation
-from stillfield.stages.aggregate import aggregate
 
 STILL = Path(__file__).parents[2] / "config" / "stills" / "single-slope-glass.yaml"
 MONTH = np.repeat(np.arange(12), DAYS_IN_MONTH)
@@ -113,10 +109,10 @@ def _years() -> list[tuple[str, xr.Dataset, xr.Dataset, xr.Dataset]]:
 @lru_cache(maxsize=1)
 def _errors() -> dict[str, np.ndarray]:
     """Relative errors of annual yields and of monthly yields above 10 L, of generated and of mean days, by site."""
-    still, method = sf.load_still(STILL), get_method("fitted", hourly=False)
+    still = sf.load_still(STILL)
 
     def litres(days: xr.Dataset) -> np.ndarray:
-        return aggregate(estimate(days, still, method, rule=ConstantEfficiency(0.3)))["monthly_yield"].values[:, 0]
+        return sf.monthly_yield(days.assign_attrs(step_hours=24.0), still)["monthly_yield"].values[:, 0]
 
     found: dict[str, list[float]] = {"generated year": [], "flat year": [], "generated": [], "flat": []}
     for _, real, generated, means in _years():

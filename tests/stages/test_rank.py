@@ -7,8 +7,8 @@ import pandas as pd
 import pytest
 import xarray as xr
 
+from month_samples import months_of_days
 from stillfield.errors import PlacesError
-from stillfield.stages.aggregate import aggregate
 from stillfield.stages.rank import great_circle_km, rank_places
 
 
@@ -19,14 +19,12 @@ def monthly() -> xr.Dataset:
     base = np.array([[3.0, np.nan, 4.0], [5.0, 3.5, 2.0]])
     season = 1.0 + 0.3 * np.cos(2 * np.pi * (np.arange(days) - 172) / 365)
     values = season[:, None, None] * base
-    names = ("daily_yield", "daily_yield_low", "daily_yield_high", "daily_yield_rule", "frost", "outside_fit")
-    factors = (1.0, 0.75, 1.25, 0.9, 0.0, 0.0)
-    data = {n: (("time", "latitude", "longitude"), values * f) for n, f in zip(names, factors, strict=True)}
     coords = {
         "time": pd.date_range("2001-01-01", periods=days, freq="D"), "latitude": [10.0, 11.0],
         "longitude": [40.0, 41.0, 42.0],
     }
-    return aggregate(xr.Dataset(data, coords=coords, attrs={"record": "series"}))
+    data = {"daily_yield": (("time", "latitude", "longitude"), values)}
+    return months_of_days(xr.Dataset(data, coords=coords, attrs={"record": "series"}), band=(0.75, 1.25))
 
 
 def table(**columns: list[object]) -> pd.DataFrame:

@@ -8,12 +8,10 @@ import numpy as np
 import pytest
 import xarray as xr
 
+from stillfield.api import monthly_yield
 from stillfield.errors import WeatherError
 from stillfield.physics.clearness_days import DAYS_IN_MONTH
 from stillfield.sources import open_source
-from stillfield.stages.aggregate import aggregate
-from stillfield.stages.estimate import estimate
-from stillfield.engine.labelled import on_local_days
 
 LATITUDE, LONGITUDE = np.array([10.0, 12.0]), np.array([40.0, 42.0, 44.0])
 #: Mean daily irradiation of each month [MJ m-2] at the first cell; the others have a little less.
@@ -157,11 +155,10 @@ def test_other_grids_are_refused_until_a_distance_is_stated_and_told(tmp_path):
     assert not np.isnan(opened(*files, join_within_km=400).temp_air.values).any()
 
 
-def test_days_differ_and_their_yield_is_not_that_of_the_mean_day(tmp_path, still, rule_and_method):
-    rule, method = rule_and_method
+def test_days_differ_and_their_yield_is_not_that_of_the_mean_day(tmp_path, still):
     days = opened(written(means(), tmp_path / "m.nc"))
     assert float(days.irradiation.isel(latitude=0, longitude=0)[:31].std()) > 2.0
-    monthly = aggregate(estimate(on_local_days(days).daily, still, method, rule=rule))
+    monthly = monthly_yield(days, still)
     assert "monthly_yield_poor_year" not in monthly
     assert (monthly.days_used == monthly.days_expected).all()
 
@@ -171,14 +168,6 @@ def still():
     from stillfield.api import load_still
 
     return load_still(Path(__file__).parents[2] / "config/stills/single-slope-glass.yaml")
-
-
-@pytest.fixture
-def rule_and_method():
-    from stillfield.methods.baselines import ConstantEfficiency
-    from stillfield.methods.registry import get_method
-
-    return ConstantEfficiency(0.3), get_method("rule", hourly=False)
 
 
 def test_sunshine_from_the_temperature_range_only_when_asked_for(tmp_path):

@@ -17,8 +17,8 @@ from stillfield.methods import WARM_UP_DAYS, Block, Cells, DailyYield, March, Me
 from stillfield.physics.still import Still
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.sources.gates import most_irradiation, refuse_sunshine
-from stillfield.stages.aggregate import Months, MonthSums, climatology
-from stillfield.stages.prepare import LocalDays, count_days, days_of_steps, irradiation_of_days
+from stillfield.stages.aggregate import Months, MonthSums
+from stillfield.stages.prepare import LocalDays, days_of_steps, irradiation_of_days
 
 Array = NDArray[np.floating[Any]]
 
@@ -95,10 +95,12 @@ class BlockResult:
     ----------
     cells : ndarray of int, shape (cell,)
         Their numbers in the region.
-    monthly : list of dict
-        For each still the values of `climatology`, with the cell as last axis.
-    irradiation_days : tuple of ndarray, shape (12, cell)
-        Irradiation over all used days of the month [MJ m-2], and their number.
+    span : tuple of int, or None
+        As in the plan.
+    sums : list of list of (ndarray of int or slice, MonthSums)
+        For each still the months of the cells that have any, by groups of them.
+    missing_days : ndarray of int, shape (cell,)
+        Days without irradiation.
     counts : dict
         What was found and changed: variable to kind to number.
     followed : dict
@@ -108,8 +110,9 @@ class BlockResult:
     """
 
     cells: NDArray[np.int64]
-    monthly: list[dict[str, Array]]
-    irradiation_days: tuple[Array, Array]
+    span: tuple[int, int] | None
+    sums: list[list[tuple[NDArray[np.intp] | slice, MonthSums]]]
+    missing_days: NDArray[np.int64]
     counts: Counts
     followed: dict[int, Array]
     sampled: dict[int, dict[str, Array]]
@@ -197,11 +200,18 @@ class _Walk:
         taken = weather if self.work.by_steps else daily
         self._sample(first_day, taken)
         finite = np.isfinite(sunshine)
-        self.missing_days += sunshine.shape[0] - np.count_nonzero(finite, axis=0)
-        self._set_out(finite.any(axis=0))
+        mine = self._counted(first_day, sunshine.shape[0])
+        self.missing_days += max(mine.stop - mine.start, 0) - np.count_nonzero(finite[mine], axis=0)
+        self._set_out(finite.any(axis=0), first_day)
         for group in self.groups:
             self._advance(group, numbers, {name: values[:, group.cells] for name, values in taken.items()},
                           sunshine[:, group.cells], last=last)
+
+    def _counted(self, first_day: int, days: int) -> slice:
+        """Of some days those that this block counts."""
+        first, end = self.block.span or (0, self.work.local.days)
+        start = min(max(first - first_day, 0), days)
+        return slice(start, max(min(end - first_day, days), start))
 
     def _daily(self, weather: Mapping[str, Array]) -> Mapping[str, Array]:
         """Weather of days; of steps only what the method takes."""
@@ -223,7 +233,7 @@ class _Walk:
             refuse_sunshine(float(rows[day, row, column]), float(np.broadcast_to(most, rows.shape)[day, row, column]),
                             int(beyond.sum()), where=f"{self.work.reader.where}, {spot}")
 
-    def _set_out(self, alive: NDArray[np.bool_]) -> None:
+    def _set_out(self, alive: NDArray[np.bool_], first_day: int) -> None:
         """Begin with the cells that have weather; those that get it later set out later."""
         for group in self.groups:
             alive[group.cells] = False
@@ -236,11 +246,12 @@ class _Walk:
                       work.local.steps_per_day if work.by_steps else 1)
         marches = [work.method.begin(place, still, (still.condition, still.condition_low, still.condition_high))
                    for still in work.stills]
-        count = place.latitude.size
+        count, counted_from = place.latitude.size, (self.block.span or (0, 0))[0]
         self.groups.append(_Group(
             cells, marches,
-            [MonthSums.begin(work.months, count, min_valid_days_share=work.min_valid_days_share) for _ in marches],
-            [np.zeros((0, count), np.float32) for _ in marches], [-1 for _ in marches],
+            [MonthSums.begin(work.months, count, min_valid_days_share=work.min_valid_days_share, first_day=counted_from,
+                             part=self.block.span is not None) for _ in marches],
+            [np.zeros((0, count), np.float32) for _ in marches], [first_day for _ in marches],
         ))
 
     def _advance(
@@ -255,8 +266,6 @@ class _Walk:
             band = march.advance(block, last=last)
             if work.months.typical:
                 band = [_real_days(one, min(WARM_UP_DAYS, work.local.days), work.local.days) for one in band]
-            if group.done[number] < 0:
-                group.done[number] = numbers.start
             held = group.sunshine[number]
             known = np.concatenate([held, sunshine]) if held.shape[0] else sunshine
             given = band[0].litres.shape[0]
@@ -267,59 +276,37 @@ class _Walk:
     def _count(self, group: _Group, number: int, band: Sequence[DailyYield], sunshine: Array) -> None:
         central, low, high = band
         first = group.done[number]
-        flags = [flag if flag is not None and flag.any() else None for flag in (central.frost, central.outside)]
-        group.sums[number].add(first, [central.litres, low.litres, high.litres, sunshine], flags)
+        mine = self._counted(first, central.litres.shape[0])
+        days = slice(first + mine.start, first + mine.stop)
+        flags = [flag[mine] if flag is not None and flag.any() else None for flag in (central.frost, central.outside)]
+        group.sums[number].add(days.start, [central.litres[mine], low.litres[mine], high.litres[mine], sunshine[mine]],
+                               flags)
         for cell, litres in self.followed.items():
-            mine = np.flatnonzero(self.cells[group.cells] == cell)
-            if mine.size:
-                litres[number][first:first + central.litres.shape[0]] = central.litres[:, mine[0]]
+            at = np.flatnonzero(self.cells[group.cells] == cell)
+            if at.size:
+                litres[number][days] = central.litres[mine, at[0]]
 
     def _sample(self, first_day: int, weather: Mapping[str, Array]) -> None:
+        if first_day >= self.work.sampled_days or not self.sampled:
+            return
         per_day = self.work.local.steps_per_day if self.work.by_steps else 1
-        room = (self.work.sampled_days - first_day) * per_day
-        for cell, kept in self.sampled.items() if room > 0 else ():
+        days = next(iter(weather.values())).shape[0] // per_day
+        mine = self._counted(first_day, min(days, self.work.sampled_days - first_day))
+        for cell, kept in self.sampled.items():
             at = int(np.flatnonzero(self.cells == cell)[0])
             for name, values in weather.items():
-                kept.setdefault(name, []).append(values[:room, at].copy())
+                kept.setdefault(name, []).append(values[mine.start * per_day:mine.stop * per_day, at].copy())
 
     def result(self, counts: Counts) -> BlockResult:
         """What the block gave."""
-        monthly = []
-        everywhere = self.cells.size
-        used = np.zeros((2, 12, everywhere))
-        for number in range(len(self.work.stills)):
-            whole: dict[str, Array] = {}
-            empty = MonthSums.begin(self.work.months, 0, min_valid_days_share=1.0)
-            for name, none in climatology(empty, rule_litres_per_mj=1.0).items():
-                nothing = 0.0 if name == "days_used" else np.nan
-                whole[name] = np.full((*none.shape[:-1], everywhere), nothing, none.dtype)
-            whole["days_expected"][:] = self._expected()[:, None]
-            for group in self.groups:
-                sums = group.sums[number]
-                found = climatology(sums, rule_litres_per_mj=self.work.rule_litres_per_mj)
-                for name, values in found.items():
-                    whole[name][..., group.cells] = values
-                if number == 0:
-                    used[0][:, group.cells] = sums.totals[3]
-                    used[1][:, group.cells] = sums.used
-            monthly.append(whole)
-        self._count_days(counts)
         return BlockResult(
-            self.cells, monthly, (used[0], used[1]), counts,
+            self.cells, self.block.span,
+            [[(group.cells, group.sums[number]) for group in self.groups] for number in range(len(self.work.stills))],
+            self.missing_days, counts,
             {cell: np.stack(litres) for cell, litres in self.followed.items()},
             {cell: {name: np.concatenate(parts) for name, parts in kept.items()}
              for cell, kept in self.sampled.items()},
         )
-
-    def _expected(self) -> Array:
-        months = self.work.months
-        return np.bincount(months.month - 1, weights=months.length, minlength=12)
-
-    def _count_days(self, counts: Counts) -> None:
-        if self.work.local.steps_per_day > 1:
-            kept = self.work.reader.kept(self.block)
-            counts["days"] = count_days(
-                self.work.local, self.block.columns, kept, self.missing_days.reshape(kept.shape))
 
 
 def _real_days(one: DailyYield, before: int, days: int) -> DailyYield:

@@ -13,7 +13,8 @@ from numpy.typing import NDArray
 
 from stillfield.engine.block import BlockResult, Work
 from stillfield.engine.embedded import work_embedded
-from stillfield.engine.planning import Plan, plan_blocks
+from stillfield.engine.gathering import Gathering
+from stillfield.engine.planning import BlockPlan, Plan, plan_blocks, split_in_time
 from stillfield.engine.readers import LazyReader, Reader
 from stillfield.engine.steps import Counts
 from stillfield.errors import MethodError
@@ -24,7 +25,7 @@ from stillfield.sources.plausible import count_doubtful
 from stillfield.sources.tally import COUNT, COUNTS, sentences, totals
 from stillfield.stages.aggregate import Months, aggregate
 from stillfield.stages.audit import MOST_DAYS, Sample
-from stillfield.stages.prepare import LocalDays, local_days, space_of
+from stillfield.stages.prepare import LocalDays, count_days, local_days, space_of
 from stillfield.vocabulary import STEP_HOURS_DAILY
 
 Progress = Callable[[int, int], None]
@@ -62,10 +63,13 @@ class Means:
         Blocks worked at the same time; one per processor without it.
     memory_bytes : int or None
         Memory that may be used; no limit without it. [bytes]
+    scheduler : str or None
+        Where the blocks are worked: in this process without it, else as `engine.cluster` takes it.
     """
 
     workers: int | None = None
     memory_bytes: int | None = None
+    scheduler: str | None = None
 
     @property
     def at_once(self) -> int:
@@ -91,6 +95,8 @@ class Prepared:
         How they are read.
     plan : Plan
         Blocks and windows.
+    means : Means
+        What the run may use.
     """
 
     weather: xr.Dataset
@@ -99,6 +105,7 @@ class Prepared:
     names: tuple[str, ...]
     reader: Reader
     plan: Plan
+    means: Means = field(default_factory=Means)
 
     @property
     def months(self) -> Months:
@@ -156,12 +163,14 @@ def prepare(
     used = means or Means()
     reader = LazyReader(_bare(weather, names), _inside(weather))
     typical = weather.attrs.get("record") == "typical-year"
-    months = Months.of(local.time)
+    months = Months.of(local.time, typical=typical)
     plan = plan_blocks(
         reader.layout, variables=len(names), years=months.years.size, stills=stills, workers=used.at_once,
         memory_bytes=used.memory_bytes, whole_record=typical,
     )
-    return Prepared(weather, local, method, names, reader, plan)
+    if used.scheduler is not None:
+        plan = split_in_time(plan, months, local, workers=used.at_once)
+    return Prepared(weather, local, method, names, reader, plan, used)
 
 
 def _bare(weather: xr.Dataset, names: Sequence[str]) -> xr.Dataset:
@@ -250,7 +259,15 @@ def months_of(
         needs.min_valid_days_share, np.array(sorted(set(followed)), dtype=np.int64),
         _candidates(prepared), MOST_DAYS,
     )
-    return _gathered(prepared, work, work_embedded(work, prepared.plan), progress)
+    return _gathered(prepared, work, _results(prepared, work), progress)
+
+
+def _results(prepared: Prepared, work: Work) -> Iterator[BlockResult]:
+    if prepared.means.scheduler is None:
+        return work_embedded(work, prepared.plan)
+    from stillfield.engine.cluster import work_on_cluster
+
+    return work_on_cluster(work, prepared.plan, scheduler=prepared.means.scheduler)
 
 
 def _candidates(prepared: Prepared) -> NDArray[np.int64]:
@@ -266,39 +283,8 @@ def _candidates(prepared: Prepared) -> NDArray[np.int64]:
     return cells[np.unique(np.round(spots).astype(np.int64))] if cells.size else cells
 
 
-@dataclass
-class _Gathering:
-    """Arrays of the whole region, filled block by block."""
-
-    cells: int
-    monthly: list[dict[str, NDArray[np.floating]]] = field(default_factory=list)
-    irradiation: tuple[NDArray[np.floating], NDArray[np.floating]] | None = None
-    counts: Counts = field(default_factory=dict)
-    followed: dict[int, NDArray[np.floating]] = field(default_factory=dict)
-    sampled: dict[int, dict[str, NDArray[np.floating]]] = field(default_factory=dict)
-
-    def take(self, result: BlockResult) -> None:
-        """Put one block in its place."""
-        if not self.monthly:
-            self.monthly = [{name: np.full((*values.shape[:-1], self.cells), np.nan, values.dtype)
-                             for name, values in one.items()} for one in result.monthly]
-        for mine, one in zip(self.monthly, result.monthly, strict=True):
-            for name, values in one.items():
-                mine[name][..., result.cells] = values
-        if self.irradiation is None:
-            self.irradiation = (np.zeros((12, self.cells)), np.zeros((12, self.cells)))
-        for total, part in zip(self.irradiation, result.irradiation_days, strict=True):
-            total[:, result.cells] = part
-        for name, kinds in result.counts.items():
-            for kind, number in kinds.items():
-                self.counts.setdefault(name, {}).setdefault(kind, 0)
-                self.counts[name][kind] += number
-        self.followed |= result.followed
-        self.sampled |= result.sampled
-
-
 def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult], progress: Progress | None) -> Outcome:
-    gathering = _Gathering(prepared.local.latitude.size)
+    gathering = Gathering(work, prepared.plan)
     for done, result in enumerate(results, start=1):
         gathering.take(result)
         if progress is not None:
@@ -310,12 +296,12 @@ def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult], pr
     monthly = [
         aggregate(values, work.months, weather, space).assign_attrs(
             still=still.name, condition=still.condition, method=work.method.name)
-        for still, values in zip(work.stills, gathering.monthly, strict=True)
+        for still, values in zip(work.stills, gathering.whole(), strict=True)
     ]
     return Outcome(monthly, gathering.followed, _sample(work, gathering))
 
 
-def _all_counts(prepared: Prepared, gathering: _Gathering) -> Counts:
+def _all_counts(prepared: Prepared, gathering: Gathering) -> Counts:
     """Counts of the source, of the engine and of doubtful sunshine; what a source has counted is not counted twice."""
     weather = prepared.weather
     taken = {*prepared.names, "days", "clearness", *(("wind_u", "wind_v") if "wind_speed" in prepared.names else ())}
@@ -328,18 +314,19 @@ def _all_counts(prepared: Prepared, gathering: _Gathering) -> Counts:
     for name in prepared.names:
         kinds = {**gathering.counts.get(name, {}), "values": cells * int(weather.sizes["time"])}
         counts[name] = {**kinds, **counts.get(name, {})}
-    if "days" in gathering.counts:
-        counts["days"] = gathering.counts["days"]
-    if gathering.irradiation is not None and "latitude" in weather.coords:
+    if prepared.local.steps_per_day > 1:
+        _, rows, columns = prepared.reader.layout.shape
+        kept = prepared.reader.kept(BlockPlan(slice(0, rows), slice(0, columns), ()))
+        counts["days"] = count_days(prepared.local, slice(0, columns), kept, gathering.missing_days.reshape(kept.shape))
+    if "latitude" in weather.coords:
         counts["clearness"] = count_doubtful(*gathering.irradiation, prepared.local.latitude)
     return counts
 
 
-def _sample(work: Work, gathering: _Gathering) -> Sample:
+def _sample(work: Work, gathering: Gathering) -> Sample:
+    weather = gathering.weather_of_sample()
     cells = np.array(sorted(gathering.sampled), dtype=np.int64)
     days = min(work.sampled_days, work.local.days)
-    names = list(gathering.sampled[int(cells[0])]) if cells.size else []
-    weather = {name: np.stack([gathering.sampled[int(cell)][name] for cell in cells], axis=1) for name in names}
     block = Block(
         weather, work.local.latitude[cells], work.day_of_year[:days], work.local.steps_per_day if work.by_steps else 1,
         work.local.clock_to_solar_hours[cells],

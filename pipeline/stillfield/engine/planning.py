@@ -14,6 +14,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from stillfield.errors import MemoryLimitError
+from stillfield.stages.aggregate import Months
+from stillfield.stages.prepare import LocalDays
 
 Edges = NDArray[np.int64]
 
@@ -21,6 +23,9 @@ Edges = NDArray[np.int64]
 BASE_BYTES = 260_000_000
 #: Weather of a window: enough to keep the cost of a call small, small enough to stay near the cache. [bytes]
 WINDOW_BYTES = 32_000_000
+#: Days before a span that are walked through to know the state of the basin: what is left of any difference after
+#: them is far below the last digit.
+SPIN_UP_DAYS = 60
 #: Cells of a block where the chunks leave the choice.
 CELLS_WANTED = 4096
 #: How many times the weather of a window is held at most: as stored, in its place, and as what it is turned into.
@@ -60,11 +65,15 @@ class BlockPlan:
         Cells of the block.
     windows : tuple of slice
         Records of each window, in order, without a gap.
+    span : tuple of int, or None
+        First day, and the day after the last, that are counted, where the record is shared among several workers;
+        the days around them are walked through only to know the state of the basin. All days without it.
     """
 
     rows: slice
     columns: slice
     windows: tuple[slice, ...]
+    span: tuple[int, int] | None = None
 
     @property
     def cells(self) -> int:
@@ -159,6 +168,46 @@ def plan_blocks(
     used = min(fitting, len(blocks))
     held = used * cells * max(w.stop - w.start for w in windows) * per_record
     return Plan(blocks, used, round(BASE_BYTES + result + held))
+
+
+def split_in_time(plan: Plan, months: Months, local: LocalDays, *, workers: int) -> Plan:
+    """Share the years of a region that makes too few blocks for all workers.
+
+    Weather stored as one map after another is one block, because a chunk holds every cell. So each worker takes
+    some years of it, and walks through `SPIN_UP_DAYS` before them first.
+
+    Parameters
+    ----------
+    plan : Plan
+        Blocks that hold the whole record.
+    months : Months
+        Calendar of the days.
+    local : LocalDays
+        How the records fall into days.
+    workers : int
+        Workers to be kept busy.
+
+    Returns
+    -------
+    Plan
+        With a span for every block, or as it was.
+    """
+    wanted = min(ceil(2 * workers / len(plan.blocks)), months.years.size, len(plan.blocks[0].windows))
+    if wanted <= 1 or workers <= 1 or months.typical:
+        return plan
+    year_starts = np.flatnonzero(np.diff(months.year[months.of_day], prepend=months.years[0] - 1))
+    firsts = year_starts[np.round(np.linspace(0, year_starts.size, wanted + 1)[:-1]).astype(int)].tolist()
+    spans = list(pairwise([*firsts, local.days]))
+    blocks = []
+    for block in plan.blocks:
+        start, per_day = local.start[block.columns], local.steps_per_day
+        for first, end in spans:
+            earliest = (first - SPIN_UP_DAYS) * per_day + int(start.min())
+            latest = (end + 2) * per_day + int(start.max())
+            windows = tuple(window for window in block.windows
+                            if local.slots[window.stop - 1] >= earliest and local.slots[window.start] < latest)
+            blocks.append(BlockPlan(block.rows, block.columns, windows, (first, end)))
+    return Plan(tuple(blocks), min(workers, len(blocks)), plan.memory_bytes)
 
 
 def _widened(layout: Layout, tall: int, wide: int, workers: int, most_cells: float) -> tuple[int, int]:

@@ -69,7 +69,9 @@ class Steps:
         rows += max(0, -int(start.min()), int(start.max())) if per_day > 1 else 0
         rows = min(rows, self._behind + self.local.days * per_day + spread + per_day)
         self._held = {name: np.full((rows, self.block.cells), np.nan, np.float32) for name in self.names}
-        self._first = -self._behind
+        begin = self._slots(self.block.windows[0])[0] - int(start.min())
+        self._given = max(0, -(-begin // per_day)) if self.block.windows[0].start else 0
+        self._first = self._given * per_day - self._behind
 
     def _slots(self, records: slice) -> tuple[int, int]:
         return int(self.local.slots[records.start]), int(self.local.slots[records.stop - 1]) + 1
@@ -142,11 +144,20 @@ class Steps:
         at = self.local.slots[records.start] - self._start - self._first
         for name, held in self._held.items():
             settled = self.reader.read(name, records, self.block, held, at)
-            for kind, number in settled.items():
+            if self._counted(records):
                 mine = self.counts.setdefault(name, {})
-                mine[kind] = mine.get(kind, 0) + number
+                for kind, number in settled.items():
+                    mine[kind] = mine.get(kind, 0) + number
             if settled.get("missing"):
                 self._doubtful.add(name)
+
+    def _counted(self, records: slice) -> bool:
+        """Whether records are this block's to count, and not those of the block before or after it in time."""
+        if self.block.span is None:
+            return True
+        first, end = (day * self.local.steps_per_day for day in self.block.span)
+        slot = int(self.local.slots[records.start]) - int(self._start.min())
+        return (slot >= first or self.block.span[0] == 0) and (slot < end or self.block.span[1] == self.local.days)
 
     def _blank_after(self, end: int) -> None:
         """Empty the rows after the end of the record, which an earlier window has left full."""

@@ -169,15 +169,24 @@ def _as_bytes(value: Any) -> Any:
     return round(float(found[1]) * 1000 ** " kMGT".index(found[2] or " "))
 
 
+_Size = Annotated[
+    int, BeforeValidator(_as_bytes), PlainSerializer(lambda size: f"{size / 1e6:g} MB"),
+    WithJsonSchema({"type": "string", "pattern": r"^\s*\d+(\.\d+)?\s*[kMGT]?i?B\s*$"}),
+]
+
+
 class Compute(Group):
     """What the run may use of the machine."""
 
-    memory: Annotated[int, BeforeValidator(_as_bytes), PlainSerializer(lambda size: f"{size / 1e6:g} MB"),
-                      WithJsonSchema({"type": "string", "pattern": r"^\s*\d+(\.\d+)?\s*[kMGT]?i?B\s*$"})] | None = Field(
+    memory: _Size | None = Field(
         None, description="Memory that may be used, such as '2 GB'; no limit without it"
     )
     workers: int | None = Field(
         None, ge=1, le=1024, description="Blocks worked at the same time; one per processor without it"
+    )
+    scheduler: str | None = Field(
+        None, min_length=1, description="Address of a dask.distributed scheduler, such as tcp://host:8786, or "
+                                        "'processes' for a cluster on this machine; without it, threads of the run"
     )
 
 

@@ -94,15 +94,50 @@ class MonthSums:
     used: Array
     valid: Array
     _open: tuple[int, Array] = field(repr=False)
+    closed: list[Array] | None = None
 
     @classmethod
-    def begin(cls, months: Months, cells: int, *, min_valid_days_share: float) -> MonthSums:
-        """Set out with no day counted."""
+    def begin(
+        cls, months: Months, cells: int, *, min_valid_days_share: float, first_day: int = 0, part: bool = False
+    ) -> MonthSums:
+        """Set out with no day counted.
+
+        Parameters
+        ----------
+        months : Months
+            Calendar of the record.
+        cells : int
+            Number of cells.
+        min_valid_days_share : float
+            A month with a smaller share of valid days is missing. [1]
+        first_day : int
+            First day that will come, the first of a month.
+        part : bool
+            Whether only part of the record will come. Its months are then kept as sums in `closed`, for `join`.
+        """
         return cls(
-            months, min_valid_days_share, np.full((months.month.size, cells), np.nan, np.float32),
+            months, min_valid_days_share, np.full((0 if part else months.month.size, cells), np.nan, np.float32),
             np.zeros((COUNT, MONTHS, cells)), np.zeros((MONTHS, cells)), np.zeros((MONTHS, cells)),
-            (0, np.zeros((_ROWS, cells))),
+            (int(months.of_day[first_day]), np.zeros((_ROWS, cells))), [] if part else None,
         )
+
+    def join(self, parts: Sequence[tuple[NDArray[np.intp] | slice, MonthSums]], first_day: int) -> None:
+        """Take in the months of one part of the record; parts come in the order of time.
+
+        Parameters
+        ----------
+        parts : sequence of (cells, MonthSums)
+            Groups of cells and what they gathered.
+        first_day : int
+            First day of the part.
+        """
+        first = int(self.months.of_day[first_day])
+        for number in range(max((len(part.closed or ()) for _, part in parts), default=0)):
+            sums = np.zeros((_ROWS, self.by_year.shape[1]))
+            for cells, part in parts:
+                if part.closed is not None and number < len(part.closed):
+                    sums[:, cells] = part.closed[number]
+            self._close(first + number, sums)
 
     def add(self, first_day: int, days: Sequence[Array], flags: Sequence[NDArray[np.bool_] | None]) -> None:
         """Take in the next days.
@@ -120,16 +155,20 @@ class MonthSums:
         if count == 0:
             return
         slot = self.months.of_day[first_day:first_day + count]
+        after = first_day + count
         started, carried = self._open
         sums = np.zeros((int(slot[-1]) - started + 1, *carried.shape))
         sums[0] = carried
         _month_sums()(days, flags, slot - started, sums)
-        ended = slot[-1] + (first_day + count == self.months.of_day.size)
+        ended = slot[-1] + (after == self.months.of_day.size or self.months.of_day[after] != slot[-1])
         for month in range(started, int(ended)):
             self._close(month, sums[month - started])
         self._open = (int(ended), sums[-1] if ended == slot[-1] else np.zeros_like(carried))
 
     def _close(self, number: int, sums: Array) -> None:
+        if self.closed is not None:
+            self.closed.append(sums)
+            return
         count, length = sums[COUNT], float(self.months.length[number])
         row = self.months.month[number] - 1
         enough = count >= self.min_valid_days_share * length

@@ -60,7 +60,7 @@ class LocalDays:
 
     @property
     def step_hours(self) -> float:
-        """Length of a step. [h]"""
+        """Length of a step [h]."""
         return STEP_HOURS_DAILY / self.steps_per_day
 
     @property
