@@ -9,7 +9,8 @@ import numpy as np
 import pvlib
 import pytest
 
-from stillfield.physics.gain import GainTable, daily_transmitted_from_hours, gain_over_steps
+from stillfield.physics.gain import daily_transmitted_from_hours, gain_over_steps
+from stillfield.physics.gain_table import GainTable
 from stillfield.physics.irradiance import (
     daily_diffuse_fraction,
     hourly_diffuse_share,

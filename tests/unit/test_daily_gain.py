@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
 from stillfield.physics.gain import (
-    GainTable,
     daily_gain,
     daily_transmitted_from_hours,
     day_moments,
     gain_over_steps,
 )
+from stillfield.physics.gain_table import GainTable, _row
 from stillfield.physics.irradiance import (
     complete_irradiance,
     disaggregate_day,
@@ -19,7 +21,7 @@ from stillfield.physics.irradiance import (
     split_global,
 )
 from stillfield.physics.still import Panel, Still
-from stillfield.physics.sun import extraterrestrial_irradiation, sun_over_steps
+from stillfield.physics.sun import day_length, extraterrestrial_irradiation, sun_over_steps
 
 LATITUDES = np.array([-45.0, -33.0, -10.0, 0.0, 15.0, 23.0, 36.0, 45.0])
 DAYS = np.arange(3, 367, 13)
@@ -94,6 +96,36 @@ def test_transmitted_is_gain_times_irradiation_and_missing_stays_missing():
     np.testing.assert_allclose(made[known], (rows.gain(days, k) * irradiation)[known], rtol=1e-3)
     assert np.isnan(made[~known]).all()
     assert made[2, 0] == 0.0
+
+
+@pytest.mark.parametrize(
+    "latitudes", [[21.3], np.linspace(10.0, 10.1, 64), np.linspace(-50.0, 50.0, 37), [75.0, -75.0]]
+)
+def test_compiled_look_up_equals_that_in_numpy(latitudes):
+    """Cells of one row, in long runs of rows, and each in its own."""
+    rows = GainTable(STILLS["odd"]).for_latitudes(latitudes)
+    days = np.array([1, 59, 172, 355, 366])
+    random = np.random.default_rng(8)
+    light = random.uniform(-0.5, 45.0, (5, len(latitudes))).astype(np.float32)
+    light[random.random(light.shape) < 0.1] = np.nan
+    numpy, compiled = (rows.sunshine(light, days, engine=engine) for engine in ("numpy", "compiled"))
+    for name in ("transmitted", "clearness", "day_length"):
+        ours, theirs = getattr(numpy, name), getattr(compiled, name)
+        assert theirs.dtype == np.float32
+        np.testing.assert_allclose(theirs, ours, rtol=1e-5, atol=1e-6, err_msg=name)
+    rounded = np.round(np.asarray(latitudes) / 0.05) * 0.05
+    np.testing.assert_allclose(numpy.day_length, day_length(rounded, days))
+
+
+def test_rows_are_made_once_whatever_the_condition_and_the_basin():
+    still = STILLS["steep"]
+    first = GainTable(still).for_latitudes([33.0])
+    made = _row.cache_info().misses
+    again = GainTable(replace(still, name="b", brine_depth_m=0.1).in_condition("new")).for_latitudes([33.0, 33.02])
+    assert _row.cache_info().misses == made
+    np.testing.assert_array_equal(first.table, again.table)
+    GainTable(replace(still, wall_gain=0.9)).for_latitudes([33.0])
+    assert _row.cache_info().misses == made + 1
 
 
 def test_more_irradiation_than_the_sun_gives_is_not_extrapolated():

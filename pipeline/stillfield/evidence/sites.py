@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from stillfield.api import open_weather
 from stillfield.engine.labelled import on_local_days
 from stillfield.errors import WeatherError
-from stillfield.methods import Block, Method
+from stillfield.methods import Block, Method, whole_record
 from stillfield.physics.still import Still
 
 Array = NDArray[np.floating[Any]]
@@ -63,7 +63,7 @@ class Sites:
         """
         block = self.by_days if method.resolution == "daily" else self.by_steps
         kept = {name: values for name, values in block.weather.items() if name not in without}
-        found = method.daily_yield(replace(block, weather=kept), still)
+        found = whole_record(method, replace(block, weather=kept), still, [still.condition])[0]
         frost = np.zeros(found.litres.shape, dtype=bool) if found.frost is None else found.frost
         starts = np.searchsorted(self.month, np.arange(1, MONTHS + 1))
         return np.add.reduceat(found.litres, starts, axis=0), np.logical_or.reduceat(frost, starts, axis=0)

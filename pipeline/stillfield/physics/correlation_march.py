@@ -114,7 +114,7 @@ class CorrelationMarch:
         Parameters
         ----------
         day : Day
-            One day or more, following those of the call before.
+            Those that follow the days of the call before; there may be none.
         last : bool
             Whether no day follows; the last is then its own tomorrow.
 
@@ -125,18 +125,20 @@ class CorrelationMarch:
         """
         day = filled(day, self._fields, self._state.shape[1], self._dtype)
         temp, days = day.temp_air, len(day.temp_air)
-        parts = [(rows(day, slice(0, days - 1)), temp[1:])]
-        if self._pending is not None:
-            parts.insert(0, (self._pending, temp[:1]))
-        newest = rows(day, slice(days - 1, days))
-        if last:
-            parts.append((newest, temp[-1:]))
-        self._pending = None if last else filled(_copied(newest), self._fields, self._state.shape[1], self._dtype)
+        newest = rows(day, slice(days - 1, days)) if days else self._pending
+        parts = []
+        if days and self._pending is not None:
+            parts.append((self._pending, temp[:1]))
+        if days > 1:
+            parts.append((rows(day, slice(0, days - 1)), temp[1:]))
+        if last and newest is not None:
+            parts.append((newest, newest.temp_air))
+        if newest is not None and days and not last:
+            self._pending = filled(_copied(newest), self._fields, self._state.shape[1], self._dtype)
         results = self._results(sum(len(after) for _, after in parts))
         at = 0
         for part, after in parts:
-            if len(after):
-                self._walk(part, after, self._state, results, at)
+            self._walk(part, after, self._state, results, at)
             at += len(after)
         return [(litres, frost, results.outside)
                 for litres, frost in zip(results.litres, results.frost, strict=True)]

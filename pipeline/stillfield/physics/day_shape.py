@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -10,8 +11,9 @@ from numpy.typing import NDArray
 from scipy.signal import lfilter
 
 from stillfield.physics.brine import basin_heat_capacity
+from stillfield.physics.compiling import Engine, is_compiled
 from stillfield.physics.correlation import Day
-from stillfield.physics.gain import GainRows
+from stillfield.physics.gain_table import GainRows
 from stillfield.physics.heat_balance import Forcing
 from stillfield.physics.still import Still
 from stillfield.physics.sun import day_length
@@ -53,8 +55,31 @@ def _capacity(still: Still) -> float:
     )
 
 
+def variant_of(known: Iterable[str]) -> str:
+    """Name the variant of the correlation that daily weather allows.
+
+    Parameters
+    ----------
+    known : iterable of str
+        Vocabulary names of the weather there is.
+
+    Returns
+    -------
+    str
+        A key of `stillfield.physics.correlation.VARIANTS`.
+
+    Examples
+    --------
+    >>> variant_of(["irradiation", "temp_air", "wind_speed", "temp_dew"])
+    'daily-humidity'
+    """
+    there = set(known)
+    name = "daily-range" if {"temp_air_min", "temp_air_max"} <= there else "daily"
+    return f"{name}-humidity" if there & {"temp_dew", "relative_humidity"} else name
+
+
 def day_from_days(
-    weather: Mapping[str, Array], rows: GainRows, *, latitude: Array, day_of_year: NDArray[np.integer[Any]]
+    weather: Mapping[str, Array], rows: GainRows, *, day_of_year: NDArray[np.integer[Any]], engine: Engine = "numpy"
 ) -> Day:
     """Predictors from daily weather.
 
@@ -65,10 +90,10 @@ def day_from_days(
         ``temp_air_min`` and ``temp_air_max`` [degC], and ``temp_dew`` [degC] or ``relative_humidity`` [%].
     rows : GainRows
         Daily gain of the design at the cells' latitudes.
-    latitude : ndarray, shape (cell,)
-        [deg north]
     day_of_year : ndarray of int, shape (day,)
         1 to 366.
+    engine : {'auto', 'compiled', 'numpy'}
+        Compiled what is worked out is of single precision; 'auto' is compiled where numba is installed.
 
     Returns
     -------
@@ -78,23 +103,36 @@ def day_from_days(
     span = None
     if "temp_air_min" in weather and "temp_air_max" in weather:
         span = weather["temp_air_max"] - weather["temp_air_min"]
+    sun = rows.sunshine(weather["irradiation"], day_of_year, engine=engine)
     return Day(
-        transmitted=rows.transmitted(weather["irradiation"], day_of_year),
+        transmitted=sun.transmitted,
         temp_air=temp_air,
         wind_speed=weather["wind_speed"],
-        day_length=day_length(latitude, day_of_year),
-        clearness=rows.clearness(weather["irradiation"], day_of_year),
+        day_length=sun.day_length,
+        clearness=sun.clearness,
         temp_range=span,
-        dew_depression=_dew_depression(weather),
+        dew_depression=_dew_depression(weather, engine),
     )
 
 
-def _dew_depression(weather: Mapping[str, Array]) -> Array | None:
+def _dew_depression(weather: Mapping[str, Array], engine: Engine) -> Array | None:
+    temp_air = weather["temp_air"]
     if "temp_dew" in weather:
-        return np.asarray(weather["temp_air"] - weather["temp_dew"])
-    if "relative_humidity" in weather:
-        return np.asarray(weather["temp_air"] - dew_point(weather["temp_air"], weather["relative_humidity"]))
-    return None
+        return np.asarray(temp_air - weather["temp_dew"])
+    if "relative_humidity" not in weather:
+        return None
+    if not is_compiled(engine, "the dew point"):
+        return np.asarray(temp_air - dew_point(temp_air, weather["relative_humidity"]))
+    from stillfield.physics.vapour_compiled import dryness
+
+    out = np.empty(temp_air.size, np.float32)
+    dryness(_read_only(temp_air), _read_only(weather["relative_humidity"]), out)
+    return out.reshape(temp_air.shape)
+
+
+def _read_only(values: Array) -> Array:
+    """One row in single precision, read-only because a compiled function is another for each type."""
+    return np.broadcast_to(np.ascontiguousarray(values, dtype=np.float32).reshape(-1), (values.size,))
 
 
 def day_from_steps(
@@ -125,6 +163,27 @@ def day_from_steps(
     Day
         With every predictor of the variant 'hourly'.
     """
+    plain = plain_day(
+        weather, forcing, transmitted, latitude=latitude, day_of_year=day_of_year, steps_per_day=steps_per_day
+    )
+    return replace(plain, peakiness=peakiness(forcing.absorbed, still, steps_per_day))
+
+
+def plain_day(
+    weather: Mapping[str, Array], forcing: Forcing, transmitted: Array, *,
+    latitude: Array, day_of_year: NDArray[np.integer[Any]], steps_per_day: int,
+) -> Day:
+    """Predictors that follow from the steps of their own day: all of the variant 'hourly' but the peakiness.
+
+    Parameters
+    ----------
+    weather, forcing, transmitted, latitude, day_of_year, steps_per_day
+        As in `day_from_steps`.
+
+    Returns
+    -------
+    Day
+    """
     def fold(values: Array) -> Array:
         return values.reshape(len(day_of_year), steps_per_day, -1)
 
@@ -139,7 +198,6 @@ def day_from_steps(
         wind_speed=mean_wind,
         day_length=day_length(latitude, day_of_year),
         temp_range=fold(temp).max(axis=1) - fold(temp).min(axis=1),
-        peakiness=peakiness(forcing.absorbed, still, steps_per_day),
         warm_hours=warm - mean_temp,
         sky_depression=warm - (weight * fold(forcing.temp_sky)).sum(axis=1),
         windy_hours=(np.sqrt((weight * fold(wind)).sum(axis=1)) - np.sqrt(mean_wind)) / np.sqrt(2.0),
@@ -166,10 +224,83 @@ def peakiness(absorbed: Array, still: Still, steps_per_day: int) -> Array:
     ndarray, shape (day, cell)
         1 for even light round the clock, about 2.5 for a clear day of 12 h, at most 10. [1]
     """
+    fade = smoothing_fade(still, steps_per_day)
+    smooth = smoothed(absorbed, fade, np.zeros(absorbed.shape[1]))
+    shifted = np.roll(smooth, -first_step(steps_per_day), axis=0)
+    return peak_of_days(shifted.reshape(-1, steps_per_day, absorbed.shape[1]))
+
+
+def first_step(steps_per_day: int) -> int:
+    """Step with which the yield day starts.
+
+    Parameters
+    ----------
+    steps_per_day : int
+        Steps in a day.
+
+    Returns
+    -------
+    int
+
+    Examples
+    --------
+    >>> first_step(24), first_step(4)
+    (6, 1)
+    """
+    return round(DAY_START_HOUR * steps_per_day / 24.0)
+
+
+def smoothing_fade(still: Still, steps_per_day: int) -> float:
+    """Share of the smoothed sunshine that is left a step later.
+
+    Parameters
+    ----------
+    still : Still
+        The design.
+    steps_per_day : int
+        Steps in a day.
+
+    Returns
+    -------
+    float
+        [1]
+    """
     hours = min(_capacity(still) / QUICK_TRANSFER_W_M2_K / 3600.0, LONGEST_SMOOTHING_HOURS)
-    fade = float(np.exp(-24.0 / steps_per_day / hours))
-    smooth = lfilter([1.0 - fade], [1.0, -fade], np.nan_to_num(absorbed), axis=0)
-    shifted = np.roll(smooth, -round(DAY_START_HOUR * steps_per_day / 24.0), axis=0)
-    days = shifted.reshape(-1, steps_per_day, absorbed.shape[1])
-    square = np.square(days).mean(axis=1)
-    return np.asarray(np.minimum(square / np.maximum(days.mean(axis=1), LEAST_WEIGHT_W_M2) ** 2, MOST_PEAKED))
+    return float(np.exp(-24.0 / steps_per_day / hours))
+
+
+def smoothed(absorbed: Array, fade: float, before: Array) -> Array:
+    """Sunshine as the basin feels it: every step takes 1 - `fade` of itself and `fade` of the one before.
+
+    Parameters
+    ----------
+    absorbed : ndarray, shape (step, cell)
+        NaN counts as none. [W m-2]
+    fade : float
+        From `smoothing_fade`. [1]
+    before : ndarray, shape (cell,)
+        Smoothed sunshine of the step before the first. [W m-2]
+
+    Returns
+    -------
+    ndarray, shape (step, cell)
+        [W m-2]
+    """
+    return np.asarray(lfilter([1.0 - fade], [1.0, -fade], np.nan_to_num(absorbed), axis=0, zi=fade * before[None])[0])
+
+
+def peak_of_days(smooth: Array) -> Array:
+    """Mean square over squared mean of the steps of days.
+
+    Parameters
+    ----------
+    smooth : ndarray, shape (day, step, cell)
+        Smoothed sunshine. [W m-2]
+
+    Returns
+    -------
+    ndarray, shape (day, cell)
+        [1]
+    """
+    square = np.square(smooth).mean(axis=1)
+    return np.asarray(np.minimum(square / np.maximum(smooth.mean(axis=1), LEAST_WEIGHT_W_M2) ** 2, MOST_PEAKED))

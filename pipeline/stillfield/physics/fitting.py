@@ -25,7 +25,7 @@ from stillfield.physics.correlation import (
 )
 from stillfield.physics.day_shape import basin_memory, day_from_days, day_from_steps
 from stillfield.physics.forcing import step_forcing
-from stillfield.physics.gain import GainTable
+from stillfield.physics.gain_table import GainTable
 from stillfield.physics.heat_balance import simulate
 from stillfield.physics.still import Still
 from stillfield.physics.sun import extraterrestrial_irradiation
@@ -122,7 +122,7 @@ def _sample(still: Still, climates: ClimateSet) -> _Sample:
         litres=result.daily_yield,
         frost=result.frost,
         usable=usable,
-        by_days=day_from_days(daily, rows, **place),
+        by_days=day_from_days(daily, rows, day_of_year=climates.day_of_year),
         by_steps=day_from_steps(weather, forcing, transmitted, still, steps_per_day=STEPS, **place),
     )
 

@@ -4,8 +4,8 @@ With hourly weather S is summed up step by step (`gain_over_steps`). With daily 
 and the gain g of a design depends on latitude, day of year and clearness k_T. It need not be integrated for
 every cell and day: with the shapes of Collares-Pereira & Rabl and of Liu & Jordan the beam and the diffuse
 light of every hour are polynomials in the daily diffuse fraction, so all geometry and optics of a day
-collapse into four numbers (`DayMoments`) and g follows in closed form. A table of g over k_T, made from them
-for the latitudes of a run, then costs a cell-day one look-up.
+collapse into four numbers (`DayMoments`) and g follows in closed form. A table of g over k_T made from them, in
+`stillfield.physics.gain_table`, then costs a cell-day one look-up.
 """
 
 from __future__ import annotations
@@ -18,7 +18,6 @@ from numpy.typing import ArrayLike, NDArray
 
 from stillfield.physics.basin import GROUND_ALBEDO, BasinGain, basin_gain, beam_gain, diffuse_gain
 from stillfield.physics.irradiance import (
-    clearness_index,
     complete_irradiance,
     daily_diffuse_fraction,
     diffuse_shape_weight,
@@ -28,21 +27,11 @@ from stillfield.physics.still import Still
 from stillfield.physics.sun import (
     SunSteps,
     declination,
-    extraterrestrial_irradiation,
     sun_over_steps,
     sunset_hour_angle,
 )
 
 Array = NDArray[np.floating[Any]]
-
-#: Days of a table; day 366 is the last row.
-DAYS = 366
-#: Step of clearness between the columns of a table, and its last column; beyond it the end is carried on.
-CLEARNESS_STEP = 0.02
-LAST_CLEARNESS = 0.82
-
-#: Latitudes that differ by less share a row of the table: g moves by less than 0.1 %. [deg]
-LATITUDE_STEP_DEG = 0.05
 
 # Values of a working array that still fit the cache of a core.
 _CACHE_VALUES = 32_768
@@ -190,156 +179,6 @@ def daily_gain(
         - flat * flat * (first - even.sky)
     )
     return np.asarray(straight + fraction * even.sky + clearness * circumsolar + even.ground)
-
-
-@dataclass(frozen=True)
-class GainRows:
-    """Daily gains of one design for the latitudes of some cells.
-
-    Attributes
-    ----------
-    table : ndarray of float32, shape (DAYS, row, column)
-        g at clearness 0, CLEARNESS_STEP, ... LAST_CLEARNESS. [1]
-    row : ndarray of int, shape (cell,)
-        Row of each cell.
-    outside : ndarray, shape (DAYS, row)
-        Extraterrestrial irradiation. [MJ m-2]
-    """
-
-    table: Array
-    row: NDArray[np.intp]
-    outside: Array
-
-    def gain(self, day_of_year: NDArray[np.integer[Any]], clearness: Array) -> Array:
-        """Look up g = S / H.
-
-        Parameters
-        ----------
-        day_of_year : ndarray of int, shape (day,)
-            1 to 366.
-        clearness : ndarray, shape (day, cell)
-            k_T. [1]
-
-        Returns
-        -------
-        ndarray, shape (day, cell)
-            NaN where the clearness is. [1]
-        """
-        days, cells = clearness.shape
-        result = np.empty((days, cells))
-        step = max(1, _CACHE_VALUES // max(cells, 1))
-        for start in range(0, days, step):
-            some = slice(start, start + step)
-            result[some] = self._look_up(np.asarray(day_of_year[some]) - 1, clearness[some])
-        return result
-
-    def clearness(self, irradiation: Array, day_of_year: NDArray[np.integer[Any]]) -> Array:
-        """Clearness k_T of days.
-
-        Parameters
-        ----------
-        irradiation : ndarray, shape (day, cell)
-            Global horizontal irradiation H. [MJ m-2]
-        day_of_year : ndarray of int, shape (day,)
-            1 to 366.
-
-        Returns
-        -------
-        ndarray, shape (day, cell)
-            0 to 1; NaN where the irradiation is. [1]
-        """
-        return clearness_index(irradiation, self.outside[np.asarray(day_of_year) - 1][:, self.row])
-
-    def transmitted(self, irradiation: Array, day_of_year: NDArray[np.integer[Any]]) -> Array:
-        """Daily S from daily irradiation.
-
-        Parameters
-        ----------
-        irradiation : ndarray, shape (day, cell)
-            Global horizontal irradiation H. [MJ m-2]
-        day_of_year : ndarray of int, shape (day,)
-            1 to 366.
-
-        Returns
-        -------
-        ndarray, shape (day, cell)
-            [MJ m-2 of basin]
-        """
-        days, cells = irradiation.shape
-        result = np.empty((days, cells))
-        step = max(1, _CACHE_VALUES // max(cells, 1))
-        for start in range(0, days, step):
-            some = slice(start, start + step)
-            day = np.asarray(day_of_year[some]) - 1
-            outside = np.maximum(self.outside[day], 1e-6)[:, self.row]
-            np.multiply(self._look_up(day, irradiation[some] / outside), irradiation[some], out=result[some])
-        return result
-
-    def _look_up(self, day: NDArray[np.integer[Any]], clearness: Array) -> Array:
-        """Interpolate in clearness; `day` counts from 0."""
-        rows, columns = self.table.shape[1:]
-        position = np.clip(clearness, 0.0, 1.0) * (1.0 / CLEARNESS_STEP)
-        known = np.nan_to_num(position)
-        cell = np.minimum(known, columns - 2).astype(np.int64)
-        position -= cell
-        cell += (day[:, None] * rows + self.row) * columns
-        flat = self.table.reshape(-1)
-        low = flat.take(cell)
-        cell += 1
-        position *= flat.take(cell) - low
-        position += low
-        return np.asarray(position)
-
-
-@dataclass(frozen=True)
-class GainTable:
-    """Daily gains of one design, made for the latitudes at hand.
-
-    Attributes
-    ----------
-    still : Still
-        The design; its condition does not matter.
-    albedo : float
-        Reflectance of the ground. [1]
-    """
-
-    still: Still
-    albedo: float = GROUND_ALBEDO
-
-    def for_latitudes(self, latitude: ArrayLike) -> GainRows:
-        """Make the rows of some cells: about 1 ms and 60 kB for each distinct latitude.
-
-        Parameters
-        ----------
-        latitude : array_like, shape (cell,)
-            [deg north]
-
-        Returns
-        -------
-        GainRows
-            Within 0.1 % of `daily_gain`.
-
-        Examples
-        --------
-        >>> from stillfield.physics.still import Panel
-        >>> rows = GainTable(Still("flat", (Panel(1.0, 0.0),))).for_latitudes([0.0, 30.0])
-        >>> rows.transmitted(np.array([[20.0, 20.0]]), np.array([80])).round(1)
-        array([[17.1, 17.1]])
-        """
-        steps = np.round(np.atleast_1d(np.asarray(latitude, dtype=float)) / LATITUDE_STEP_DEG)
-        distinct, row = np.unique(steps, return_inverse=True)
-        place = distinct * LATITUDE_STEP_DEG
-        day = np.arange(1, DAYS + 1)
-        moments = day_moments(self.still, place, day)
-        columns = np.linspace(0.0, LAST_CLEARNESS, round(LAST_CLEARNESS / CLEARNESS_STEP) + 1)
-        table = np.empty((DAYS, len(place), len(columns)), dtype=np.float32)
-        stride = max(1, _CACHE_VALUES // len(place))
-        for start in range(0, DAYS, stride):
-            some = slice(start, start + stride)
-            piece = DayMoments(moments.beam[:, some], moments.shape[some], moments.sunset[some])
-            for index, clearness in enumerate(columns):
-                table[some, :, index] = daily_gain(self.still, piece, clearness, albedo=self.albedo)
-        return GainRows(table, row.astype(np.intp), extraterrestrial_irradiation(place, day))
 
 
 def gain_over_steps(
