@@ -5,7 +5,7 @@ from __future__ import annotations
 import pytest
 
 from stillfield.errors import UnitsError
-from stillfield.sources.units import conversion, irradiation_kind
+from stillfield.sources.units import EVERYDAY, EVERYDAY_KINDS, conversion, irradiation_kind
 
 #: spelling, wanted unit, one value before and after. Factors: SI Brochure, 9th ed., tables 6 and 8, and the
 #: definitions of degree Celsius and Fahrenheit; 1 knot = 1852 m per hour.
@@ -77,3 +77,20 @@ def test_a_unit_that_is_not_of_sunshine_is_refused():
         irradiation_kind(None)
     with pytest.raises(UnitsError, match=r"x in a\.nc: 'K' is no unit of sunshine \(wanted 'W m-2' for a rate"):
         irradiation_kind("K", where="x in a.nc")
+
+
+@pytest.mark.parametrize(("pair", "factor"), list(EVERYDAY.items()))
+def test_everyday_conversions_are_those_of_the_registry(pair: tuple[str, str], factor: float) -> None:
+    from cf_xarray.units import units as registry
+
+    unit, wanted = pair
+    quantity = registry.Quantity(1.0, unit).to("percent" if wanted == "%" else wanted)
+    assert factor == pytest.approx(float(quantity.magnitude), rel=1e-14)
+
+
+@pytest.mark.parametrize(("unit", "kind"), list(EVERYDAY_KINDS.items()))
+def test_everyday_kinds_have_the_dimension_of_their_kind(unit: str, kind: str) -> None:
+    from cf_xarray.units import units as registry
+
+    like = {"power": "W m-2", "energy": "J m-2", "energy-per-day": "J m-2 day-1"}[kind]
+    assert registry.Unit(unit).dimensionality == registry.Unit(like).dimensionality

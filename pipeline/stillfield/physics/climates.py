@@ -15,7 +15,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import norm, qmc
+from scipy.special import ndtr
 
 from stillfield.physics.sun import extraterrestrial_irradiation, sun_over_steps
 
@@ -93,6 +93,8 @@ def invented_climates(count: int = 96, seed: int = 20) -> ClimateSet:
     ((8760, 8), True)
     """
     random = np.random.default_rng(seed)
+    from scipy.stats import qmc
+
     draws = qmc.LatinHypercube(d=len(RANGES), rng=random).random(count)
     traits = {
         name: low + draws[:, column] * (high - low) for column, (name, (low, high)) in enumerate(RANGES.items())
@@ -121,7 +123,7 @@ def _persistent(random: np.random.Generator, persistence: Array | float, shape: 
 def _daily_clearness(traits: dict[str, Array], summer: Array, random: np.random.Generator) -> Array:
     """Clearness index of every day: skewed towards clear days in clear climates, dull in dull ones."""
     mean = np.clip(traits["clearness"] + traits["clearness_swing"] * summer, 0.15, 0.74)
-    rank = norm.cdf(_persistent(random, traits["persistence"], summer.shape))
+    rank = ndtr(_persistent(random, traits["persistence"], summer.shape))
     place = (mean - LOWEST_CLEARNESS) / (HIGHEST_CLEARNESS - LOWEST_CLEARNESS)
     # rank**gamma has the mean 1/(1 + gamma).
     return np.asarray(LOWEST_CLEARNESS + (HIGHEST_CLEARNESS - LOWEST_CLEARNESS) * rank ** ((1.0 - place) / place))

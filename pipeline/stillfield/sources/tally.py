@@ -9,7 +9,6 @@ from __future__ import annotations
 from collections.abc import Callable, Hashable, Mapping
 from typing import Any
 
-import dask.array as da
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
@@ -56,7 +55,9 @@ def cell_counts(
     dict of str to DataArray
         Counts by kind, on the space dims; lazy where `values` are.
     """
-    if isinstance(values.data, da.Array):
+    if values.chunks is not None:
+        import dask.array as da
+
         data = values.data
         counted = da.map_blocks(
             lambda block: kernel(block)[:, np.newaxis], data, new_axis=0, dtype=np.int64,

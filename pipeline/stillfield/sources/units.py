@@ -77,6 +77,21 @@ _TEMPERATURES: dict[tuple[str, str], tuple[float, float]] = {
 }
 
 
+#: Conversions of everyday weather files, the numbers of the registry: it takes a third of a second to load.
+EVERYDAY: dict[tuple[str, str], float] = {
+    **{(unit, unit): 1.0 for unit in ("W m-2", "MJ m-2", "MJ m-2 day-1", "m s-1", "Pa", "1")},
+    ("percent", "%"): 1.0, ("1", "%"): 100.0, ("g kg-1", "1"): 1e-3, ("hPa", "Pa"): 100.0, ("kPa", "Pa"): 1000.0,
+    ("kW m-2", "W m-2"): 1000.0, ("J m-2", "MJ m-2"): 1e-6, ("kJ m-2", "MJ m-2"): 1e-3, ("Wh m-2", "MJ m-2"): 3.6e-3,
+    ("kWh m-2", "MJ m-2"): 3.6,
+}
+#: Kinds of the everyday units of sunshine.
+EVERYDAY_KINDS: dict[str, IrradiationKind] = {
+    **dict.fromkeys(("W m-2", "kW m-2"), "power"),
+    **dict.fromkeys(("J m-2", "kJ m-2", "MJ m-2", "Wh m-2", "kWh m-2"), "energy"),
+    **dict.fromkeys(("kJ m-2 day-1", "MJ m-2 day-1", "Wh m-2 day-1", "kWh m-2 day-1"), "energy-per-day"),
+}
+
+
 @lru_cache(maxsize=1)
 def _registry() -> UnitRegistry[Any]:
     from cf_xarray.units import units as registry
@@ -172,6 +187,8 @@ def conversion(units: str | None, wanted: str, *, where: str | None = None) -> t
         )
     if (spelling, wanted) in _TEMPERATURES:
         return _TEMPERATURES[spelling, wanted]
+    if (spelling, wanted) in EVERYDAY:
+        return EVERYDAY[spelling, wanted], 0.0
     registry = _registry()
     try:
         factor = float(registry.Quantity(1.0, spelling).to("percent" if wanted == "%" else wanted).magnitude)
@@ -211,6 +228,8 @@ def irradiation_kind(units: str | None, *, where: str | None = None) -> Irradiat
     ['power', 'energy', 'energy-per-day']
     """
     spelling = canonical(units)
+    if spelling in EVERYDAY_KINDS:
+        return EVERYDAY_KINDS[spelling]
     if spelling not in {None, "1"}:
         registry = _registry()
         dimension = registry.Unit(spelling).dimensionality
