@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from stillfield.errors import MethodError
-from stillfield.physics import balance_march
+from stillfield.physics import compiling
 from stillfield.physics.heat_balance import BalanceResult, Forcing, simulate
 from stillfield.physics.still import Panel, Still
 
@@ -220,7 +220,7 @@ def test_brine_beyond_the_range_is_refused():
 
 
 def test_without_numba_auto_takes_numpy_and_compiled_says_how_to_get_it(monkeypatch):
-    monkeypatch.setattr(balance_march, "find_spec", lambda name: None)
+    monkeypatch.setattr(compiling, "find_spec", lambda name: None)
     forcing = made_days(1)
     np.testing.assert_array_equal(
         simulate(forcing, STILL).daily_yield, simulate(forcing, STILL, engine="numpy").daily_yield

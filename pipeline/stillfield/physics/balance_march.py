@@ -3,9 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from importlib.util import find_spec
 from math import ceil
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,12 +22,12 @@ from stillfield.physics.balance_numbers import (
 )
 from stillfield.physics.balance_records import CHANNELS, BalanceResult, Forcing, record_from
 from stillfield.physics.balance_schedule import blank_gaps, steps_before, walk_through
+from stillfield.physics.compiling import Engine, is_compiled
 from stillfield.physics.moist_air import STANDARD_PRESSURE_PA
 from stillfield.physics.still import Still
 from stillfield.physics.vapour import Field
 
 Array = NDArray[np.floating[Any]]
-Engine = Literal["auto", "compiled", "numpy"]
 Fields = tuple[Array, ...]
 
 
@@ -235,15 +234,8 @@ def shape_of(forcing: Forcing) -> tuple[int, ...]:
 
 def _march(engine: Engine) -> Callable[..., None]:
     """Return the march of an engine; numba is imported here and nowhere else."""
-    there = find_spec("numba") is not None
-    if engine == "numpy" or (engine == "auto" and not there):
+    if not is_compiled(engine, "the heat balance"):
         return balance_numpy.march
-    if not there:
-        raise MethodError(
-            "the compiled heat balance needs numba, which is not installed",
-            got=f"engine {engine!r}",
-            cure="Install stillfield[speed], or use the engine 'numpy' or 'auto'.",
-        )
     from stillfield.physics import balance_compiled
 
     march: Callable[..., None] = balance_compiled.march

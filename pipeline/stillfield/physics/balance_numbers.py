@@ -27,7 +27,8 @@ STEFAN_BOLTZMANN = 5.670374419e-8  # W m-2 K-4
 #: Heat transfer upwards from the water by which time constants are judged, the lowest of a mild night.
 #: [W m-2 K-1] Common practice, no source.
 SLOW_TRANSFER_W_M2_K = 8.0
-#: Sub-steps in a day: two an hour, each with two Newton steps, keep a day's yield within 0.1 %.
+#: Sub-steps in a day: two an hour, each with two Newton steps. Against eight times as many, over invented climates
+#: and days of more than a litre, a 2 cm basin is within 0.1 % on 97 days of 100, at worst 0.8 %, and 0.1 % in a year.
 SUBSTEPS_PER_DAY = 48
 #: First guess of the cube root of X as a cubic of X^(1/4), relative least squares for X from 0.01 to 310 K.
 CUBE_ROOT_GUESS = (-0.06970108, 0.79608679, 0.29604419, -0.02378867)

@@ -12,13 +12,14 @@ radiation between parallel planes. The time scheme is that of `balance_kernel`.
 
 from __future__ import annotations
 
-from stillfield.physics.balance_march import BalanceMarch, Engine, shape_of
+from stillfield.physics.balance_march import BalanceMarch, shape_of
 from stillfield.physics.balance_records import BalanceResult, Forcing, Record
+from stillfield.physics.compiling import Engine
 from stillfield.physics.moist_air import STANDARD_PRESSURE_PA
 from stillfield.physics.still import Still
 from stillfield.physics.vapour import Field
 
-__all__ = ["BalanceMarch", "BalanceResult", "Engine", "Forcing", "Record", "simulate"]
+__all__ = ["BalanceMarch", "BalanceResult", "Forcing", "Record", "simulate"]
 
 
 def simulate(  # noqa: PLR0913
