@@ -227,8 +227,10 @@ def test_the_lock_file_holds_everything_the_project_asks_for():
     assert names - set(locked()) == set()
 
 
-#: Arithmetic of one sub-step, which two executions share; the head of the module tells its quantities.
-KERNELS = ("stillfield.physics.balance_kernel",)
+#: Arithmetic of one sub-step or of a row of cells; the heads of the modules tell their quantities.
+KERNELS = tuple(
+    f"stillfield.physics.{name}" for name in ("balance_kernel", "step_days_compiled", "step_optics_compiled")
+)
 
 
 def public_functions() -> list[tuple[str, object]]:

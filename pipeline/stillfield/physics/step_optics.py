@@ -12,15 +12,13 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import lru_cache
-from importlib.util import find_spec
-from typing import Any, Literal, NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.polynomial import Polynomial
 from numpy.polynomial.chebyshev import Chebyshev
 from numpy.typing import ArrayLike, NDArray
 
-from stillfield.errors import MethodError
 from stillfield.physics.basin import absorbed, diffuse_gain, panel_direction
 from stillfield.physics.cover import transmittance_and_absorptance
 from stillfield.physics.sky import CLOUDLESS_CLEARNESS
@@ -34,7 +32,6 @@ from stillfield.physics.sun import (
 
 Array = NDArray[np.floating[Any]]
 Rows = NDArray[np.float32]
-Engine = Literal["auto", "compiled", "numpy"]
 
 MJ_PER_WH = 3600.0 / 1e6
 #: Degree of the polynomials of the cover; what a panel passes of the beam is then within 5e-5 of the beam.
@@ -56,13 +53,7 @@ class OpticsNumbers(NamedTuple):
     sky_absorbed: Any
     absorbing: Any  # absorbed in the basin over transmitted [1]
     cloudless: Any  # clearness of a cloudless day [1]
-    day_megajoules: Any  # MJ of a day per W, over pi
     step_megajoules: Any  # MJ of a step per W
-    transmittance: Any  # of the cover, powers of 2 sqrt(cos) - 1, lowest first
-    absorptance: Any
-    cosine: Any  # cos(x) in powers of x², 0 to pi
-    sine: Any  # sin(x) / x in powers of x²
-    arc: Any  # arccos(x) / sqrt(1 - x) in powers of x, 0 to 1
 
 
 @dataclass(frozen=True)
@@ -76,47 +67,15 @@ class StepOptics:
     tables : tuple of ndarray
         Of the cells, shape (6, cell): sine, cosine and tangent of the latitude, clock to solar time [rad], its
         cosine and sine. Of the panels on the cells, shape (panel, 2, cell): components of `basin.panel_direction`.
-        Of the panels, shape (panel, 2): share and cosine of the tilt.
+        Of the panels, shape (panel, 2): share and cosine of the tilt. `cover_curves`, shape (2, power).
     clock : ndarray, shape (step of the day, 3)
         Hour angle of the middle of the step [rad]; daily course of the clear sky's emissivity as the factors of
         the cosine and of the sine of clock to solar time.
     """
 
     numbers: OpticsNumbers
-    tables: tuple[Rows, Rows, Rows]
+    tables: tuple[Rows, Rows, Rows, Rows]
     clock: Rows
-
-
-def uses_numba(engine: Engine) -> bool:
-    """Tell whether an engine compiles.
-
-    Parameters
-    ----------
-    engine : {'auto', 'compiled', 'numpy'}
-        'auto' compiles where numba is installed.
-
-    Returns
-    -------
-    bool
-
-    Raises
-    ------
-    MethodError
-        Where it should compile and cannot.
-
-    Examples
-    --------
-    >>> uses_numba("numpy")
-    False
-    """
-    there = find_spec("numba") is not None
-    if engine == "compiled" and not there:
-        raise MethodError(
-            "the compiled optics need numba, which is not installed",
-            got=f"engine {engine!r}",
-            cure="Install stillfield[speed], or use the engine 'numpy' or 'auto'.",
-        )
-    return there and engine != "numpy"
 
 
 def step_optics(
@@ -149,7 +108,7 @@ def step_optics(
     >>> from stillfield.physics.still import Panel
     >>> optics = step_optics(Still("flat", (Panel(1.0, 0.0),)), [0.0, 30.0], steps_per_day=24)
     >>> [table.shape for table in optics.tables], optics.clock.shape
-    ([(6, 2), (1, 2, 2), (1, 2)], (24, 3))
+    ([(6, 2), (1, 2, 2), (1, 2), (2, 11)], (24, 3))
     """
     if steps_per_day * LONGEST_STEP_HOURS < 24:
         raise ValueError(f"steps_per_day is {steps_per_day}; a step may last {LONGEST_STEP_HOURS} h at most")
@@ -162,7 +121,7 @@ def step_optics(
     panels = [(panel.share, np.cos(np.radians(panel.tilt_deg))) for panel in still.panels]
     hour = (np.arange(steps_per_day) + 0.5) * (2.0 * np.pi / steps_per_day)
     clock = [hour - np.pi, _DAILY_EMISSIVITY * np.cos(hour), _DAILY_EMISSIVITY * np.sin(hour)]
-    tables = (_rows(cells), _rows(directions), _rows(panels))
+    tables = (_rows(cells), _rows(directions), _rows(panels), _rows(cover_curves(still.cover)))
     return StepOptics(_numbers(still, steps_per_day), tables, _rows(np.transpose(clock)))
 
 
@@ -173,8 +132,6 @@ def _rows(values: ArrayLike) -> Rows:
 def _numbers(still: Still, steps_per_day: int) -> OpticsNumbers:
     """Constants of a run."""
     diffuse = diffuse_gain(still)
-    transmittance, absorptance = cover_curves(still.cover)
-    cosine, sine, arc = _angle_curves()
     numbers = OpticsNumbers(
         half_width=np.pi / steps_per_day,
         wall_gain=still.wall_gain,
@@ -184,18 +141,9 @@ def _numbers(still: Still, steps_per_day: int) -> OpticsNumbers:
         sky_absorbed=diffuse.sky_absorbed,
         absorbing=float(absorbed(np.array(1.0), still)),
         cloudless=CLOUDLESS_CLEARNESS,
-        day_megajoules=86400.0 * 1e-6 / np.pi,
         step_megajoules=24.0 / steps_per_day * MJ_PER_WH,
-        transmittance=transmittance,
-        absorptance=absorptance,
-        cosine=cosine,
-        sine=sine,
-        arc=arc,
     )
-    single = np.float32
-    return OpticsNumbers(
-        *(tuple(map(single, part)) if isinstance(part, tuple) else single(part) for part in numbers)
-    )
+    return OpticsNumbers(*map(np.float32, numbers))
 
 
 @lru_cache(maxsize=64)
@@ -235,12 +183,17 @@ def _powers(fit: Chebyshev, degree: int) -> tuple[float, ...]:
     return tuple(map(float, np.pad(powers, (0, degree + 1 - len(powers)))))
 
 
-@lru_cache(maxsize=1)
-def _angle_curves() -> tuple[tuple[float, ...], ...]:
-    """Polynomials of cosine, sine and arc cosine, to about 1e-7."""
+def angle_curves() -> tuple[tuple[float, ...], tuple[float, ...], tuple[float, ...]]:
+    """Polynomials of the cosine, the sine and the arc cosine, to about 1e-7.
+
+    Returns
+    -------
+    cosine, sine, arc : tuple of float
+        Coefficients, lowest power first, 8, 7 and 8 of them: cos(x) in x² and sin(x) / x in x² from 0 to pi,
+        arccos(x) / sqrt(1 - x) in x from 0 to 1.
+    """
     def fit(function: Callable[[Array], Array], highest: float, degree: int) -> tuple[float, ...]:
-        whole = Chebyshev.interpolate(function, degree, domain=[0.0, highest])
-        return _powers(whole, degree)
+        return _powers(Chebyshev.interpolate(function, degree, domain=[0.0, highest]), degree)
 
     return (
         fit(lambda square: np.cos(np.sqrt(square)), np.pi**2, 7),
@@ -306,7 +259,17 @@ def step_fields(weather: Mapping[str, Array]) -> tuple[tuple[Rows, ...], tuple[i
 
 
 def read_only(values: Array) -> Rows:
-    """A view in single precision, contiguous, that cannot be written to."""
+    """A view in single precision, contiguous, that cannot be written to: one kind, so one compiled form.
+
+    Parameters
+    ----------
+    values : ndarray
+        Copied only where it is of another precision or order.
+
+    Returns
+    -------
+    ndarray of float32, shape of `values`
+    """
     view = _rows(values).view()
     view.flags.writeable = False
     return view

@@ -15,28 +15,39 @@ from numba import njit
 
 from stillfield.physics.basin import LEAST_COS_ZENITH
 from stillfield.physics.irradiance import LEAST_COS_BEAM, LEAST_COS_CLEARNESS
+from stillfield.physics.step_optics import angle_curves
 from stillfield.physics.vapour import KELVIN
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
+#: Divisions are not checked, since a check would keep cells from going side by side. A multiplication and the
+#: addition after it may be one instruction.
+OPTIONS: dict[str, Any] = {"error_model": "numpy", "nogil": True, "fastmath": {"contract"}}
+
 
 def compiled(function: Function) -> Function:
-    """Compile at the first call. Divisions are not checked: a check would keep cells from going side by side.
+    """Compile at the first call.
 
     The cache follows changes of the file of `function` only: after a change here delete the ``*.nbi`` files of
     the other modules that call it.
     """
     made: Any
     try:
-        made = njit(error_model="numpy", nogil=True, cache=True)(function)
+        made = njit(cache=True, **OPTIONS)(function)
     except RuntimeError:  # no folder to keep the cache in: compile anew in every process
-        made = njit(error_model="numpy", nogil=True)(function)
+        made = njit(**OPTIONS)(function)
     return cast("Function", made)
 
 
 def row(function: Function) -> Function:
     """Compile into those that call it."""
-    made: Any = njit(error_model="numpy", nogil=True, forceinline=True)(function)
+    made: Any = njit(forceinline=True, **OPTIONS)(function)
+    return cast("Function", made)
+
+
+def rows(function: Function) -> Function:
+    """Compile as a function of its own."""
+    made: Any = njit(**OPTIONS)(function)
     return cast("Function", made)
 
 
@@ -54,6 +65,8 @@ SIN_LAT, COS_LAT, TAN_LAT, SHIFT, COS_SHIFT, SIN_SHIFT = range(6)
 _ZERO, _HALF, _ONE, _TWO = (np.float32(number) for number in (0.0, 0.5, 1.0, 2.0))
 _PI, _TURN = np.float32(np.pi), np.float32(2.0 * np.pi)
 _SHRINK_1, _SHRINK_2, _SHRINK_3 = (np.float32(-1.0 / number) for number in (6.0, 20.0, 42.0))
+COSINE, SINE, ARC = (tuple(np.float32(number) for number in curve) for curve in angle_curves())
+_DAY_MEGAJOULES = np.float32(86400.0 * 1e-6 / np.pi)
 _TINY = np.float32(1e-12)
 _LEAST_OUTSIDE = np.float32(1e-6)
 _LEAST_CLEARNESS, _LEAST_BEAM = np.float32(LEAST_COS_CLEARNESS), np.float32(LEAST_COS_BEAM)
@@ -79,9 +92,9 @@ _ERBS_0, _ERBS_1, _ERBS_2, _ERBS_3, _ERBS_4 = (
 
 
 @row
-def sunset_row(places: Any, day: Any, k: Any, work: Any) -> None:
+def sunset_row(places: Any, day: Any, work: Any) -> None:
     """Sunset hour angle [rad] and, in place of the index, irradiation above the atmosphere [MJ m-2] of a day."""
-    sin_dec, cos_dec, tan_dec, daily, a = day[0], day[1], day[2], day[4] * k.day_megajoules, k.arc
+    sin_dec, cos_dec, tan_dec, daily, a = day[0], day[1], day[2], day[4] * _DAY_MEGAJOULES, ARC
     for i in range(work.shape[1]):
         x = -places[TAN_LAT, i] * tan_dec
         size = abs(x)
@@ -116,9 +129,9 @@ def sunlit_row(places: Any, base: Any, half_width: Any, work: Any) -> bool:
 
 
 @row
-def sun_row(places: Any, day: Any, k: Any, work: Any) -> None:
+def sun_row(places: Any, day: Any, half_width: Any, work: Any) -> None:
     """Mean vector to the sun over the sunlit part of a step, as `sun.sun_over_steps` has it."""
-    sin_dec, cos_dec, c, s = day[0], day[1], k.cosine, k.sine
+    sin_dec, cos_dec, c, s = day[0], day[1], COSINE, SINE
     for i in range(work.shape[1]):
         turn, width = work[NORTH, i], work[LIT, i]
         square, half = turn * turn, width * width
@@ -136,7 +149,7 @@ def sun_row(places: Any, day: Any, k: Any, work: Any) -> None:
         east = -cos_dec * sine
         work[EAST, i], work[NORTH, i], work[UP, i] = east, north, up
         work[SHORTEN, i] = _ONE / np.sqrt(up * up + north * north + east * east + _TINY)
-        work[LIT, i] = width / k.half_width
+        work[LIT, i] = width / half_width
 
 
 @row
@@ -151,27 +164,19 @@ def panel_row(directions: Any, number: Any, area: Any, flatness: Any, work: Any)
 
 
 @row
-def passed_row(c: Any, work: Any) -> None:
-    """Add what the cover passes of the share of a panel: a polynomial of degree 10."""
+def cover_row(curves: Any, part: Any, to: Any, work: Any) -> None:
+    """Add what the cover passes (part 0) or absorbs (1) of the share of a panel: a polynomial of degree 10."""
+    c = curves[part]
+    c0, c1, c2, c3, c4, c5 = c[0], c[1], c[2], c[3], c[4], c[5]
+    c6, c7, c8, c9, c10 = c[6], c[7], c[8], c[9], c[10]
     for i in range(work.shape[1]):
         y = work[CURVE, i]
-        value = c[5] + y * (c[6] + y * (c[7] + y * (c[8] + y * (c[9] + y * c[10]))))
-        value = c[0] + y * (c[1] + y * (c[2] + y * (c[3] + y * (c[4] + y * value))))
-        work[BEAM_PASSED, i] += work[SHARE, i] * value
+        high = c5 + y * (c6 + y * (c7 + y * (c8 + y * (c9 + y * c10))))
+        work[to, i] += work[SHARE, i] * (c0 + y * (c1 + y * (c2 + y * (c3 + y * (c4 + y * high)))))
 
 
 @row
-def kept_row(c: Any, work: Any) -> None:
-    """Add what the cover absorbs of the share of a panel."""
-    for i in range(work.shape[1]):
-        y = work[CURVE, i]
-        value = c[5] + y * (c[6] + y * (c[7] + y * (c[8] + y * (c[9] + y * c[10]))))
-        value = c[0] + y * (c[1] + y * (c[2] + y * (c[3] + y * (c[4] + y * value))))
-        work[BEAM_KEPT, i] += work[SHARE, i] * value
-
-
-@row
-def beam_row(directions: Any, panels: Any, k: Any, keep: Any, work: Any) -> None:
+def beam_row(directions: Any, panels: Any, curves: Any, wall_gain: Any, keep: Any, work: Any) -> None:
     """Gain from a unit beam, transmitted and absorbed in the cover, as `basin.beam_gain` has it."""
     for i in range(work.shape[1]):
         work[BEAM_PASSED, i] = _ZERO
@@ -179,14 +184,14 @@ def beam_row(directions: Any, panels: Any, k: Any, keep: Any, work: Any) -> None
         work[INTAKE, i] = _ZERO
     for number in range(len(panels)):
         panel_row(directions, number, panels[number, 0], panels[number, 1], work)
-        passed_row(k.transmittance, work)
+        cover_row(curves, 0, BEAM_PASSED, work)
         if keep:
-            kept_row(k.absorptance, work)
+            cover_row(curves, 1, BEAM_KEPT, work)
     for i in range(work.shape[1]):
         up, taken = work[UP, i], work[INTAKE, i]
         taken = taken if taken > up else up
         taken = taken if taken > _TINY else _TINY
-        work[BEAM_PASSED, i] *= k.wall_gain + (_ONE - k.wall_gain) * up / taken
+        work[BEAM_PASSED, i] *= wall_gain + (_ONE - wall_gain) * up / taken
 
 
 @row
@@ -258,20 +263,20 @@ def gather_row(ghi: Any, ground: Any, sky: Any, beam: Any, to: Any, work: Any) -
         work[to, i] = even + work[beam, i] * work[DIRECT, i]
 
 
-@row
+@rows
 def light_row(ghi: Any, dni: Any, dhi: Any, modes: Any, cells: Any, times: Any, k: Any, work: Any) -> None:
     """All the optics of a step: what is transmitted as PASSED and, if asked for, absorbed in the cover as KEPT."""
     mode, keep = modes
-    places, directions, panels = cells
+    places, directions, panels, curves = cells
     day, middle = times
     if sunlit_row(places, middle + day[3], k.half_width, work):
-        sun_row(places, day, k, work)
+        sun_row(places, day, k.half_width, work)
         if mode == 0:
             erbs_row(ghi, day[4], work)
         else:
             given_row(ghi, dni, dhi, mode, work)
         haydavies_row(day[4], work)
-        beam_row(directions, panels, k, keep, work)
+        beam_row(directions, panels, curves, k.wall_gain, keep, work)
     else:
         dark_row(ghi, dhi, mode, work)
     gather_row(ghi, k.ground, k.sky, BEAM_PASSED, PASSED, work)
@@ -345,7 +350,7 @@ def sky_row(temp_air: Any, work: Any) -> None:
         work[SKY, i] = temp_air[i] if sky > temp_air[i] else sky
 
 
-@row
+@rows
 def step_rows(fields: Any, modes: Any, cells: Any, times: Any, k: Any, span: Any, work: Any) -> None:
     """Light and sky of a step: PASSED, KEPT and SKY from SUNSET and INDEX of the day.
 
@@ -363,20 +368,20 @@ def step_rows(fields: Any, modes: Any, cells: Any, times: Any, k: Any, span: Any
     sky_row(temp, work)
 
 
-@row
+@rows
 def begin_strip(tables: Any, start: Any, count: Any) -> Any:
     """Places and panels of a strip of cells, and its rows to work in."""
-    places, directions, panels = tables
+    places, directions, panels, curves = tables
     here = places[:, start : start + count].copy()
     turned = directions[:, :, start : start + count].copy()
-    return (here, turned, panels), np.zeros((WORK_ROWS, count), np.float32)
+    return (here, turned, panels, curves), np.zeros((WORK_ROWS, count), np.float32)
 
 
-@row
+@rows
 def begin_day(ghi: Any, places: Any, day: Any, span: Any, k: Any, work: Any) -> None:
     """Set the sunset and the clear-sky index of a day; `span` is (first step, step after its last, first cell)."""
     first, last, start = span
-    sunset_row(places, day, k, work)
+    sunset_row(places, day, work)
     clear_index_row(ghi, first, last, start, k, work)
 
 
