@@ -67,7 +67,7 @@ class StepDays:
     (1, (1, 1))
     >>> day, given = days.advance(weather, np.array([82, 83]), last=True)
     >>> given, day.peakiness.round(1).ravel().tolist()
-    (3, [2.3, 2.3, 2.3])
+    (3, [2.1, 2.1, 2.1])
     """
 
     def __init__(
