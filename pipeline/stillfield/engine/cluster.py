@@ -6,7 +6,6 @@ anew on whichever worker lacks it. So a run outlives its workers as long as one 
 
 from __future__ import annotations
 
-import pickle
 from collections.abc import Iterator
 from contextlib import contextmanager
 from typing import TYPE_CHECKING, Any
@@ -68,11 +67,12 @@ def work_on_cluster(work: Work, plan: Plan, *, scheduler: str) -> Iterator[Block
         If the cluster cannot be reached or loses its workers for good.
     """
     with _client(scheduler, plan.workers) as client:
+        import cloudpickle  # lazy weather holds functions that plain pickling cannot carry
         from distributed import as_completed
         from distributed.scheduler import KilledWorker
 
         # Every worker makes the shared part from its text, so no worker's death loses it.
-        shared = client.submit(pickle.loads, pickle.dumps(work), pure=False)
+        shared = client.submit(cloudpickle.loads, cloudpickle.dumps(work), pure=False)
         futures = [client.submit(_task, shared, block, retries=RETRIES, pure=False) for block in plan.blocks]
         try:
             for future in as_completed(futures):

@@ -22,7 +22,7 @@ Edges = NDArray[np.int64]
 #: Memory of interpreter and libraries. [bytes]
 BASE_BYTES = 260_000_000
 #: Weather of a window: enough to keep the cost of a call small, small enough to stay near the cache. [bytes]
-WINDOW_BYTES = 32_000_000
+WINDOW_BYTES = 16_000_000
 #: Days before a span that are walked through to know the state of the basin: what is left of any difference after
 #: them is far below the last digit.
 SPIN_UP_DAYS = 60

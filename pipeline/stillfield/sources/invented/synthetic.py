@@ -342,6 +342,7 @@ def _labelled(
             "latitude": ("latitude", latitude, north),
             "longitude": ("longitude", longitude, east),
             "elevation": (("latitude", "longitude"), elevation, height),
+            "inside": (("latitude", "longitude"), np.isfinite(elevation)),
         },
     )
 
