@@ -12,6 +12,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield import __version__
+from stillfield.engine.job import Prepared
 from stillfield.methods import Method
 from stillfield.methods.fit_store import fit_state
 from stillfield.methods.fitted import Fitted
@@ -55,6 +56,8 @@ def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
         - ``stills``: list of ``name``, ``condition``, ``condition_low``, ``condition_high``, ``fits`` (condition
           to 'shipped', 'kept' or 'to be made'), ``folder``;
         - ``places``: ``table``, ``count``, ``outside``, ``outside_names``, ``max_cell_distance_km``;
+        - ``work``: ``blocks``, ``cells`` and ``windows`` of the largest, ``records`` of the longest window, ``spans``
+          in which the years are shared out, ``at_once``, ``scheduler``, ``by`` (how files are read, in words);
         - ``outputs``: every file, as paths from the working directory;
         - ``estimate``: ``bytes_to_read``, ``memory_bytes``, ``disk_bytes``, ``seconds``, ``basis``.
 
@@ -91,8 +94,19 @@ def plan(settings: RunSettings, *, run_file: str | Path) -> dict[str, Any]:
         },
         "stills": stills,
         "places": _places(settings, opened, space),
+        "work": _work(prepared),
         "outputs": _outputs(settings, opened, stills, grid=space["kind"] == "grid"),
         "estimate": asdict(cost),
+    }
+
+
+def _work(prepared: Prepared) -> dict[str, Any]:
+    blocks = prepared.plan.blocks
+    return {
+        "blocks": len({(block.rows.start, block.columns.start) for block in blocks}),
+        "cells": max(block.cells for block in blocks), "windows": max(len(block.windows) for block in blocks),
+        "records": max(block.longest for block in blocks), "spans": len({block.span for block in blocks}),
+        "at_once": prepared.plan.workers, "scheduler": prepared.means.scheduler, "by": prepared.reader.told,
     }
 
 

@@ -235,6 +235,7 @@ def test_keys_are_the_promised_ones(tmp_path, days_of_weather):
         "stills": [{**dict.fromkeys(["name", "condition", "condition_low", "condition_high", "folder"]),
                     "fits": dict.fromkeys(["maintained", "weathered", "new"])}],
         "places": dict.fromkeys(["table", "count", "outside", "outside_names", "max_cell_distance_km"]),
+        "work": dict.fromkeys(["blocks", "cells", "windows", "records", "spans", "at_once", "scheduler", "by"]),
         "outputs": None,
         "estimate": dict.fromkeys(["bytes_to_read", "memory_bytes", "disk_bytes", "seconds", "basis"]),
     }

@@ -31,6 +31,11 @@ class Reader(Protocol):
         """How the weather lies in store."""
         ...
 
+    @property
+    def told(self) -> str | None:
+        """How it is read, in words for a plan."""
+        ...
+
     def kept(self, block: BlockPlan) -> NDArray[np.bool_]:
         """Which cells of a block belong to the region, shape (row, column)."""
         ...
@@ -90,6 +95,12 @@ class LazyReader:
     def where(self) -> str:
         """Names of the files, for messages."""
         return str(self.weather.attrs.get("files", "weather"))
+
+    @property
+    def told(self) -> str | None:
+        """How it is read, in words for a plan."""
+        lazy = any(values.chunks is not None for values in self.weather.data_vars.values())
+        return "computed by dask, window by window" if lazy else None
 
     @property
     def layout(self) -> Layout:

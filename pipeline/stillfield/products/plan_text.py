@@ -36,7 +36,7 @@ def plan_text(facts: Mapping[str, Any]) -> str:
     lines += [*_method(facts["method"]), *_stills(facts["stills"])]
     if facts["places"] is not None:
         lines += _places(facts["places"])
-    lines += [*_outputs(facts["outputs"]), *_estimate(facts["estimate"])]
+    lines += [*_outputs(facts["outputs"]), *_work(facts["work"]), *_estimate(facts["estimate"])]
     return "\n".join(lines) + "\n"
 
 
@@ -136,6 +136,18 @@ def _outputs(outputs: Iterable[str]) -> list[str]:
         folder, _, name = path.rpartition("/")
         folders.setdefault(folder, []).append(name)
     return _entry("Writes", *(f"{folder or '.'}/: {', '.join(names)}" for folder, names in sorted(folders.items())))
+
+
+def _work(work: Mapping[str, Any]) -> list[str]:
+    where = "threads of this process" if work["scheduler"] is None else f"workers of {work['scheduler']}"
+    said = f"{work['blocks']} block{'s' if work['blocks'] != 1 else ''} of up to {work['cells']} cells"
+    if work["spans"] > 1:
+        said += f", the years shared out in {work['spans']} parts"
+    return _entry(
+        "Works", f"{said}; each in {work['windows']} window{'s' if work['windows'] != 1 else ''} of up to "
+        f"{work['records']} times, so that every stored chunk is read once",
+        f"{work['at_once']} at a time, by {where}" + ("" if work["by"] is None else f"; {work['by']}"),
+    )
 
 
 def _estimate(cost: Mapping[str, Any]) -> list[str]:

@@ -302,9 +302,8 @@ def aggregate(values: dict[str, Array], months: Months, weather: xr.Dataset, spa
         unit, meaning = _MEANINGS[name]
         shaped = array.reshape(*array.shape[:-1], *sizes)
         variables[name] = ((*lead, *space), shaped, {"units": unit, "long_name": meaning})
-    coords = {
-        name: coord for name, coord in weather.coords.items() if set(coord.dims) <= set(space) and name != "inside"
-    }
+    weather = weather.drop_vars("inside", errors="ignore")
+    coords = {name: coord for name, coord in weather.coords.items() if set(coord.dims) <= set(space)}
     year, meaning = (np.zeros(1, dtype=int), "Typical year") if months.typical else (months.years, "Calendar year")
     coords["month"] = ("month", np.arange(1, MONTHS + 1), {"long_name": "Month of the year", "units": "1"})
     coords["year"] = ("year", year, {"long_name": meaning, "units": "1"})

@@ -18,9 +18,8 @@ STARTING_SECONDS = 4.0
 SECONDS_PER_STILL = 2.0
 SECONDS_PER_FIT = 4.0
 
-#: Memory of libraries and drawing [bytes], and how many times the weather in use is held at most.
-BASE_BYTES = 3.5e8
-COPIES_HELD = 2.5
+#: Memory of drawing maps and writing. [bytes]
+DRAWING_BYTES = 1.5e8
 
 #: Maps and other files whose size does not depend on the number of cells, of grids and of sites. [bytes]
 FIXED_GRID_BYTES, FIXED_SITES_BYTES = 1.6e6, 1.5e5
@@ -75,8 +74,8 @@ class Job:
         Whether it works on steps within the day.
     bytes_to_read : int
         Size of the weather files.
-    weather_bytes : int
-        Size in memory of the weather the method takes.
+    memory_bytes : int
+        Memory that the engine's plan takes.
     cells : int
         Cells or sites that have weather; all cells where that is not known.
     days, years : int
@@ -92,7 +91,7 @@ class Job:
     method: str
     hourly: bool
     bytes_to_read: int
-    weather_bytes: int
+    memory_bytes: int
     cells: int
     days: int
     years: int
@@ -115,7 +114,7 @@ def forecast(job: Job) -> Forecast:
 
     Examples
     --------
-    >>> demo = Job("fitted", False, 0, 250_000_000, cells=2045, days=2922, years=8, stills=1, fits_to_make=0, grid=True)
+    >>> demo = Job("fitted", False, 0, 400_000_000, cells=2045, days=2922, years=8, stills=1, fits_to_make=0, grid=True)
     >>> 5 < forecast(demo).seconds < 60
     True
     """
@@ -125,5 +124,4 @@ def forecast(job: Job) -> Forecast:
     disk = job.stills * (fixed + job.cells * (numbers * BYTES_PER_NUMBER + BYTES_PER_ROW))
     one_still = job.bytes_to_read / READ_BYTES_PER_SECOND + job.cells * job.days / speed + SECONDS_PER_STILL
     seconds = STARTING_SECONDS + job.stills * one_still + job.fits_to_make * SECONDS_PER_FIT
-    memory = BASE_BYTES + COPIES_HELD * job.weather_bytes
-    return Forecast(job.bytes_to_read, round(memory), round(disk), round(seconds, 1))
+    return Forecast(job.bytes_to_read, round(job.memory_bytes + DRAWING_BYTES), round(disk), round(seconds, 1))
