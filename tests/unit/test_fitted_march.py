@@ -116,12 +116,13 @@ def test_a_typical_year_has_no_beginning() -> None:
     np.testing.assert_allclose(np.roll(ours, 100, axis=0), theirs, atol=1e-9)
 
 
-def test_steps_may_come_in_windows() -> None:
+@pytest.mark.parametrize("engine", ["numpy", "compiled"])
+def test_steps_may_come_in_windows(engine: Any) -> None:
     climates = invented_climates(6)
     steps = {name: getattr(climates, name)[: 24 * 30] for name in ("ghi", "temp_air", "wind_speed", "temp_dew")}
-    days = climates.day_of_year[:30]
-    whole = whole_record(Fitted("hourly"), Block(steps, climates.latitude, days, 24), STILL, CONDITIONS)
-    march = Fitted("hourly").begin(Cells(climates.latitude, np.zeros(6), 24), STILL, CONDITIONS)
+    days, method = climates.day_of_year[:30], Fitted("hourly", engine=engine)
+    whole = whole_record(method, Block(steps, climates.latitude, days, 24), STILL, CONDITIONS)
+    march = method.begin(Cells(climates.latitude, np.zeros(6), 24), STILL, CONDITIONS)
     found = []
     for start, end in ((0, 1), (1, 12), (12, 30)):
         some = {name: values[24 * start : 24 * end] for name, values in steps.items()}

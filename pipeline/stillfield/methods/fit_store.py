@@ -110,9 +110,16 @@ def kept_fits(path: Path) -> dict[str, StillFit]:
     dict of str to StillFit
     """
     try:
-        return _read(path.read_text(encoding="utf-8"))
+        state = path.stat()
+        return _kept_as_it_is(path, state.st_mtime_ns, state.st_size)
     except (OSError, ValueError, KeyError, TypeError):
         return {}
+
+
+@lru_cache(maxsize=64)
+def _kept_as_it_is(path: Path, changed_ns: int, size: int) -> dict[str, StillFit]:
+    """Fits in a file, read once as long as it stays the same: every piece of a region asks for them."""
+    return _read(path.read_text(encoding="utf-8"))
 
 
 def _read(text: str) -> dict[str, StillFit]:

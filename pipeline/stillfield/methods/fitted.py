@@ -5,20 +5,19 @@ from __future__ import annotations
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, fields
 from pathlib import Path
-from typing import Any, ClassVar, Literal, Protocol
-
-import numpy as np
+from typing import ClassVar, Literal
 
 from stillfield.methods import Block, Cells, DailyYield, March
 from stillfield.methods.fit_store import fit_for
 from stillfield.physics.compiling import Engine
-from stillfield.physics.correlation import Day
 from stillfield.physics.correlation_march import CorrelationMarch
-from stillfield.physics.day_shape import day_from_days, day_from_steps, variant_of
+from stillfield.physics.day_shape import DayWeather, variant_of
 from stillfield.physics.fitting import StillFit
-from stillfield.physics.forcing import step_forcing
 from stillfield.physics.gain_table import GainRows, GainTable
+from stillfield.physics.step_days import StepDays
 from stillfield.physics.still import Still
+
+_TAKEN = {one.name for one in fields(DayWeather)}
 
 
 @dataclass(frozen=True)
@@ -61,12 +60,9 @@ class Fitted:
         of the correlation is walked: all days must have the same variables.
         """
         fits = [fit_for(still.in_condition(condition), self.folder) for condition in conditions]
-        predictors: _Predictors
         if self.resolution == "daily":
-            predictors = _Days(GainTable(still).for_latitudes(cells.latitude), self.engine)
-        else:
-            predictors = _Steps(still, cells)
-        return _FittedMarch(fits, predictors, len(cells.latitude), self.engine)
+            return _DailyMarch(fits, GainTable(still).for_latitudes(cells.latitude), self.engine)
+        return _HourlyMarch(fits, still, cells, self.engine)
 
     def variant(self, known: Iterable[str], still: Still) -> str:
         """Name the predictors of the correlation that weather with the variables `known` allows.
@@ -86,60 +82,41 @@ class Fitted:
         return variant_of(known) if self.resolution == "daily" else "hourly"
 
 
-class _Predictors(Protocol):
-    """Makes the predictors of the days that are complete."""
+class _DailyMarch:
+    """A march from daily weather."""
 
-    def advance(self, block: Block, *, last: bool) -> Day:
-        """Take the next days."""
-        ...
-
-
-class _FittedMarch:
-    """A march that makes predictors and walks the correlations through them."""
-
-    def __init__(self, fits: Sequence[StillFit], predictors: _Predictors, cells: int, engine: Engine) -> None:
-        self._fits, self._predictors, self._cells, self._engine = fits, predictors, cells, engine
+    def __init__(self, fits: Sequence[StillFit], gains: GainRows, engine: Engine) -> None:
+        self._fits, self._gains, self._engine = fits, gains, engine
         self._march: CorrelationMarch | None = None
 
     def advance(self, block: Block, *, last: bool) -> list[DailyYield]:
         """Give the yields of all days complete and not yet given, one per condition."""
-        day = self._predictors.advance(block, last=last)
         if self._march is None:
-            correlations = [fit.correlations[day.variant] for fit in self._fits]
-            self._march = CorrelationMarch(correlations, self._cells, engine=self._engine)
+            variant = variant_of(block.weather)
+            correlations = [fit.correlations[variant] for fit in self._fits]
+            self._march = CorrelationMarch(
+                correlations, len(self._gains.row), gains=self._gains, engine=self._engine
+            )
+        taken = {name: values for name, values in block.weather.items() if name in _TAKEN}
+        days = DayWeather(**taken, day_of_year=block.day_of_year)
+        return [DailyYield(*found) for found in self._march.advance(days, last=last)]
+
+
+class _HourlyMarch:
+    """A march from steps within the day."""
+
+    def __init__(self, fits: Sequence[StillFit], still: Still, cells: Cells, engine: Engine) -> None:
+        self._still, self._cells, self._engine = still, cells, engine
+        correlations = [fit.correlations["hourly"] for fit in fits]
+        self._march = CorrelationMarch(correlations, len(cells.latitude), engine=engine)
+        self._steps: StepDays | None = None
+
+    def advance(self, block: Block, *, last: bool) -> list[DailyYield]:
+        """Give the yields of all days complete and not yet given, one per condition."""
+        if self._steps is None:
+            self._steps = StepDays(
+                self._still, self._cells.latitude, steps_per_day=block.steps_per_day,
+                clock_to_solar_hours=self._cells.clock_to_solar_hours, engine=self._engine,
+            )
+        day, _ = self._steps.advance(block.weather, block.day_of_year, last=last)
         return [DailyYield(*found) for found in self._march.advance(day, last=last)]
-
-
-@dataclass(frozen=True)
-class _Days:
-    """Predictors of days alone: each day by itself."""
-
-    rows: GainRows
-    engine: Engine
-
-    def advance(self, block: Block, *, last: bool) -> Day:
-        """Give the days of `block`."""
-        return day_from_days(block.weather, self.rows, day_of_year=block.day_of_year, engine=self.engine)
-
-
-class _Steps:
-    """Predictors of days seen through their steps; they are made at the end, of the whole record."""
-
-    def __init__(self, still: Still, cells: Cells) -> None:
-        self._still, self._cells = still, cells
-        self._blocks: list[Block] = []
-
-    def advance(self, block: Block, *, last: bool) -> Day:
-        """Keep the days of `block`, or where `last` give all."""
-        self._blocks.append(block)
-        if not last:
-            return Day(*[np.empty((0, len(self._cells.latitude)))] * len(fields(Day)))
-        weather = {name: np.concatenate([one.weather[name] for one in self._blocks]) for name in block.weather}
-        place: dict[str, Any] = {
-            "latitude": block.latitude, "steps_per_day": block.steps_per_day,
-            "day_of_year": np.concatenate([one.day_of_year for one in self._blocks]),
-        }
-        forcing, transmitted = step_forcing(
-            weather, self._still, clock_to_solar_hours=block.clock_to_solar_hours, **place
-        )
-        return day_from_steps(weather, forcing, transmitted, self._still, **place)

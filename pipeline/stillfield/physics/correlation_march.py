@@ -8,8 +8,8 @@ the cells beside it change a digit. Compiled it works in single precision, in nu
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass, fields, replace
-from typing import Any
+from dataclasses import dataclass
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,9 +26,14 @@ from stillfield.physics.correlation import (
     frost_factor,
     scaled_predictors,
 )
+from stillfield.physics.day_shape import DayWeather, day_from_days
+from stillfield.physics.gain_table import GainRows
 
 Array = NDArray[np.floating[Any]]
 Flags = NDArray[np.bool_]
+#: Predictors of days, or the weather they follow from.
+Days = Day | DayWeather
+T = TypeVar("T", bound=Days)
 #: Litres, frost and whether the day is outside the range of the fit, each of shape (day, cell).
 Yields = tuple[Array, Flags, Flags]
 
@@ -57,7 +62,7 @@ class Results:
 
 
 #: Takes days, the air temperature of the day after each, the state, results and the row of the first of them.
-Walk = Callable[[Day, Array, Array, Results, int], None]
+Walk = Callable[[Days, Array, Array, Results, int], None]
 
 
 class CorrelationMarch:
@@ -69,6 +74,8 @@ class CorrelationMarch:
         Same variant, memory and ranges.
     cells : int
         Number of cells.
+    gains : GainRows, optional
+        Daily gain of the design at the cells' latitudes: with it the march takes `DayWeather`, without `Day`.
     engine : {'auto', 'compiled', 'numpy'}
         'auto' is compiled where numba is installed.
 
@@ -91,7 +98,8 @@ class CorrelationMarch:
     """
 
     def __init__(
-        self, correlations: Sequence[DailyCorrelation], cells: int, *, engine: Engine = "auto"
+        self, correlations: Sequence[DailyCorrelation], cells: int, *, gains: GainRows | None = None,
+        engine: Engine = "auto",
     ) -> None:
         first = correlations[0]
         if any((one.variant, one.memory, one.ranges) != (first.variant, first.memory, first.ranges)
@@ -102,18 +110,17 @@ class CorrelationMarch:
             raise ValueError(f"coefficients do not match the {terms} terms of {first.variant!r}")
         compiled = is_compiled(engine, "the daily correlation")
         self._dtype = np.dtype(np.float32 if compiled else np.float64)
-        self._walk = _compiled_walk(correlations) if compiled else _numpy_walk(correlations)
-        self._sets = len(correlations)
-        self._fields = fields_of(first.variant)
+        self._walk = _compiled_walk(correlations, gains) if compiled else _numpy_walk(correlations, gains)
+        self._sets, self._variant = len(correlations), first.variant
         self._state = np.full((2, cells), np.nan, self._dtype)
-        self._pending: Day | None = None
+        self._pending: Days | None = None
 
-    def advance(self, day: Day, *, last: bool) -> list[Yields]:
+    def advance(self, day: Days, *, last: bool) -> list[Yields]:
         """Take the next days and give the yields of all days complete and not yet given.
 
         Parameters
         ----------
-        day : Day
+        day : Day or DayWeather
             Those that follow the days of the call before; there may be none.
         last : bool
             Whether no day follows; the last is then its own tomorrow.
@@ -123,7 +130,7 @@ class CorrelationMarch:
         list of (litres, frost, outside)
             One per correlation, arrays of shape (day, cell). Litres are NaN where a predictor is. [L m-2]
         """
-        day = filled(day, self._fields, self._state.shape[1], self._dtype)
+        day = filled(day, self._variant, self._state.shape[1], self._dtype)
         temp, days = day.temp_air, len(day.temp_air)
         newest = rows(day, slice(days - 1, days)) if days else self._pending
         parts = []
@@ -134,7 +141,7 @@ class CorrelationMarch:
         if last and newest is not None:
             parts.append((newest, newest.temp_air))
         if newest is not None and days and not last:
-            self._pending = filled(_copied(newest), self._fields, self._state.shape[1], self._dtype)
+            self._pending = filled(_copied(newest), self._variant, self._state.shape[1], self._dtype)
         results = self._results(sum(len(after) for _, after in parts))
         at = 0
         for part, after in parts:
@@ -177,7 +184,7 @@ def daily_litres(
     days, cells = np.shape(day.transmitted)
     before = min(WARM_UP_DAYS, days) if cyclic else 0
     if cyclic:
-        whole = filled(day, fields_of(correlations[0].variant), cells, np.dtype(float))
+        whole = filled(day, correlations[0].variant, cells, np.dtype(float))
         day = rows(whole, np.r_[days - before : days, :days, 0])
     some = slice(before, before + days)
     found = CorrelationMarch(correlations, cells, engine=engine).advance(day, last=True)
@@ -205,17 +212,17 @@ def fields_of(variant: str) -> tuple[str, ...]:
     return (*(field for letter, (field, _, _) in SCALES.items() if letter in letters), "wind_speed")
 
 
-def filled(day: Day, names: Sequence[str], cells: int, dtype: np.dtype[Any]) -> Day:
-    """The same days with arrays of shape (day, cell), contiguous, read-only and of one type.
+def filled(day: T, variant: str, cells: int, dtype: np.dtype[Any]) -> T:
+    """The same days with the arrays of a variant, of shape (day, cell), contiguous, read-only and of one type.
 
     They are copied only where they must be. Read-only, because a compiled function is another for each type.
 
     Parameters
     ----------
-    day : Day
-        Predictors of days.
-    names : sequence of str
-        Fields that are wanted; they must be there.
+    day : Day or DayWeather
+        Some days.
+    variant : str
+        A key of `VARIANTS`; what it takes must be there.
     cells : int
         Number of cells.
     dtype : numpy dtype
@@ -223,58 +230,59 @@ def filled(day: Day, names: Sequence[str], cells: int, dtype: np.dtype[Any]) -> 
 
     Returns
     -------
-    Day
-        With these fields alone.
+    Day or DayWeather
+        With what the variant takes alone.
     """
-    shape = (len(day.transmitted), cells)
+    names = fields_of(variant) if isinstance(day, Day) else day.names(variant)
     found = {}
     for name in names:
-        values = np.asarray(getattr(day, name), dtype=dtype)
+        values = np.asarray(getattr(day, name), dtype=np.int64 if name == "day_of_year" else dtype)
+        shape = values.shape if name == "day_of_year" else (len(day.temp_air), cells)
         spread = values if values.shape == shape else np.broadcast_to(values, shape)
         found[name] = np.broadcast_to(np.ascontiguousarray(spread), shape)
-    return Day(**found)
+    return type(day)(**found)
 
 
-def rows(day: Day, which: slice | NDArray[np.integer[Any]]) -> Day:
+def rows(day: T, which: slice | NDArray[np.integer[Any]]) -> T:
     """Some of the days.
 
     Parameters
     ----------
-    day : Day
-        With every array of shape (day, cell).
+    day : Day or DayWeather
+        With every array of shape (day, ...).
     which : slice or ndarray of int
         Rows.
 
     Returns
     -------
-    Day
+    Day or DayWeather
     """
-    return Day(**{
-        field.name: values[which] for field in fields(Day) if (values := getattr(day, field.name)) is not None
-    })
+    return type(day)(**{name: values[which] for name, values in _there(day)})
 
 
-def _copied(day: Day) -> Day:
-    return replace(day, **{
-        field.name: values.copy() for field in fields(Day) if (values := getattr(day, field.name)) is not None
-    })
+def _copied(day: T) -> T:
+    return type(day)(**{name: values.copy() for name, values in _there(day)})
 
 
-def _compiled_walk(correlations: Sequence[DailyCorrelation]) -> Walk:
+def _there(day: Days) -> list[tuple[str, Any]]:
+    return [(name, values) for name, values in vars(day).items() if values is not None]
+
+
+def _compiled_walk(correlations: Sequence[DailyCorrelation], gains: GainRows | None) -> Walk:
     from stillfield.physics import correlation_compiled
 
-    walk: Walk = correlation_compiled.CompiledWalk(correlations)
+    walk: Walk = correlation_compiled.CompiledWalk(correlations, gains)
     return walk
 
 
-def _numpy_walk(correlations: Sequence[DailyCorrelation]) -> Walk:
+def _numpy_walk(correlations: Sequence[DailyCorrelation], gains: GainRows | None) -> Walk:
     first = correlations[0]
 
-    def walk(day: Day, after: Array, state: Array, results: Results, at: int) -> None:
+    def walk(days: Days, after: Array, state: Array, results: Results, at: int) -> None:
         length = max(1, TILE // max(1, after.shape[1]))
         for start in range(0, len(after), length):
             tile = slice(start, start + length)
-            part = rows(day, tile)
+            part = _predictors(rows(days, tile), gains)
             predictors = scaled_predictors(part, first.memory, state=state, temp_next=after[tile])
             given = slice(at + start, at + start + len(part.temp_air))
             results.outside[given] = first.outside(part)
@@ -284,6 +292,14 @@ def _numpy_walk(correlations: Sequence[DailyCorrelation]) -> Walk:
                 results.frost[index, given] = factor < FROST_FLAG
 
     return walk
+
+
+def _predictors(days: Days, gains: GainRows | None) -> Day:
+    if isinstance(days, Day):
+        return days
+    if gains is None:
+        raise TypeError("daily weather needs the gain of the design")
+    return day_from_days(days, gains)
 
 
 def _held(one: DailyCorrelation, day: Day, predictors: dict[str, Array], factor: Array) -> Array:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -11,7 +11,6 @@ from numpy.typing import NDArray
 from scipy.signal import lfilter
 
 from stillfield.physics.brine import basin_heat_capacity
-from stillfield.physics.compiling import Engine, is_compiled
 from stillfield.physics.correlation import Day
 from stillfield.physics.gain_table import GainRows
 from stillfield.physics.heat_balance import Forcing
@@ -78,61 +77,77 @@ def variant_of(known: Iterable[str]) -> str:
     return f"{name}-humidity" if there & {"temp_dew", "relative_humidity"} else name
 
 
-def day_from_days(
-    weather: Mapping[str, Array], rows: GainRows, *, day_of_year: NDArray[np.integer[Any]], engine: Engine = "numpy"
-) -> Day:
+@dataclass(frozen=True)
+class DayWeather:
+    """Daily weather of some days and cells, arrays of shape (day, cell).
+
+    Attributes
+    ----------
+    irradiation : ndarray
+        [MJ m-2]
+    temp_air, wind_speed : ndarray
+        Means of the day. [degC], [m s-1]
+    day_of_year : ndarray of int, shape (day,)
+        1 to 366.
+    temp_air_min, temp_air_max : ndarray, optional
+        Of use together. [degC]
+    temp_dew, relative_humidity : ndarray, optional
+        Either; the dew point counts where both are there. [degC], [%]
+    """
+
+    irradiation: Array
+    temp_air: Array
+    wind_speed: Array
+    day_of_year: NDArray[np.integer[Any]]
+    temp_air_min: Array | None = None
+    temp_air_max: Array | None = None
+    temp_dew: Array | None = None
+    relative_humidity: Array | None = None
+
+    def names(self, variant: str) -> tuple[str, ...]:
+        """Names of the fields that a variant takes, all of them there."""
+        names = ["irradiation", "temp_air", "wind_speed", "day_of_year"]
+        names += ["temp_air_min", "temp_air_max"] if "range" in variant else []
+        if "humidity" in variant:
+            names.append("temp_dew" if self.temp_dew is not None else "relative_humidity")
+        return tuple(names)
+
+
+def day_from_days(weather: DayWeather, rows: GainRows) -> Day:
     """Predictors from daily weather.
 
     Parameters
     ----------
-    weather : mapping of str to ndarray, shape (day, cell)
-        ``irradiation`` [MJ m-2], ``temp_air`` [degC], ``wind_speed`` [m s-1]; where known both
-        ``temp_air_min`` and ``temp_air_max`` [degC], and ``temp_dew`` [degC] or ``relative_humidity`` [%].
+    weather : DayWeather
+        Of the days.
     rows : GainRows
         Daily gain of the design at the cells' latitudes.
-    day_of_year : ndarray of int, shape (day,)
-        1 to 366.
-    engine : {'auto', 'compiled', 'numpy'}
-        Compiled what is worked out is of single precision; 'auto' is compiled where numba is installed.
 
     Returns
     -------
     Day
     """
-    temp_air = weather["temp_air"]
     span = None
-    if "temp_air_min" in weather and "temp_air_max" in weather:
-        span = weather["temp_air_max"] - weather["temp_air_min"]
-    sun = rows.sunshine(weather["irradiation"], day_of_year, engine=engine)
+    if weather.temp_air_min is not None and weather.temp_air_max is not None:
+        span = weather.temp_air_max - weather.temp_air_min
+    sun = rows.sunshine(weather.irradiation, weather.day_of_year)
     return Day(
         transmitted=sun.transmitted,
-        temp_air=temp_air,
-        wind_speed=weather["wind_speed"],
+        temp_air=weather.temp_air,
+        wind_speed=weather.wind_speed,
         day_length=sun.day_length,
         clearness=sun.clearness,
         temp_range=span,
-        dew_depression=_dew_depression(weather, engine),
+        dew_depression=_dew_depression(weather),
     )
 
 
-def _dew_depression(weather: Mapping[str, Array], engine: Engine) -> Array | None:
-    temp_air = weather["temp_air"]
-    if "temp_dew" in weather:
-        return np.asarray(temp_air - weather["temp_dew"])
-    if "relative_humidity" not in weather:
-        return None
-    if not is_compiled(engine, "the dew point"):
-        return np.asarray(temp_air - dew_point(temp_air, weather["relative_humidity"]))
-    from stillfield.physics.vapour_compiled import dryness
-
-    out = np.empty(temp_air.size, np.float32)
-    dryness(_read_only(temp_air), _read_only(weather["relative_humidity"]), out)
-    return out.reshape(temp_air.shape)
-
-
-def _read_only(values: Array) -> Array:
-    """One row in single precision, read-only because a compiled function is another for each type."""
-    return np.broadcast_to(np.ascontiguousarray(values, dtype=np.float32).reshape(-1), (values.size,))
+def _dew_depression(weather: DayWeather) -> Array | None:
+    if weather.temp_dew is not None:
+        return np.asarray(weather.temp_air - weather.temp_dew)
+    if weather.relative_humidity is not None:
+        return np.asarray(weather.temp_air - dew_point(weather.temp_air, weather.relative_humidity))
+    return None
 
 
 def day_from_steps(

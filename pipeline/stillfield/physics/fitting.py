@@ -23,7 +23,7 @@ from stillfield.physics.correlation import (
     scaled_predictors,
     thaw,
 )
-from stillfield.physics.day_shape import basin_memory, day_from_days, day_from_steps
+from stillfield.physics.day_shape import DayWeather, basin_memory, day_from_days, day_from_steps
 from stillfield.physics.forcing import step_forcing
 from stillfield.physics.gain_table import GainTable
 from stillfield.physics.heat_balance import simulate
@@ -111,7 +111,7 @@ def _sample(still: Still, climates: ClimateSet) -> _Sample:
     forcing, transmitted = step_forcing(weather, still, steps_per_day=STEPS, **place)
     result = simulate(forcing, still)
     days = {name: values.reshape(-1, STEPS, values.shape[1]) for name, values in weather.items()}
-    daily = {name: values.mean(axis=1) for name, values in days.items()}
+    daily = {name: values.mean(axis=1) for name, values in days.items() if name != "ghi"}
     daily["irradiation"] = days["ghi"].sum(axis=1) * 3600e-6
     daily["temp_air_min"], daily["temp_air_max"] = days["temp_air"].min(axis=1), days["temp_air"].max(axis=1)
     outside = extraterrestrial_irradiation(climates.latitude, climates.day_of_year)
@@ -122,7 +122,7 @@ def _sample(still: Still, climates: ClimateSet) -> _Sample:
         litres=result.daily_yield,
         frost=result.frost,
         usable=usable,
-        by_days=day_from_days(daily, rows, day_of_year=climates.day_of_year),
+        by_days=day_from_days(DayWeather(**daily, day_of_year=climates.day_of_year), rows),
         by_steps=day_from_steps(weather, forcing, transmitted, still, steps_per_day=STEPS, **place),
     )
 

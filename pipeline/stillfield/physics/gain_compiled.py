@@ -1,15 +1,18 @@
-"""Sunshine of days from tables, and dryness of the air, compiled with numba; imported only when asked for."""
+"""Daily sunshine looked up in compiled code, in single precision; imported only when it is asked for.
+
+The twin in numpy is `stillfield.physics.gain_table.GainRows`. These are parts of compiled functions, not functions
+to call.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from typing import Any
 
 import numpy as np
-from numba import njit
 from numba.extending import register_jitable
 from numpy.typing import NDArray
 
+from stillfield.physics.correlation import SCALES
 from stillfield.physics.gain_table import CLEARNESS_STEP, GainRows
 
 Array = NDArray[np.floating[Any]]
@@ -19,13 +22,6 @@ LONG_RUN = 16
 _f = np.float32
 _ZERO, _ONE = _f(0.0), _f(1.0)
 _COLUMNS_PER_CLEARNESS = _f(1.0 / CLEARNESS_STEP)
-
-
-def _compiled(function: Callable[..., None]) -> Any:
-    try:
-        return njit(error_model="numpy", nogil=True, cache=True)(function)
-    except RuntimeError:  # no folder to keep the cache in: compile anew in every process
-        return njit(error_model="numpy", nogil=True)(function)
 
 
 @register_jitable
@@ -66,48 +62,44 @@ def _of_cells(table: Any, rows: Any, outside: Any, hours: Any, irradiation: Any,
         n[i] = hours[rows[i]]
 
 
-def _look_up(tables: Any, runs: Any, rows: Any, days: Any, irradiation: Any, out: Any) -> None:
-    """Fill `out` from the tables of all days of the year, run by run or, where there are none, cell by cell."""
-    table, outside, hours = tables
-    for d in range(len(days)):
-        day = days[d]
-        s, k, n = out[0, d], out[1, d], out[2, d]
-        for run in range(len(runs)):
-            start, stop, row = runs[run]
-            _of_run(table[day, row], outside[day, row], hours[day, row], irradiation[d, start:stop],
-                    s[start:stop], k[start:stop], n[start:stop])
-        if len(runs) == 0:
-            _of_cells(table[day].reshape(-1), rows, outside[day], hours[day], irradiation[d], s, k, n)
+@register_jitable
+def look_up(gain: Any, day: Any, irradiation: Any, s: Any, k: Any, n: Any) -> None:
+    """Fill S, clearness and scaled day length of the cells of a day; `day` counts from 0.
+
+    `gain` comes from `gain_tables`.
+    """
+    table, outside, hours, runs, rows = gain
+    for run in range(len(runs)):
+        start, stop, row = runs[run]
+        _of_run(table[day, row], outside[day, row], hours[day, row], irradiation[start:stop],
+                s[start:stop], k[start:stop], n[start:stop])
+    if len(runs) == 0:
+        _of_cells(table[day].reshape(-1), rows, outside[day], hours[day], irradiation, s, k, n)
 
 
-_looked_up = _compiled(_look_up)
-
-
-def sunshine(gains: GainRows, irradiation: Array, day_of_year: NDArray[np.integer[Any]]) -> Array:
-    """S, clearness and day length of days; the twin of `GainRows.sunshine` in single precision.
+def gain_tables(gains: GainRows) -> tuple[Array, Array, Array, NDArray[np.int64], NDArray[np.int32]]:
+    """Tables in the form that `look_up` takes.
 
     Parameters
     ----------
     gains : GainRows
-        Of the cells.
-    irradiation : ndarray, shape (day, cell)
-        [MJ m-2]
-    day_of_year : ndarray of int, shape (day,)
-        1 to 366.
+        Of some cells.
 
     Returns
     -------
-    ndarray of float32, shape (3, day, cell)
+    table, outside, hours : ndarray of float32, shape (DAYS, row, ...)
+        Gain; one over the irradiation outside [m2 MJ-1]; day length on the scale of the predictor N.
+    runs : ndarray, shape (run, 3)
+        First cell, end and row of cells that share a row; none where they are short.
+    row : ndarray of int32, shape (cell,)
+        Row of each cell.
     """
-    light = np.broadcast_to(np.ascontiguousarray(irradiation, dtype=np.float32), irradiation.shape)  # read-only
-    out = np.empty((3, *irradiation.shape), np.float32)
-    tables = (
-        gains.table, (1.0 / np.maximum(gains.outside, 1e-6)).astype(np.float32), gains.day_length.astype(np.float32),
-    )
+    _, hours, summand = SCALES["N"]
     starts = np.flatnonzero(np.diff(gains.row, prepend=-1))
-    runs = np.stack([starts, np.append(starts[1:], len(gains.row)), gains.row[starts]], axis=1)
+    runs = np.stack([starts, np.append(starts[1:], len(gains.row)), gains.row[starts]], axis=1).astype(np.int64)
     if len(runs) * LONG_RUN > len(gains.row):
         runs = runs[:0]
-    days = np.asarray(day_of_year, dtype=np.int64) - 1
-    _looked_up(tables, runs, gains.row.astype(np.int32), days, light, out)
-    return out
+    return (
+        gains.table, (1.0 / np.maximum(gains.outside, 1e-6)).astype(np.float32),
+        (gains.day_length / hours + summand).astype(np.float32), runs, gains.row.astype(np.int32),
+    )

@@ -13,7 +13,6 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from stillfield.physics.basin import GROUND_ALBEDO
-from stillfield.physics.compiling import Engine, is_compiled
 from stillfield.physics.gain import daily_gain, day_moments
 from stillfield.physics.irradiance import clearness_index
 from stillfield.physics.still import CoverMaterial, Panel, Still
@@ -76,9 +75,7 @@ class GainRows:
     outside: Array
     day_length: Array
 
-    def sunshine(
-        self, irradiation: Array, day_of_year: NDArray[np.integer[Any]], *, engine: Engine = "numpy"
-    ) -> Sunshine:
+    def sunshine(self, irradiation: Array, day_of_year: NDArray[np.integer[Any]]) -> Sunshine:
         """S, clearness and day length of days at once.
 
         Parameters
@@ -87,23 +84,12 @@ class GainRows:
             Global horizontal irradiation H. [MJ m-2]
         day_of_year : ndarray of int, shape (day,)
             1 to 366.
-        engine : {'auto', 'compiled', 'numpy'}
-            Compiled they are of single precision; 'auto' is compiled where numba is installed.
 
         Returns
         -------
         Sunshine
             NaN where the irradiation is, but for the day length.
-
-        Raises
-        ------
-        MethodError
-            If the engine is not there.
         """
-        if is_compiled(engine, "the daily gain"):
-            from stillfield.physics.gain_compiled import sunshine
-
-            return Sunshine(*sunshine(self, irradiation, day_of_year))
         return Sunshine(
             self.transmitted(irradiation, day_of_year), self.clearness(irradiation, day_of_year),
             self.day_length[np.asarray(day_of_year) - 1][:, self.row],
@@ -228,19 +214,17 @@ class GainTable:
         steps = np.round(np.atleast_1d(np.asarray(latitude, dtype=float)) / LATITUDE_STEP_DEG)
         distinct, row = np.unique(steps, return_inverse=True)
         optics = (self.still.panels, self.still.cover, self.still.wall_gain, self.albedo)
-        table = np.stack([_row(*optics, step) for step in distinct.tolist()], axis=1)
-        place, day = distinct * LATITUDE_STEP_DEG, np.arange(1, DAYS + 1)
-        return GainRows(
-            table, row.astype(np.intp), extraterrestrial_irradiation(place, day), day_length(place, day)
-        )
+        made = [_row(*optics, step) for step in distinct.tolist()]
+        table, outside, hours = (np.stack(part, axis=1) for part in zip(*made, strict=True))
+        return GainRows(table, row.astype(np.intp), outside, hours)
 
 
 @lru_cache(maxsize=ROWS_KEPT)
-def _row(panels: tuple[Panel, ...], cover: CoverMaterial, wall_gain: float, albedo: float, step: float) -> Array:
-    """Gain of a design at a latitude, shape (DAYS, column)."""
-    still = Still("", panels, cover, wall_gain)
-    moments = day_moments(still, [step * LATITUDE_STEP_DEG], np.arange(1, DAYS + 1))
+def _row(
+    panels: tuple[Panel, ...], cover: CoverMaterial, wall_gain: float, albedo: float, step: float
+) -> tuple[Array, Array, Array]:
+    """Gain of a design at a latitude, shape (DAYS, column), irradiation outside and day length, shape (DAYS,)."""
+    still, place, day = Still("", panels, cover, wall_gain), [step * LATITUDE_STEP_DEG], np.arange(1, DAYS + 1)
     columns = np.linspace(0.0, LAST_CLEARNESS, round(LAST_CLEARNESS / CLEARNESS_STEP) + 1)
-    row = daily_gain(still, moments, columns, albedo=albedo).astype(np.float32)
-    row.flags.writeable = False
-    return row
+    gain = daily_gain(still, day_moments(still, place, day), columns, albedo=albedo).astype(np.float32)
+    return gain, extraterrestrial_irradiation(place, day)[:, 0], day_length(place, day)[:, 0]

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from dataclasses import asdict, dataclass, field, replace
+from dataclasses import dataclass, field, is_dataclass, replace
 from math import cos, radians
 from typing import Literal
 
@@ -173,9 +173,13 @@ class Still:
         >>> still.fingerprint() == still.in_condition("new").fingerprint()
         False
         """
-        numbers = asdict(self)
-        for label in ("name", "condition", "condition_low", "condition_high", "conditions"):
-            del numbers[label]
-        numbers["state"] = asdict(self.state)
-        text = json.dumps(numbers, sort_keys=True, default=float)
+        labels = ("name", "condition", "condition_low", "condition_high", "conditions")
+        numbers = {name: value for name, value in vars(self).items() if name not in labels}
+        numbers["state"] = self.state
+        text = json.dumps(numbers, sort_keys=True, default=_plain)
         return hashlib.sha256(text.encode()).hexdigest()[:16]
+
+
+def _plain(value: object) -> object:
+    """Form of a record or number that json knows."""
+    return vars(value) if is_dataclass(value) else float(value)  # type: ignore[arg-type]
