@@ -8,7 +8,6 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.signal import lfilter
 
 from stillfield.physics.brine import basin_heat_capacity
 from stillfield.physics.correlation import Day
@@ -301,6 +300,8 @@ def smoothed(absorbed: Array, fade: float, before: Array) -> Array:
     ndarray, shape (step, cell)
         [W m-2]
     """
+    from scipy.signal import lfilter  # half a second to load, and compiled runs do without
+
     return np.asarray(lfilter([1.0 - fade], [1.0, -fade], np.nan_to_num(absorbed), axis=0, zi=fade * before[None])[0])
 
 

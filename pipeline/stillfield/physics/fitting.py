@@ -8,7 +8,6 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.optimize import least_squares
 
 from stillfield.physics.basin import absorbed
 from stillfield.physics.climates import ClimateSet, invented_climates
@@ -162,6 +161,8 @@ def _fit_frost(day: Day, predictors: Mapping[str, Array], sample: _Sample, raw: 
 
     def misfit(x: Array) -> Array:
         return np.asarray(thaw(matrix @ x) * without - wanted)
+
+    from scipy.optimize import least_squares  # only where fits are made
 
     result = least_squares(misfit, start, method="lm")
     return tuple(float(value) for value in result.x)
