@@ -244,8 +244,7 @@ class _Walk:
         work = self.work
         place = Cells(self.latitude[cells], self.clock[cells],
                       work.local.steps_per_day if work.by_steps else 1)
-        marches = [work.method.begin(place, still, (still.condition, still.condition_low, still.condition_high))
-                   for still in work.stills]
+        marches = [work.method.begin(place, still, conditions_of(still)) for still in work.stills]
         count, counted_from = place.latitude.size, (self.block.span or (0, 0))[0]
         self.groups.append(_Group(
             cells, marches,
@@ -263,7 +262,8 @@ class _Walk:
         if work.months.typical:
             block = unrolled(block)
         for number, march in enumerate(group.marches):
-            band = march.advance(block, last=last)
+            found = dict(zip(conditions_of(work.stills[number]), march.advance(block, last=last), strict=True))
+            band = [found[condition] for condition in band_of(work.stills[number])]
             if work.months.typical:
                 band = [_real_days(one, min(WARM_UP_DAYS, work.local.days), work.local.days) for one in band]
             held = group.sunshine[number]
@@ -307,6 +307,16 @@ class _Walk:
             {cell: {name: np.concatenate(parts) for name, parts in kept.items()}
              for cell, kept in self.sampled.items()},
         )
+
+
+def band_of(still: Still) -> tuple[str, str, str]:
+    """Central, low and high condition of a still."""
+    return still.condition, still.condition_low, still.condition_high
+
+
+def conditions_of(still: Still) -> tuple[str, ...]:
+    """Name every condition of a band once, so that a still without a band is worked once."""
+    return tuple(dict.fromkeys(band_of(still)))
 
 
 def _real_days(one: DailyYield, before: int, days: int) -> DailyYield:

@@ -11,7 +11,7 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
-from stillfield.engine.block import BlockResult, Work
+from stillfield.engine.block import BlockResult, Work, conditions_of
 from stillfield.engine.embedded import work_embedded
 from stillfield.engine.gathering import Gathering
 from stillfield.engine.planning import BlockPlan, Plan, plan_blocks, split_in_time
@@ -251,8 +251,7 @@ def months_of(
     needs = missing or Missing()
     local, months = prepared.local, prepared.months
     for still in stills:  # makes the fits that are not kept yet, once and here
-        prepared.method.begin(Cells(np.zeros(1), np.zeros(1)), still,
-                              (still.condition, still.condition_low, still.condition_high))
+        prepared.method.begin(Cells(np.zeros(1), np.zeros(1)), still, conditions_of(still))
     work = Work(
         prepared.reader, prepared.names, local, months, prepared.method, tuple(stills),
         float(yield_from_efficiency(1.0, rule_efficiency)), needs.min_valid_hours, needs.fill_hours,

@@ -161,10 +161,12 @@ class Steps:
 
     def _blank_after(self, end: int) -> None:
         """Empty the rows after the end of the record, which an earlier window has left full."""
-        for start in np.unique(self._start):
-            columns = self._start == start
-            for held in self._held.values():
-                self._by_column(held)[max(end - start - self._first, 0):, :, columns] = np.nan
+        stop = self.local.days * self.local.steps_per_day - self._first
+        edges = [0, *(np.flatnonzero(np.diff(self._start)) + 1).tolist(), self._start.size]
+        for columns in (slice(*pair) for pair in pairwise(edges)):
+            begin = max(end - int(self._start[columns.start]) - self._first, 0)
+            for held in self._held.values() if begin < stop else ():
+                self._by_column(held)[begin:stop, :, columns] = np.nan
 
     def _fill(self, whole: int) -> None:
         """Bridge short gaps of smooth weather, and set missing sunshine of the night to 0, in rows not yet given."""
