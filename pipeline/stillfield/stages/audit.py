@@ -10,7 +10,6 @@ from numpy.typing import NDArray
 
 from stillfield.methods import Block, Method, whole_record
 from stillfield.methods.heat_balance import HeatBalance
-from stillfield.physics.climates import hours_of_broken_sky
 from stillfield.physics.irradiance import disaggregate_day
 from stillfield.physics.still import Still
 
@@ -139,6 +138,8 @@ def _spread(annual: Array) -> NDArray[np.intp]:
 
 def _spread_over_hours(days: Block) -> Block:
     """Spread daily weather over the hours of local solar days."""
+    from stillfield.physics.climates import hours_of_broken_sky
+
     sample = days.weather
     span = None
     if "temp_air_min" in sample and "temp_air_max" in sample:
