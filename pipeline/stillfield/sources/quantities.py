@@ -143,29 +143,38 @@ def _placed(joined: Joined, step_hours: float) -> Joined:
     return Joined(joined.found, "middle", _shifted(joined.values, -step_hours / 2.0), joined.where)
 
 
-def sunshine(joined: Joined, step_hours: float, day_clock: str | None = None) -> tuple[xr.DataArray, list[str]]:
-    """Irradiation of days [MJ m-2] or irradiance of steps [W m-2] and what was assumed.
-
-    Parameters
-    ----------
-    joined : Joined
-        The sunshine as the files have it.
-    step_hours : float
-        [h]
-    day_clock : str, optional
-        Clock of the days of daily files (`own_days.clock_hours`).
+def sun_meaning(joined: Joined, step_hours: float) -> Meaning:
+    """What the sunshine of the files means; a few days of a few cells are looked at where their unit leaves it open.
 
     Raises
     ------
     WeatherError
         If unit, step and stated meaning contradict each other.
     """
-    placed = _placed(joined, step_hours)
     grows = None
     if step_hours < 24.0 and _kind(joined) == "energy":
         grows = grows_from_midnight(_sample(joined.values, step_hours), step_hours)
-    meaning = settle_meaning(joined.found, step_hours=step_hours, placed=placed.placed, grows=grows,
-                             where=joined.where)
+    return settle_meaning(joined.found, step_hours=step_hours, placed=_placed(joined, step_hours).placed, grows=grows,
+                          where=joined.where)
+
+
+def sunshine(
+    joined: Joined, meaning: Meaning, step_hours: float, day_clock: str | None = None
+) -> tuple[xr.DataArray, list[str]]:
+    """Irradiation of days [MJ m-2] or irradiance of steps [W m-2] and what was assumed.
+
+    Parameters
+    ----------
+    joined : Joined
+        The sunshine as the files have it.
+    meaning : Meaning
+        From `sun_meaning`.
+    step_hours : float
+        [h]
+    day_clock : str, optional
+        Clock of the days of daily files (`own_days.clock_hours`).
+    """
+    placed = _placed(joined, step_hours)
     values = differences(placed.values, step_hours) if meaning.accumulates else placed.values
     sun = _shifted(_scaled(values, meaning), meaning.shift_steps * step_hours)
     if meaning.of_daylight:

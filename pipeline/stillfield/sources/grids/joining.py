@@ -18,8 +18,8 @@ from stillfield.sources.grids.grid_axes import snapped
 from stillfield.sources.grids.netcdf_pieces import Piece
 
 #: Numbers that stand for "missing" in files that do not declare them.
-_SENTINELS = (-999.0, -9999.0)
-_IMPOSSIBLY_LARGE = 1e14
+SENTINELS = (-999.0, -9999.0)
+IMPOSSIBLY_LARGE = 1e14
 #: Numbers of a repeated record are the same when they agree to this share: single precision. [1]
 _SAME = 1e-6
 
@@ -148,8 +148,8 @@ def _masked(values: xr.DataArray, valid: tuple[float, float]) -> xr.DataArray:
 def _mask_block(block: NDArray[Any], *, valid: tuple[float, float]) -> NDArray[Any]:
     block = block if np.issubdtype(block.dtype, np.floating) else block.astype(np.float64)
     with np.errstate(invalid="ignore"):
-        bad = np.abs(block) >= _IMPOSSIBLY_LARGE
-        for sentinel in _SENTINELS:
+        bad = np.abs(block) >= IMPOSSIBLY_LARGE
+        for sentinel in SENTINELS:
             bad |= block == sentinel
         if np.isfinite(valid).any():
             bad |= (block < valid[0]) | (block > valid[1])

@@ -18,6 +18,7 @@ from stillfield.sources.grids.grid_axes import snapped
 from stillfield.sources.grids.joining import join_pieces
 from stillfield.sources.grids.netcdf_pieces import Piece
 from stillfield.sources.grids.netcdf_series import read_files
+from stillfield.sources.grids.stored_fields import stored_weather
 from stillfield.sources.locate import locate
 from stillfield.sources.quantities import (
     Joined,
@@ -26,6 +27,7 @@ from stillfield.sources.quantities import (
     mean_temperature,
     plain,
     step_hours_of,
+    sun_meaning,
     sunshine,
     wind,
 )
@@ -119,15 +121,18 @@ def weather_from_pieces(
     counts = {role: one.counts for role, one in joined.items()}
     daily = step_hours >= 24.0
     recognised = [one.found.told(daily=daily) for one in joined.values()]
-    sun, said = sunshine(joined.pop("sun"), step_hours, day_clock)
+    meaning = sun_meaning(joined["sun"], step_hours)
+    sun, said = sunshine(joined["sun"], meaning, step_hours, day_clock)
     weather = {"irradiation" if daily else "ghi": sun}
     notes += said
     for build in (plain, wind, mean_temperature, dew_point):
-        built, said = build(joined, step_hours)
+        built, said = build({role: one for role, one in joined.items() if role != "sun"}, step_hours)
         weather |= {name: values for name, values in built.items() if name not in weather}
         notes += said
     made = _assemble(weather, step_hours=step_hours, notes=notes, labels=labels, counts=counts)
-    return made.assign_attrs(recognised=recognised)
+    made = made.assign_attrs(recognised=recognised)
+    stored = stored_weather(made, pieces, joined, meaning, {name: one.indexes["time"] for name, one in weather.items()})
+    return made if stored is None else made.assign_attrs(stored=stored)
 
 
 def join_roles(pieces: Sequence[Piece]) -> tuple[dict[str, Joined], list[str]]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import warnings
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import prod
 from pathlib import Path
 from typing import Any
@@ -15,6 +15,7 @@ import xarray as xr
 
 from stillfield.errors import WeatherError
 from stillfield.sources.grids.grid_axes import Axes, clean_degrees, find_axes, latitude_order, longitude_order
+from stillfield.sources.grids.stored_building import StoredPiece, describe_piece, with_files
 from stillfield.sources.recognise import Choice, Found, recognise
 
 #: Coordinates of stations that are kept where a file has them.
@@ -41,6 +42,8 @@ class Piece:
         Sentences for the conventions.
     files : tuple of str
         All files, where several were opened as one; `path` is the first of them.
+    stored : StoredPiece or None
+        How the variable lies in its file, where that is plain.
     """
 
     found: Found
@@ -49,6 +52,7 @@ class Piece:
     values: xr.DataArray
     notes: tuple[str, ...]
     files: tuple[str, ...] = ()
+    stored: StoredPiece | None = None
 
 
 def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
@@ -73,10 +77,16 @@ def read_pieces(path: Path, choices: Mapping[str, Choice]) -> list[Piece]:
     """
     weather = open_one(path)
     try:
-        return take_pieces(weather, str(path), choices)
+        return [_in_file(piece, weather) for piece in take_pieces(weather, str(path), choices)]
     except BaseException:
         weather.close()  # a refused file must not stay open: it may be about to be replaced
         raise
+
+
+def _in_file(piece: Piece, weather: xr.Dataset) -> Piece:
+    """A piece of one NetCDF file, with the file among what is known of how it is stored."""
+    own = [(piece.path, piece.values.sizes["time"], weather.variables[piece.found.name].encoding)]
+    return replace(piece, stored=with_files(piece.stored, own, piece.values.attrs["valid_range"]))
 
 
 def take_pieces(weather: xr.Dataset, where: str, choices: Mapping[str, Choice]) -> list[Piece]:
@@ -171,7 +181,8 @@ def _piece(weather: xr.Dataset, axes: Axes, found: Found, where: str, notes: tup
     valid = _valid_range(weather.variables[found.name])
     values = values.assign_coords(time=("time", time)).assign_attrs(
         bounds_hours=hours, valid_range=valid, resolution=_resolution(weather.variables[found.name]))
-    return Piece(found, where, placed, values, notes + said)
+    stored = None if notes else describe_piece(found.name, weather, axes, time_dim)
+    return Piece(found, where, placed, values, notes + said, stored=stored)
 
 
 def _valid_range(variable: xr.Variable) -> tuple[float, float]:

@@ -18,12 +18,13 @@ import netCDF4
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
-from xarray.backends.locks import HDF5_LOCK, NETCDFC_LOCK, combine_locks
 from xarray.coding.times import decode_cf_datetime
 from xarray.conventions import decode_cf_variable
 
+from stillfield.sources.grids.chunk_index import ONE_READER
 from stillfield.sources.grids.file_proof import prove_whole
 from stillfield.sources.grids.netcdf_pieces import Piece, block_sizes, open_one, read_pieces, take_pieces
+from stillfield.sources.grids.stored_building import StoredPiece, with_files
 from stillfield.sources.recognise import Choice
 
 #: Attributes that may differ between files of one build: each file's own packing, and what only describes.
@@ -34,8 +35,6 @@ _RANGE = frozenset({"valid_range", "valid_min", "valid_max"})
 _CLOCK = frozenset({"units", "calendar"})
 #: Variables without time up to this many values must be the same in every file; larger ones in shape only.
 _COMPARED_VALUES = 20_000
-#: The lock under which xarray reads NetCDF: neither library below it bears two threads at once.
-_ONE_READER = combine_locks([NETCDFC_LOCK, HDF5_LOCK])
 
 
 @dataclass(frozen=True)
@@ -52,8 +51,8 @@ class _Header:
         Variable with the time bounds; empty where there is none.
     stamps, edges : ndarray
         Decoded; edges are None without bounds.
-    scales : mapping
-        Smallest step of each packed variable.
+    own : mapping
+        Packing and numbers for missing of each variable.
     """
 
     path: Path
@@ -62,7 +61,7 @@ class _Header:
     bounds: str
     stamps: NDArray[Any]
     edges: NDArray[Any] | None
-    scales: Mapping[str, float]
+    own: Mapping[str, Mapping[str, Any]]
 
 
 def read_files(paths: Sequence[Path], choices: Mapping[str, Choice]) -> list[Piece]:
@@ -116,7 +115,7 @@ def _one_after_another(headers: Sequence[_Header]) -> tuple[list[_Header], list[
 def _header(path: Path) -> _Header | None:
     """Header of a file; None where anything about it is unusual, and the full opening has to judge it."""
     try:
-        with _ONE_READER, netCDF4.Dataset(path) as file:
+        with ONE_READER, netCDF4.Dataset(path) as file:
             file.set_auto_maskandscale(False)
             file.set_auto_chartostring(False)
             return _described(path, file)
@@ -147,9 +146,9 @@ def _described(path: Path, file: netCDF4.Dataset) -> _Header | None:
         parts.append((name, variable.dimensions, str(variable.dtype), text, *packing, values))
     stamps, *rest = (_dates(one, said) for one in (raw, edges) if one is not None)
     parts += [str(said.get("calendar", "standard")), stamps.dtype]
-    scales = {name: abs(float(about["scale_factor"])) for name, about in attributes.items() if "scale_factor" in about}
+    packed = {name: {key: about[key] for key in _OWN & set(about)} for name, about in attributes.items()}
     return _Header(
-        path, tuple(parts), time, bounds if edges is not None else "", stamps, rest[0] if rest else None, scales
+        path, tuple(parts), time, bounds if edges is not None else "", stamps, rest[0] if rest else None, packed
     )
 
 
@@ -178,7 +177,13 @@ def _read_run(run: Sequence[_Header], choices: Mapping[str, Choice]) -> list[Pie
     except BaseException:
         first.close()
         raise
-    return [replace(piece, files=tuple(str(header.path) for header in run)) for piece in pieces]
+    return [replace(piece, files=tuple(str(header.path) for header in run), stored=_in_files(piece, run))
+            for piece in pieces]
+
+
+def _in_files(piece: Piece, run: Sequence[_Header]) -> StoredPiece | None:
+    own = [(str(header.path), header.stamps.size, header.own[piece.found.name]) for header in run]
+    return with_files(piece.stored, own, piece.values.attrs["valid_range"])
 
 
 def _along_time(first: xr.Dataset, run: Sequence[_Header]) -> xr.Dataset:
@@ -246,8 +251,8 @@ def _lazy(name: str, variable: xr.Variable, time: str, run: Sequence[_Header]) -
     data = da.map_blocks(_read_block, reader=_Held(reader), chunks=chunks, dtype=variable.dtype,
                          meta=np.empty((0,) * variable.ndim, variable.dtype), name=f"{name}-{uuid4().hex}")
     encoding = dict(variable.encoding)
-    if name in run[0].scales:
-        encoding["scale_factor"] = max(header.scales[name] for header in run)
+    if "scale_factor" in run[0].own[name]:
+        encoding["scale_factor"] = max(abs(float(header.own[name]["scale_factor"])) for header in run)
     return xr.Variable(variable.dims, data, variable.attrs, encoding)
 
 
@@ -287,7 +292,7 @@ def _share_out(files: Sequence[tuple[str, int]], longest: int) -> list[tuple[tup
 
 def _read_values(path: str, name: str, where: tuple[slice, ...]) -> NDArray[Any]:
     """Part of a variable, decoded as the full opening would."""
-    with _ONE_READER, netCDF4.Dataset(path) as file:
+    with ONE_READER, netCDF4.Dataset(path) as file:
         stored = file.variables[name]
         stored.set_auto_maskandscale(False)
         raw = xr.Variable(stored.dimensions, stored[where], dict(stored.__dict__))
