@@ -323,6 +323,17 @@ def test_what_is_not_plain_is_left_to_the_general_way(tmp_path, write):
     assert opened["irradiation"].notnull().any()
 
 
+@pytest.mark.parametrize("change", [lambda weather: weather, positive_longitude])
+def test_columns_in_another_order(tmp_path, change):
+    opened = open_netcdf(written(change(hourly()), tmp_path, **LAYOUTS["deflate"]), variables=STATED)
+    stored, order = opened.attrs["stored"], np.array([2, 3, 0])
+    other = stored.with_columns(order, stored.longitude[order] % 360.0)
+    np.testing.assert_array_equal(read(other, "temp_air")[0], read(stored, "temp_air")[0][:, :, order])
+    np.testing.assert_array_equal(read(other, "ghi", columns=slice(1, 3))[0],
+                                  read(stored, "ghi")[0][:, :, order[1:]])
+    assert stored.with_columns(np.array([3, 2, 1]), stored.longitude[1:]) is None
+
+
 def test_chunk_edges_follow_files_and_turned_axes(tmp_path):
     opened = open_netcdf(written(north_up(hourly()), tmp_path, parts=4, zlib=True, chunk=(10, 2, 3)), variables=STATED)
     records, rows, columns = opened.attrs["stored"].chunk_edges("temp_air")

@@ -7,7 +7,7 @@ opened. What they cannot tell has no such record, and is read the general way.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any, Literal
 
@@ -18,6 +18,8 @@ from numpy.typing import NDArray
 from stillfield.sources.settle import Settled
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER, Quantity
 
+#: An axis in more runs than this is not plain.
+_MOST_SPANS = 8
 Combination = Literal["plain", "speed", "mean", "difference"]
 
 
@@ -74,6 +76,26 @@ class Span:
         """First and end on the axis of the file."""
         last = self.start + (self.count - 1) * self.step
         return min(self.start, last), max(self.start, last) + 1
+
+
+def spans_of(places: NDArray[Any]) -> tuple[Span, ...] | None:
+    """Places on a file's axis as runs; None where they are too many.
+
+    Examples
+    --------
+    >>> spans_of(np.array([3, 2, 1, 7, 8]))
+    (Span(at=0, count=3, start=3, step=-1), Span(at=3, count=2, start=7, step=1))
+    """
+    spans: list[Span] = []
+    at = 0
+    steps = np.diff(places)
+    while at < places.size and len(spans) <= _MOST_SPANS:
+        step = int(steps[at]) if at < steps.size and abs(int(steps[at])) == 1 else 1
+        other = np.flatnonzero(steps[at:] != step)
+        count = (int(other[0]) if other.size else steps.size - at) + 1
+        spans.append(Span(at, count, int(places[at]), step))
+        at += count
+    return tuple(spans) if len(spans) <= _MOST_SPANS else None
 
 
 @dataclass(frozen=True)
@@ -235,6 +257,29 @@ class StoredWeather:
         """Numbers of records, rows and columns."""
         return len(self.time), self.latitude.size, self.longitude.size
 
+    def with_columns(self, places: NDArray[Any], longitude: NDArray[np.float64]) -> StoredWeather | None:
+        """The same weather on other columns, such as those of a box across the antimeridian side by side.
+
+        Parameters
+        ----------
+        places : ndarray of int
+            Which of the columns, in their new order.
+        longitude : ndarray
+            Their longitudes, of the same length. [deg east]
+
+        Returns
+        -------
+        StoredWeather or None
+            None where the columns are too scattered.
+        """
+        runs = spans_of(places)
+        if runs is None or any(run.step != 1 for run in runs):
+            return None
+        fields = {name: replace(field, variables=tuple(replace(one, columns=_chosen(one.columns, runs))
+                                                       for one in field.variables))
+                  for name, field in self.fields.items()}
+        return replace(self, fields=fields, longitude=np.asarray(longitude, dtype=np.float64))
+
     def chunk_edges(self, name: str) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.int64]]:
         """Where chunks meet, on the axes of this weather, ends included.
 
@@ -259,6 +304,12 @@ class StoredWeather:
                     found.update(edge for edge in _meeting(span, chunk) if 0 < edge < size)
         records, rows, columns = (np.array(sorted(found), dtype=np.int64) for found in edges)
         return records, rows, columns
+
+
+def _chosen(spans: tuple[Span, ...], runs: tuple[Span, ...]) -> tuple[Span, ...]:
+    """Spans on the axis that is made of these runs of the axis they lie on."""
+    parts = [(run, span.within(run.start, run.start + run.count)) for run in runs for span in spans]
+    return tuple(replace(part, at=part.at - run.start + run.at) for run, part in parts if part is not None)
 
 
 def _meeting(span: Span, chunk: int | None) -> list[int]:

@@ -17,10 +17,8 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.sources.grids.grid_axes import Axes, clean_degrees, latitude_order, longitude_order
-from stillfield.sources.grids.stored import Coding, Span, StoredFile, StoredVariable
+from stillfield.sources.grids.stored import Coding, Span, StoredFile, StoredVariable, spans_of
 
-#: An axis in more runs than this is not plain.
-_MOST_SPANS = 8
 Places = NDArray[np.intp]
 
 
@@ -167,26 +165,6 @@ def _found(own: pd.Index[Any], wanted: NDArray[Any]) -> Places | None:
     cell = float(np.abs(np.diff(own)).min()) if len(own) > 1 else 0.01
     places = own.get_indexer(pd.Index(wanted), method="nearest", tolerance=0.01 * cell)
     return None if (places < 0).any() else places
-
-
-def spans_of(places: NDArray[Any]) -> tuple[Span, ...] | None:
-    """Places on a file's axis as runs; None where they are too many.
-
-    Examples
-    --------
-    >>> spans_of(np.array([3, 2, 1, 7, 8]))
-    (Span(at=0, count=3, start=3, step=-1), Span(at=3, count=2, start=7, step=1))
-    """
-    spans: list[Span] = []
-    at = 0
-    steps = np.diff(places)
-    while at < places.size and len(spans) <= _MOST_SPANS:
-        step = int(steps[at]) if at < steps.size and abs(int(steps[at])) == 1 else 1
-        other = np.flatnonzero(steps[at:] != step)
-        count = (int(other[0]) if other.size else steps.size - at) + 1
-        spans.append(Span(at, count, int(places[at]), step))
-        at += count
-    return tuple(spans) if len(spans) <= _MOST_SPANS else None
 
 
 def _files(
