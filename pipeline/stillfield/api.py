@@ -26,7 +26,7 @@ from stillfield.sources import guess_kind
 from stillfield.sources.gates import gate
 from stillfield.sources.places import read_places
 from stillfield.stages.rank import rank_places
-from stillfield.stages.read import Box, Mask, Region, read_weather
+from stillfield.stages.read import Box, Mask, Region, mark_as_stored, read_weather
 from stillfield.vocabulary import STEP_HOURS_DAILY
 
 __all__ = ["Box", "Mask", "Region", "load_places", "load_still", "monthly_yield", "open_weather", "rank_places"]
@@ -64,7 +64,7 @@ def open_weather(
     """
     names = [str(files)] if isinstance(files, str | Path) else [str(name) for name in files]
     weather = read_weather(kind or guess_kind(names), names, region=region, **options)
-    return gate(weather, where=str(weather.attrs.get("files", "weather")))[0]
+    return mark_as_stored(gate(weather, where=str(weather.attrs.get("files", "weather")))[0])
 
 
 def load_still(still: str | Path) -> Still:

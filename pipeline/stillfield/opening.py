@@ -89,5 +89,6 @@ def open_run(settings: RunSettings) -> Opened:
     hourly = float(weather.attrs["step_hours"]) < STEP_HOURS_DAILY
     method = get_method(settings.method, hourly=hourly, fits_folder=fits_folder(settings))
     check_raster(weather)
-    means = Means(settings.compute.workers, settings.compute.memory, settings.compute.scheduler)
+    asked = settings.compute
+    means = Means(asked.workers, asked.memory, asked.scheduler, asked.fast_inflate)
     return Opened(folders, places, prepare(weather, method, stills=len(settings.stills), means=means))

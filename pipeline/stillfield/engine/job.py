@@ -17,6 +17,7 @@ from stillfield.engine.gathering import Gathering
 from stillfield.engine.planning import BlockPlan, Plan, plan_blocks, split_in_time
 from stillfield.engine.readers import LazyReader, Reader
 from stillfield.engine.steps import Counts
+from stillfield.engine.stored_reader import stored_reader
 from stillfield.errors import MethodError
 from stillfield.methods import Block, Cells, Method
 from stillfield.physics.rule import USUAL_EFFICIENCY, yield_from_efficiency
@@ -30,6 +31,8 @@ from stillfield.vocabulary import STEP_HOURS_DAILY
 
 Progress = Callable[[int, int], None]
 
+#: Attributes that only tell the engine how to read.
+_OF_OPENING = ("stored", "stored_graphs", "files")
 #: Cells whose weather is kept for the audit to choose from.
 AUDIT_CANDIDATES = 48
 
@@ -65,11 +68,14 @@ class Means:
         Memory that may be used; no limit without it. [bytes]
     scheduler : str or None
         Where the blocks are worked: in this process without it, else as `engine.cluster` takes it.
+    fast : bool
+        Whether to inflate chunks past the NetCDF library where that can be done.
     """
 
     workers: int | None = None
     memory_bytes: int | None = None
     scheduler: str | None = None
+    fast: bool = True
 
     @property
     def at_once(self) -> int:
@@ -161,7 +167,9 @@ def prepare(
     local = local_days(weather)
     names = names_for(method, weather)
     used = means or Means()
-    reader = LazyReader(_bare(weather, names), _inside(weather))
+    inside = _inside(weather)
+    reader: Reader = (stored_reader(weather, names, inside, fast=used.fast)
+                      or LazyReader(_bare(weather, names), inside))
     typical = weather.attrs.get("record") == "typical-year"
     months = Months.of(local.time, typical=typical)
     plan = plan_blocks(
@@ -176,6 +184,7 @@ def prepare(
 def _bare(weather: xr.Dataset, names: Sequence[str]) -> xr.Dataset:
     """Variables to read, with nothing beside them that would travel to workers."""
     kept = weather[list(names)]
+    kept.attrs = {key: value for key, value in kept.attrs.items() if key in ("step_hours", "files")}
     return kept.drop_vars([name for name in kept.coords if name not in kept.dims])
 
 
@@ -290,7 +299,9 @@ def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult], pr
             progress(done, len(prepared.plan.blocks))
     counted = _all_counts(prepared, gathering)
     said = [*prepared.weather.attrs.get("conventions", []), *sentences(counted)]
-    weather = prepared.weather.assign_attrs(counts=json.dumps(counted), conventions=list(dict.fromkeys(said)))
+    weather = prepared.weather.copy(deep=False)
+    weather.attrs = {key: value for key, value in weather.attrs.items() if key not in _OF_OPENING}
+    weather = weather.assign_attrs(counts=json.dumps(counted), conventions=list(dict.fromkeys(said)))
     space = space_of(weather)
     monthly = [
         aggregate(values, work.months, weather, space).assign_attrs(

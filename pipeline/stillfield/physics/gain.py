@@ -11,6 +11,7 @@ collapse into four numbers (`DayMoments`) and g follows in closed form. A table 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -87,7 +88,7 @@ def day_moments(still: Still, latitude: ArrayLike, day_of_year: ArrayLike) -> Da
     >>> moments.beam[:, 0, 0].round(2)
     array([0.86, 0.87, 0.88])
     """
-    point, weight = np.polynomial.legendre.leggauss(_QUADRATURE_POINTS)
+    point, weight = _quadrature()
     place = np.atleast_1d(np.asarray(latitude, dtype=float))
     phi = np.radians(place)
     delta = declination(np.atleast_1d(day_of_year))[:, None]
@@ -113,6 +114,12 @@ def day_moments(still: Still, latitude: ArrayLike, day_of_year: ArrayLike) -> Da
             if power == 1:
                 shape[some] = share.sum(axis=0)
     return DayMoments(beam.reshape(3, *sunset.shape), shape.reshape(sunset.shape), sunset)
+
+
+@lru_cache(maxsize=1)
+def _quadrature() -> tuple[Array, Array]:
+    """Points and weights of Gauss and Legendre."""
+    return np.polynomial.legendre.leggauss(_QUADRATURE_POINTS)
 
 
 def _sun_at(hour_angle: Array, phi: Array, delta: Array) -> SunSteps:

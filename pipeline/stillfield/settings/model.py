@@ -188,6 +188,10 @@ class Compute(Group):
         None, min_length=1, description="Address of a dask.distributed scheduler, such as tcp://host:8786, or "
                                         "'processes' for a cluster on this machine; without it, threads of the run"
     )
+    fast_inflate: bool = Field(
+        True, description="Inflate chunks of NetCDF files past the NetCDF library where that can be done; the results "
+                          "are the same"
+    )
 
 
 class Output(Group):

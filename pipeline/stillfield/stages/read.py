@@ -49,7 +49,29 @@ def read_weather(
     if region is not None:
         weather = keep_region(weather, Region(box=region) if isinstance(region, Box) else region)
     single = "site" not in weather.dims and weather.sizes["latitude"] == weather.sizes["longitude"] == 1
-    return _as_site(weather) if single else weather
+    return mark_as_stored(_as_site(weather) if single else weather)
+
+
+def mark_as_stored(weather: xr.Dataset) -> xr.Dataset:
+    """Note that lazy weather is what its files say it is, so that the engine may read them past it.
+
+    Only whoever cuts, joins or checks weather without changing what its values mean may note that. What is done
+    to a variable later gives it another graph, which `is_as_stored` sees.
+    """
+    if "stored" not in weather.attrs:
+        return weather
+    graphs = {str(name): _graph(values) for name, values in weather.data_vars.items()}
+    return weather.assign_attrs(stored_graphs=graphs)
+
+
+def is_as_stored(weather: xr.Dataset, names: Iterable[str]) -> bool:
+    """Whether variables are those that `mark_as_stored` has seen."""
+    graphs = weather.attrs.get("stored_graphs", {})
+    return all(graphs.get(name) is not None and graphs[name] == _graph(weather[name]) for name in names)
+
+
+def _graph(values: xr.DataArray) -> str | None:
+    return getattr(values.data, "name", None) if values.chunks is not None else None
 
 
 def _as_site(weather: xr.Dataset) -> xr.Dataset:
