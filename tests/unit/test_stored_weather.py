@@ -340,3 +340,9 @@ def test_chunk_edges_follow_files_and_turned_axes(tmp_path):
     assert records.tolist() == [0, 10, 20, 24, 34, 44, 48, 58, 68, 72, 82, 92, 96]
     assert rows.tolist() == [0, 1, 3]
     assert columns.tolist() == [0, 3, 4]
+
+
+def test_weather_without_chunks_may_be_cut_but_across_its_rows(tmp_path):
+    opened = open_netcdf(written(hourly(), tmp_path, format="NETCDF3_64BIT"), variables=STATED)
+    assert [one.tolist() for one in opened.attrs["stored"].chunk_edges("ghi")] == [
+        list(range(97)), [0, 1, 2, 3], [0, 4]]

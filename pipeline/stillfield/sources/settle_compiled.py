@@ -91,9 +91,14 @@ def _delivered(plane: Any, out: Any, top: int, runs: Any, place: Any) -> None:
         column, count, shift = runs[k]
         row = top + shift
         if 0 <= row < out.shape[0]:
+            line = out[row]
             for r in range(plane.size // width):
-                cell = first + r * n_columns + column
-                out[row, cell:cell + count] = plane[r * width + column:r * width + column + count]
+                start, cell = r * width + column, first + r * n_columns + column
+                if count < 16:  # a slice costs more than these
+                    for j in range(count):
+                        line[cell + j] = plane[start + j]
+                else:
+                    line[cell:cell + count] = plane[start:start + count]
 
 
 @register_jitable

@@ -84,16 +84,22 @@ def _chunks(file: int, path: str, index: ChunkIndex, slab: Slab) -> Iterator[tup
 
 
 def _pieces(file: int, path: str, index: ChunkIndex, slab: Slab) -> Iterator[tuple[NDArray[Any], tuple[int, ...]]]:
-    """Part of a variable that lies in the file as it is: whole planes of its first axis, then cut."""
-    plane = prod(index.shape[1:]) * index.dtype.itemsize
-    step = max(1, _PIECE_BYTES // plane)
-    cut = tuple(slice(low, high) for low, high in slab[1:])
-    start = int(index.starts.ravel()[0])
-    for low in range(*slab[0], step):
-        count = min(step, slab[0][1] - low)
-        stored = _stored_bytes(file, count * plane, start + low * plane, path)
-        values = np.frombuffer(stored, index.dtype).reshape(count, *index.shape[1:])
-        yield _native(values[(slice(None), *cut)]), (low, *(one[0] for one in slab[1:]))
+    """Part of a variable that lies in the file as it is: of each plane of its first axis the rows asked for, cut."""
+    (first, end), (low, high), *rest = slab
+    shape = index.shape[1:]
+    row = prod(shape[1:]) * index.dtype.itemsize
+    plane, begin = shape[0] * row, int(index.starts.ravel()[0]) + low * row
+    step = max(1, _PIECE_BYTES // ((high - low) * row))
+    cut = tuple(slice(*one) for one in rest)
+    for start in range(first, end, step):
+        count = min(step, end - start)
+        if high - low == shape[0]:
+            stored = _stored_bytes(file, count * plane, begin + start * plane, path)
+        else:
+            stored = b"".join(_stored_bytes(file, (high - low) * row, begin + i * plane, path)
+                              for i in range(start, start + count))
+        values = np.frombuffer(stored, index.dtype).reshape(count, high - low, *shape[1:])
+        yield _native(values[(slice(None), slice(None), *cut)]), (start, *(one[0] for one in slab[1:]))
 
 
 def _stored_bytes(file: int, size: int, start: int, path: str) -> bytes:

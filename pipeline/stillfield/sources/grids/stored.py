@@ -145,8 +145,10 @@ class StoredVariable:
                 yield file, part
 
     def chunk_of(self, axis: str) -> int | None:
-        """Length of a chunk along an axis; None where it is not chunked."""
-        return None if self.chunk is None else self.chunk[self.axes.index(axis)]
+        """Length along an axis of what is best read at once; None for all of it."""
+        if self.chunk is not None:
+            return self.chunk[self.axes.index(axis)]
+        return None if axis == [one for one in self.axes if one][-1] else 1
 
 
 @dataclass(frozen=True)
@@ -291,15 +293,15 @@ class StoredWeather:
         Returns
         -------
         records, rows, columns : ndarray of int
-            Ascending, from 0 to the length of the axis. An axis that is not chunked has edges at its ends only,
-            except that unchunked records and single files may be cut anywhere: time has an edge at each of them.
+            Ascending, from 0 to the length of the axis. Without chunks, values may be cut anywhere but along the last
+            axis of the file, on which they lie end to end.
         """
         edges: list[set[int]] = [{0, size} for size in self.shape]
         for variable in self.fields[name].variables:
             spans = (tuple(file.records for file in variable.files), variable.rows, variable.columns)
             for axis, found, size, parts in zip(("time", "latitude", "longitude"), edges, self.shape, spans,
                                                 strict=True):
-                chunk = variable.chunk_of(axis) or (1 if axis == "time" else None)
+                chunk = variable.chunk_of(axis)
                 for span in parts:
                     found.update(edge for edge in _meeting(span, chunk) if 0 < edge < size)
         records, rows, columns = (np.array(sorted(found), dtype=np.int64) for found in edges)
