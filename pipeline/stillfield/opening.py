@@ -43,7 +43,7 @@ class Opened:
 
 def fits_folder(settings: RunSettings) -> Path:
     """Folder in which fits of stills that are not shipped are kept."""
-    return Path(settings.output.folder) / "fits"
+    return Path(settings.output.folder).expanduser() / "fits"
 
 
 def region_of(keys: RegionKeys) -> Region:
@@ -77,6 +77,10 @@ def open_run(settings: RunSettings) -> Opened:
         settings.folder if len(settings.stills) == 1 else settings.folder / still.name for still in settings.stills
     )
     check_outputs(folders, land=None if settings.map.land is None else settings.map.land.path)
+    if settings.compute.scheduler is not None:
+        from stillfield.engine.cluster import check_scheduler
+
+        check_scheduler(settings.compute.scheduler)
     places = None
     if settings.places is not None:
         places = read_places(settings.places.table.path, settings.places.columns.given())
@@ -87,7 +91,7 @@ def open_run(settings: RunSettings) -> Opened:
     )
     log.info("%s", weather.attrs.get("origin", ""))
     hourly = float(weather.attrs["step_hours"]) < STEP_HOURS_DAILY
-    method = get_method(settings.method, hourly=hourly, fits_folder=fits_folder(settings))
+    method = get_method(settings.method, hourly=hourly, fits_folder=fits_folder(settings).absolute())
     check_raster(weather)
     asked = settings.compute
     means = Means(asked.workers, asked.memory, asked.scheduler, asked.fast_inflate)

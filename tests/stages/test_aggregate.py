@@ -123,7 +123,7 @@ def test_windows_and_parts_of_the_record_change_no_digit() -> None:
 
 
 def test_compiled_month_sums_are_those_of_numpy() -> None:
-    compiled = pytest.importorskip("stillfield.stages.month_sums_compiled").month_sums
+    compiled = pytest.importorskip("stillfield.engine.month_sums_compiled").month_sums
     random = np.random.default_rng(2)
     days = [random.random((70, 131)).astype(np.float32) for _ in range(4)]
     days[0][random.random((70, 131)) < 0.1] = np.nan

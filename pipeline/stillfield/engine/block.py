@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
-from functools import cached_property
+from functools import cached_property, lru_cache
+from importlib.util import find_spec
 from typing import Any
 
 import numpy as np
@@ -17,7 +18,7 @@ from stillfield.methods import WARM_UP_DAYS, Block, Cells, DailyYield, March, Me
 from stillfield.physics.still import Still
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.sources.gates import most_irradiation, refuse_sunshine
-from stillfield.stages.aggregate import Months, MonthSums
+from stillfield.stages.aggregate import Months, MonthSums, SumDays, month_sums
 from stillfield.stages.prepare import LocalDays, days_of_steps, irradiation_of_days
 
 Array = NDArray[np.floating[Any]]
@@ -202,7 +203,7 @@ class _Walk:
         finite = np.isfinite(sunshine)
         mine = self._counted(first_day, sunshine.shape[0])
         self.missing_days += max(mine.stop - mine.start, 0) - np.count_nonzero(finite[mine], axis=0)
-        self._set_out(finite.any(axis=0), first_day)
+        self._set_out(np.asarray(finite.any(axis=0)), first_day)
         for group in self.groups:
             self._advance(group, numbers, {name: values[:, group.cells] for name, values in taken.items()},
                           sunshine[:, group.cells], last=last)
@@ -280,7 +281,7 @@ class _Walk:
         days = slice(first + mine.start, first + mine.stop)
         flags = [flag[mine] if flag is not None and flag.any() else None for flag in (central.frost, central.outside)]
         group.sums[number].add(days.start, [central.litres[mine], low.litres[mine], high.litres[mine], sunshine[mine]],
-                               flags)
+                               flags, sum_days=_sum_days())
         for cell, litres in self.followed.items():
             at = np.flatnonzero(self.cells[group.cells] == cell)
             if at.size:
@@ -307,6 +308,16 @@ class _Walk:
             {cell: {name: np.concatenate(parts) for name, parts in kept.items()}
              for cell, kept in self.sampled.items()},
         )
+
+
+@lru_cache(maxsize=1)
+def _sum_days() -> SumDays:
+    """Month sums, compiled where numba is installed."""
+    if find_spec("numba") is None:
+        return month_sums
+    from stillfield.engine.month_sums_compiled import month_sums as compiled
+
+    return compiled
 
 
 def band_of(still: Still) -> tuple[str, str, str]:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from contextlib import contextmanager
+from dataclasses import replace
 from typing import TYPE_CHECKING, Any
 
 from stillfield.engine.block import BlockResult, Work, work_block
@@ -72,7 +73,8 @@ def work_on_cluster(work: Work, plan: Plan, *, scheduler: str) -> Iterator[Block
         from distributed.scheduler import KilledWorker
 
         # Every worker makes the shared part from its text, so no worker's death loses it.
-        shared = client.submit(cloudpickle.loads, cloudpickle.dumps(work), pure=False)
+        text = cloudpickle.dumps(replace(work, reader=work.reader.from_anywhere()))
+        shared = client.submit(cloudpickle.loads, text, pure=False)
         futures = [client.submit(_task, shared, block, retries=RETRIES, pure=False) for block in plan.blocks]
         try:
             for future in as_completed(futures):

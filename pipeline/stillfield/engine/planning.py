@@ -78,12 +78,12 @@ class BlockPlan:
     @property
     def cells(self) -> int:
         """Number of cells."""
-        return (self.rows.stop - self.rows.start) * (self.columns.stop - self.columns.start)
+        return int((self.rows.stop - self.rows.start) * (self.columns.stop - self.columns.start))
 
     @property
     def longest(self) -> int:
         """Records of the longest window."""
-        return max(window.stop - window.start for window in self.windows)
+        return int(max(window.stop - window.start for window in self.windows))
 
 
 @dataclass(frozen=True)

@@ -21,6 +21,10 @@ Array = NDArray[np.floating[Any]]
 class Reader(Protocol):
     """Where weather comes from; may be sent to another process."""
 
+    def from_anywhere(self) -> Reader:
+        """The same with whole paths, for workers in another folder."""
+        ...
+
     @property
     def where(self) -> str:
         """Names of the files, for messages."""
@@ -90,6 +94,10 @@ class LazyReader:
 
     weather: xr.Dataset
     inside: NDArray[np.bool_] | None = None
+
+    def from_anywhere(self) -> LazyReader:
+        """The same; a graph keeps the paths that it was made with."""
+        return self
 
     @property
     def where(self) -> str:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -44,6 +45,17 @@ class StoredReader:
     inside: NDArray[np.bool_] | None = None
     fast: bool = True
 
+    def from_anywhere(self) -> StoredReader:
+        """The same with whole paths, for workers in another folder."""
+        fields = {
+            name: replace(field, variables=tuple(
+                replace(variable, files=tuple(replace(file, path=str(Path(file.path).absolute()))
+                                              for file in variable.files))
+                for variable in field.variables))
+            for name, field in self.stored.fields.items()
+        }
+        return replace(self, stored=replace(self.stored, fields=fields))
+
     @property
     def where(self) -> str:
         """Names of the files, for messages."""
@@ -78,7 +90,9 @@ class StoredReader:
         asked = [slice(part.start + first, part.stop + first)
                  for part, first in zip((records, block.rows, block.columns), self.first, strict=True)]
         settled = self.stored.read(
-            name, *asked, out, at, None if self.inside is None else self.kept(block), fast=self.fast)
+            name, asked[0], asked[1], asked[2], out.view(np.float32), at,
+            None if self.inside is None else self.kept(block), fast=self.fast,
+        )
         return totals_of(settled, self.stored.quantity(name), lambda breach: self._label(asked, breach), self.where)
 
     def _label(self, asked: Sequence[slice], breach: Breach) -> str:

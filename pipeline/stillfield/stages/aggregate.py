@@ -7,9 +7,8 @@ sums are kept, and of the months of every year the one figure that the poor year
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
-from importlib.util import find_spec
 from typing import Any
 
 import numpy as np
@@ -19,6 +18,7 @@ from numpy.typing import NDArray
 from stillfield.vocabulary import YIELD
 
 Array = NDArray[np.floating[Any]]
+SumDays = Callable[[Sequence[Array], Sequence[NDArray[np.bool_] | None], NDArray[np.int64], Array], None]
 
 MONTHS = 12
 #: Share of years whose month is better than the poor-year month. [1]
@@ -139,7 +139,10 @@ class MonthSums:
                     sums[:, cells] = part.closed[number]
             self._close(first + number, sums)
 
-    def add(self, first_day: int, days: Sequence[Array], flags: Sequence[NDArray[np.bool_] | None]) -> None:
+    def add(
+        self, first_day: int, days: Sequence[Array], flags: Sequence[NDArray[np.bool_] | None],
+        *, sum_days: SumDays | None = None,
+    ) -> None:
         """Take in the next days.
 
         Parameters
@@ -150,6 +153,8 @@ class MonthSums:
             Central, low and high litres and irradiation. [L m-2], [MJ m-2]
         flags : sequence of ndarray of bool or None
             Frost, and outside the range of the method.
+        sum_days : callable, optional
+            `month_sums` or its compiled twin.
         """
         count = days[0].shape[0]
         if count == 0:
@@ -159,7 +164,7 @@ class MonthSums:
         started, carried = self._open
         sums = np.zeros((int(slot[-1]) - started + 1, *carried.shape))
         sums[0] = carried
-        _month_sums()(days, flags, slot - started, sums)
+        (sum_days or month_sums)(days, flags, slot - started, sums)
         ended = slot[-1] + (after == self.months.of_day.size or self.months.of_day[after] != slot[-1])
         for month in range(started, int(ended)):
             self._close(month, sums[month - started])
@@ -178,14 +183,6 @@ class MonthSums:
         self.totals[FROST:, row] += sums[FROST:COUNT] * enough
         self.used[row] += count * enough
         self.valid[row] += enough
-
-
-def _month_sums() -> Any:
-    if find_spec("numba") is None:
-        return month_sums
-    from stillfield.stages.month_sums_compiled import month_sums as compiled
-
-    return compiled
 
 
 def month_sums(
