@@ -228,7 +228,23 @@ class BalanceMarch:
 
 
 def shape_of(forcing: Forcing) -> tuple[int, ...]:
-    """Shape of all fields together."""
+    """Shape of all fields together.
+
+    Parameters
+    ----------
+    forcing : Forcing
+        What drives the still.
+
+    Returns
+    -------
+    tuple of int
+        As numpy broadcasts them.
+
+    Raises
+    ------
+    ValueError
+        Where the fields do not fit together.
+    """
     return np.broadcast_shapes(*(np.shape(values) for values in vars(forcing).values()))
 
 

@@ -35,18 +35,51 @@ CUBE_ROOT_GUESS = (-0.06970108, 0.79608679, 0.29604419, -0.02378867)
 
 
 def time_constant_days(still: Still) -> float:
-    """Days in which the water of `still` loses all but 1/e of a difference, at the slowest."""
+    """Days in which the water of `still` loses all but 1/e of a difference, at the slowest.
+
+    Parameters
+    ----------
+    still : Still
+        Design and condition.
+
+    Returns
+    -------
+    float
+        C / (U + `SLOW_TRANSFER_W_M2_K`), of fresh water. [days]
+    """
     capacity = float(basin_heat_capacity(still.brine_depth_m, 0.0, still.liner_heat_capacity_j_m2_k))
     return capacity / (SLOW_TRANSFER_W_M2_K + still.state.loss_w_m2_k) / 86400.0
 
 
 def start_up_days(still: Still) -> int:
-    """Days of start-up after which a basin has forgotten how it began."""
+    """Days of start-up after which a basin has forgotten how it began.
+
+    Parameters
+    ----------
+    still : Still
+        Design and condition.
+
+    Returns
+    -------
+    int
+        Five time constants and two days. [days]
+    """
     return 2 + ceil(5.0 * time_constant_days(still))
 
 
 def memory_days(still: Still) -> int:
-    """Days after a gap that are not to be trusted: none up to some 5 cm of water, 2 for 20 cm."""
+    """Days after a gap that are not to be trusted: none up to some 5 cm of water, 2 for 20 cm.
+
+    Parameters
+    ----------
+    still : Still
+        Design and condition.
+
+    Returns
+    -------
+    int
+        Three time constants, the first day left out. [days]
+    """
     return max(ceil(3.0 * time_constant_days(still)) - 1, 0)
 
 
@@ -149,7 +182,19 @@ def numbers(still: Still, pressure: float, seconds: float, absorbed_share: float
 
 
 def in_precision(constants: Numbers, dtype: np.dtype[Any]) -> Numbers:
-    """Constants as scalars of `dtype`; the flag stays as it is."""
+    """Constants as scalars of `dtype`; the flag stays as it is.
+
+    Parameters
+    ----------
+    constants : Numbers
+        From `numbers`.
+    dtype : dtype
+        The precision to work in.
+
+    Returns
+    -------
+    Numbers
+    """
     return Numbers(*(_as(part, dtype) for part in constants))
 
 

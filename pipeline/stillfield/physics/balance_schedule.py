@@ -39,6 +39,17 @@ class Walk(NamedTuple):
 def steps_before(day_start_hour: float, steps_per_day: int) -> int:
     """Steps of a calendar day before its yield day starts, rounded to whole steps.
 
+    Parameters
+    ----------
+    day_start_hour : float
+        Hour at which the yield day starts, from 0 to less than 24. [h]
+    steps_per_day : int
+        Steps of a day.
+
+    Returns
+    -------
+    int
+
     Raises
     ------
     MethodError

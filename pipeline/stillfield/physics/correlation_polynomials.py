@@ -10,7 +10,19 @@ from typing import Any
 
 
 def daily(x: Any, c: Any, out: Any, count: int) -> None:
-    """Variant 'daily'."""
+    """Variant 'daily'.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape (36,)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """
     (
         c_1, c_S, c_ST, c_SS, c_E, c_SN, c_SSw, c_Sm, c_K, c_n, c_SSS, c_STw, c_SST, c_STT, c_SE, c_m, c_TK, c_TE,
         c_Sw, c_Tn, c_SwE, c_Tm, c_Sww, c_SK, c_SwK, c_TTT, c_SKK, c_T, c_SEK, c_SEE, c_NN, c_SSE, c_TTw, c_w, c_STE,
@@ -33,7 +45,19 @@ def daily(x: Any, c: Any, out: Any, count: int) -> None:
 
 
 def daily_range(x: Any, c: Any, out: Any, count: int) -> None:
-    """Variant 'daily-range'."""
+    """Variant 'daily-range'.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape (44,)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """
     (
         c_1, c_S, c_ST, c_SS, c_E, c_SN, c_SSw, c_Sm, c_K, c_n, c_SSS, c_STw, c_SST, c_STT, c_SE, c_m, c_TK, c_TE,
         c_Sw, c_Tn, c_SwE, c_Tm, c_Sww, c_SK, c_SwK, c_TTT, c_SKK, c_T, c_SEK, c_SEE, c_NN, c_SSE, c_TTw, c_w, c_STE,
@@ -58,7 +82,19 @@ def daily_range(x: Any, c: Any, out: Any, count: int) -> None:
 
 
 def daily_humidity(x: Any, c: Any, out: Any, count: int) -> None:
-    """Variant 'daily-humidity'."""
+    """Variant 'daily-humidity'.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape (44,)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """
     (
         c_1, c_S, c_ST, c_SS, c_E, c_SN, c_SSw, c_Sm, c_K, c_n, c_SSS, c_STw, c_SST, c_STT, c_SE, c_m, c_TK, c_TE,
         c_Sw, c_Tn, c_SwE, c_Tm, c_Sww, c_SK, c_SwK, c_TTT, c_SKK, c_T, c_SEK, c_SEE, c_NN, c_SSE, c_TTw, c_w, c_STE,
@@ -82,7 +118,19 @@ def daily_humidity(x: Any, c: Any, out: Any, count: int) -> None:
 
 
 def daily_range_humidity(x: Any, c: Any, out: Any, count: int) -> None:
-    """Variant 'daily-range-humidity'."""
+    """Variant 'daily-range-humidity'.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape (52,)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """
     (
         c_1, c_S, c_ST, c_SS, c_E, c_SN, c_SSw, c_Sm, c_K, c_n, c_SSS, c_STw, c_SST, c_STT, c_SE, c_m, c_TK, c_TE,
         c_Sw, c_Tn, c_SwE, c_Tm, c_Sww, c_SK, c_SwK, c_TTT, c_SKK, c_T, c_SEK, c_SEE, c_NN, c_SSE, c_TTw, c_w, c_STE,
@@ -108,7 +156,19 @@ def daily_range_humidity(x: Any, c: Any, out: Any, count: int) -> None:
 
 
 def hourly(x: Any, c: Any, out: Any, count: int) -> None:
-    """Variant 'hourly'."""
+    """Variant 'hourly'.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape (56,)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """
     (
         c_1, c_S, c_ST, c_SS, c_SSP, c_E, c_SSw, c_q, c_Sm, c_SSS, c_SST, c_STk, c_STw, c_n, c_Sk, c_Sw, c_Sww, c_T,
         c_SSv, c_Swk, c_Tn, c_STT, c_Pk, c_m, c_SE, c_STP, c_D, c_wE, c_Tm, c_TTT, c_Tq, c_SSN, c_Twk, c_Tww, c_TP,
@@ -137,7 +197,19 @@ def hourly(x: Any, c: Any, out: Any, count: int) -> None:
 
 
 def frost(x: Any, c: Any, out: Any, count: int) -> None:
-    """Variant 'frost'."""
+    """Variant 'frost'.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape (9,)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """
     c_1, c_T, c_S, c_E, c_m, c_n, c_ST, c_N, c_w = (
         c[0], c[1], c[2], c[3], c[4], c[5], c[6], c[7], c[8],
     )

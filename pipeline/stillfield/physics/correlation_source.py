@@ -27,6 +27,20 @@ from __future__ import annotations
 from typing import Any
 '''
 
+_TOLD = '''    """Variant {name!r}.
+
+    Parameters
+    ----------
+    x : sequence of ndarray, each of shape (count, ...)
+        Scaled predictors; those without a term may be None. [1]
+    c : sequence of float, shape ({terms},)
+        Coefficients, in the unit of the result.
+    out : ndarray, shape (count, ...)
+        Filled with the sum of the terms.
+    count : int
+        How many numbers or rows to fill, from the first on.
+    """'''
+
 
 def source() -> str:
     """Write the module.
@@ -60,7 +74,19 @@ def function(name: str, terms: Sequence[str]) -> str:
     --------
     >>> print(function("small", ("1", "S", "ST")))
     def small(x: Any, c: Any, out: Any, count: int) -> None:
-        \"\"\"Variant 'small'.\"\"\"
+        \"\"\"Variant 'small'.
+    <BLANKLINE>
+        Parameters
+        ----------
+        x : sequence of ndarray, each of shape (count, ...)
+            Scaled predictors; those without a term may be None. [1]
+        c : sequence of float, shape (3,)
+            Coefficients, in the unit of the result.
+        out : ndarray, shape (count, ...)
+            Filled with the sum of the terms.
+        count : int
+            How many numbers or rows to fill, from the first on.
+        \"\"\"
         c_1, c_S, c_ST = (
             c[0], c[1], c[2],
         )
@@ -76,7 +102,7 @@ def function(name: str, terms: Sequence[str]) -> str:
     picked = ", ".join(f"x[{LETTERS.index(letter)}][i]" for letter in used) + ","
     return "\n".join([
         f"def {_identifier(name)}(x: Any, c: Any, out: Any, count: int) -> None:",
-        f'    """Variant {name!r}."""',
+        _TOLD.format(name=name, terms=len(terms)),
         *_assigned([f"c_{term}" for term in terms], ", ".join(f"c[{k}]" for k in range(len(terms))) + ",", 4),
         "    for i in range(count):",
         *_assigned(used, picked, 8),

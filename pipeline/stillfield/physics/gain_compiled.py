@@ -64,9 +64,22 @@ def _of_cells(table: Any, rows: Any, outside: Any, hours: Any, irradiation: Any,
 
 @register_jitable
 def look_up(gain: Any, day: Any, irradiation: Any, s: Any, k: Any, n: Any) -> None:
-    """Fill S, clearness and scaled day length of the cells of a day; `day` counts from 0.
+    """Fill S, clearness and scaled day length of the cells of a day.
 
-    `gain` comes from `gain_tables`.
+    Parameters
+    ----------
+    gain : tuple of ndarray
+        From `gain_tables`.
+    day : int
+        Day of the year, counted from 0.
+    irradiation : ndarray of float32, shape (cell,)
+        [MJ m-2]
+    s : ndarray of float32, shape (cell,)
+        Filled with the sunshine absorbed in the basin. [MJ m-2]
+    k : ndarray of float32, shape (cell,)
+        Filled with the clearness. [1]
+    n : ndarray of float32, shape (cell,)
+        Filled with the day length on the scale of the predictor N. [1]
     """
     table, outside, hours, runs, rows = gain
     for run in range(len(runs)):

@@ -18,6 +18,17 @@ def dryness(temp: Any, humidity: Any, out: Any, count: Any) -> None:
 
     The logarithm of the humidity is 8 times that of its 8th root, for which five terms of the series in
     (x - 1) / (x + 1) are enough: no call keeps the processor from taking several numbers at once.
+
+    Parameters
+    ----------
+    temp : ndarray of float32, shape (cell,)
+        Air temperature. [degC]
+    humidity : ndarray of float32, shape (cell,)
+        Relative humidity, held within 1 and 100. [%]
+    out : ndarray of float32, shape (cell,)
+        Filled with the difference. [K]
+    count : int
+        How many cells to fill, from the first on.
     """
     for i in range(count):
         share = humidity[i] * _LOWEST

@@ -129,7 +129,18 @@ def local_days(weather: xr.Dataset) -> LocalDays:
 
 
 def space_of(weather: xr.Dataset) -> tuple[str, ...]:
-    """Name the dimensions of space of weather, in the order in which cells are counted."""
+    """Name the dimensions of space of weather, in the order in which cells are counted.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        As described in `stillfield.sources.Source`.
+
+    Returns
+    -------
+    tuple of str
+        ('site',) or ('latitude', 'longitude').
+    """
     return ("site",) if "site" in weather.dims else ("latitude", "longitude")
 
 

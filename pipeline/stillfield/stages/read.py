@@ -57,6 +57,16 @@ def mark_as_stored(weather: xr.Dataset) -> xr.Dataset:
 
     Only whoever cuts, joins or checks weather without changing what its values mean may note that. What is done
     to a variable later gives it another graph, which `is_as_stored` sees.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        With attribute ``stored`` where its source says how it lies in its files.
+
+    Returns
+    -------
+    xarray.Dataset
+        With attribute ``stored_graphs``, the names of the graphs of its lazy variables; unchanged without ``stored``.
     """
     if "stored" not in weather.attrs:
         return weather
@@ -65,7 +75,20 @@ def mark_as_stored(weather: xr.Dataset) -> xr.Dataset:
 
 
 def is_as_stored(weather: xr.Dataset, names: Iterable[str]) -> bool:
-    """Whether variables are those that `mark_as_stored` has seen."""
+    """Whether variables are those that `mark_as_stored` has seen.
+
+    Parameters
+    ----------
+    weather : xarray.Dataset
+        Perhaps changed since.
+    names : iterable of str
+        The variables.
+
+    Returns
+    -------
+    bool
+        False where one is in memory, was changed, or was never marked.
+    """
     graphs = weather.attrs.get("stored_graphs", {})
     return all(graphs.get(name) is not None and graphs[name] == _graph(weather[name]) for name in names)
 
