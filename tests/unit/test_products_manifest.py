@@ -13,8 +13,11 @@ import xarray as xr
 from product_samples import monthly_grid, monthly_sites
 from stillfield.errors import OutputError
 from stillfield.products.manifest import (
+    PIECE_BYTES,
+    WHOLE_BYTES,
     digest_dataset,
     digest_file,
+    identity_of,
     software_versions,
     write_manifest,
 )
@@ -118,3 +121,25 @@ def test_versions_name_what_moves_a_result():
     versions = software_versions()
     assert {"python", "stillfield", "numpy", "xarray", "pvlib", "scipy"} <= set(versions)
     assert versions["numpy"] == np.__version__
+
+
+def test_large_files_are_told_apart_by_size_and_samples(tmp_path):
+    path = tmp_path / "large.nc"
+    size = WHOLE_BYTES + 5
+    with path.open("wb") as stream:
+        stream.truncate(size)
+    first = identity_of(path)
+    assert set(first) == {"sha256_of_samples", "bytes"}
+    assert first["bytes"] == size
+    for spot in (0, size - 1, size // 2, size - PIECE_BYTES):
+        with path.open("r+b") as stream:
+            stream.seek(spot)
+            stream.write(b"x")
+        assert identity_of(path) != first, spot
+        with path.open("r+b") as stream:
+            stream.seek(spot)
+            stream.write(b"\0")
+    assert identity_of(path) == first
+    with path.open("r+b") as stream:
+        stream.truncate(size + 1)
+    assert identity_of(path)["sha256_of_samples"] != first["sha256_of_samples"]

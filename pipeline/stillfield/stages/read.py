@@ -9,7 +9,7 @@ from typing import Any
 
 import xarray as xr
 
-from stillfield.products.manifest import digest_file, portable_name, size_of
+from stillfield.products.manifest import identity_of, portable_name
 from stillfield.sources import open_source
 from stillfield.sources.locate import locate
 from stillfield.sources.places import read_places
@@ -120,7 +120,7 @@ def describe_inputs(files: Iterable[str], base: Path) -> dict[str, dict[str, Any
     Returns
     -------
     dict
-        Name to ``{'sha256': str, 'bytes': int}``. Of absolute paths outside `base` only the end is told; equal
+        Name to `stillfield.products.manifest.identity_of`. Of absolute paths outside `base` only the end is told; equal
         ends are numbered.
     """
     found: dict[str, dict[str, Any]] = {}
@@ -131,7 +131,7 @@ def describe_inputs(files: Iterable[str], base: Path) -> dict[str, dict[str, Any
         while told in found:
             number += 1
             told = f"{shown} ({number})"
-        found[told] = {"sha256": digest_file(path), "bytes": size_of(path)}
+        found[told] = identity_of(path)
     return found
 
 
