@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from stillfield.errors import WeatherError
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.sources.calendars import solar_day_of_year
+from stillfield.sources.settle import NOISE_FLOOR, Breach, lowest_of, refuse_breach
 from stillfield.sources.tally import cell_counts, sentences, with_counts
 from stillfield.vocabulary import DAY_WEATHER, STEP_WEATHER, Quantity
 
@@ -27,13 +28,6 @@ Array = NDArray[np.floating[Any]]
 #: days cut at another hour than the sun's, and the last degrees before polar night.
 _MARGIN_FACTOR = 1.05
 _MARGIN_MJ = 0.6
-
-#: Mark of a number that stood for missing and was taken out: it travels as infinity, which no unit conversion
-#: touches, until the gates count it and make it missing.
-TAKEN_OUT = np.inf
-
-#: Negative sunshine up to this is instrument or packing noise and becomes 0.
-_NOISE_FLOOR = {"ghi": -20.0, "dni": -20.0, "dhi": -20.0, "irradiation": -0.5}
 
 
 @dataclass(frozen=True)
@@ -146,7 +140,7 @@ def _counted(weather: xr.Dataset, table: Mapping[str, Quantity]) -> xr.Dataset:
     counted = weather
     for name in (name for name in table if name in weather.data_vars and "time" in weather[name].dims):
         values = weather[name].transpose("time", ...)
-        kinds = ("missing", "sentinel", "clipped") if name in _NOISE_FLOOR else ("missing", "sentinel")
+        kinds = ("missing", "sentinel", "clipped") if name in NOISE_FLOOR else ("missing", "sentinel")
         rows = cell_counts(values, partial(_count_block, kinds=kinds), kinds)
         counted = with_counts(counted, name, {**rows, "values": values.sizes["time"]})
     return counted
@@ -166,20 +160,15 @@ def _check_bounds(values: xr.DataArray, quantity: Quantity, *, where: str) -> tu
     if np.isinf(data).any():
         data = np.where(np.isinf(data), data.dtype.type(np.nan), data)
         values = values.copy(data=data)
-    floor = _NOISE_FLOOR.get(quantity.name)
-    low = quantity.low if floor is None else floor
     with np.errstate(invalid="ignore"):
-        outside = (data < low) | (data > quantity.high)
-        negative = (data < 0.0) if floor is not None else np.zeros(1, dtype=bool)
+        outside = (data < lowest_of(quantity)) | (data > quantity.high)
+        negative = (data < 0.0) if quantity.name in NOISE_FLOOR else np.zeros(1, dtype=bool)
     if outside.any():
-        first = np.unravel_index(int(np.argmax(outside)), outside.shape)
-        raise WeatherError(
-            f"{quantity.name} cannot be true",
-            where=f"{where}, {_label(values, first)}",
-            got=f"{float(data[first]):g} {quantity.unit}; {int(outside.sum())} such values",
-            wanted=f"{low:g} to {quantity.high:g} {quantity.unit}",
-            cure="Check the units and the number that marks missing values.",
-        )
+        spot = int(np.argmax(outside))
+        first = np.unravel_index(spot, outside.shape)
+        record, cell = divmod(spot, outside[0].size)
+        refuse_breach(Breach(record, cell, float(data[first]), int(outside.sum())), quantity,
+                      where=f"{where}, {_label(values, first)}")
     clipped = int(negative.sum())
     return (values.clip(min=0.0, keep_attrs=True) if clipped else values), clipped
 

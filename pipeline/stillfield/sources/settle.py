@@ -15,9 +15,13 @@ from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
 from stillfield.physics.compiling import Engine, is_compiled
-from stillfield.sources.gates import _NOISE_FLOOR as NOISE_FLOOR
 from stillfield.vocabulary import Quantity
 
+#: Mark of a number that stood for missing and was taken out: it travels as infinity, which no unit conversion
+#: touches, until it is counted and made missing.
+TAKEN_OUT = np.inf
+#: Negative sunshine up to this is instrument or packing noise and becomes 0.
+NOISE_FLOOR = {"ghi": -20.0, "dni": -20.0, "dhi": -20.0, "irradiation": -0.5}
 #: Kinds of count (`stillfield.sources.tally`).
 KINDS = ("missing", "clipped", "sentinel")
 #: One number per cell holds the three counts, so that a loop over cells writes one array: missing values from bit
@@ -84,12 +88,15 @@ class Numbers(NamedTuple):
     instead: float = np.nan
 
 
+def lowest_of(quantity: Quantity) -> float:
+    """The lowest value that is let pass: noise below zero is, where it is put right."""
+    return NOISE_FLOOR.get(quantity.name, quantity.low)
+
+
 def bounded(numbers: Numbers, quantity: Quantity) -> Numbers:
     """Numbers with the bounds of a quantity."""
-    floor = NOISE_FLOOR.get(quantity.name)
-    if floor is None:
-        return numbers._replace(floor=quantity.low, dip=quantity.low, high=quantity.high)
-    return numbers._replace(floor=floor, dip=0.0, high=quantity.high)
+    dip = 0.0 if quantity.name in NOISE_FLOOR else quantity.low
+    return numbers._replace(floor=lowest_of(quantity), dip=dip, high=quantity.high)
 
 
 def settle(
@@ -101,7 +108,7 @@ def settle(
     Parameters
     ----------
     values : ndarray of float, shape (records, n_rows, n_columns)
-        NaN where missing, infinite where taken out (`gates.TAKEN_OUT`).
+        NaN where missing, infinite where taken out (`TAKEN_OUT`).
     quantity : Quantity
         Of `vocabulary.DAY_WEATHER` or `vocabulary.STEP_WEATHER`.
     out : ndarray of float32, shape (buffer_rows, n_rows * n_columns)
@@ -141,12 +148,11 @@ def refuse_breach(breach: Breach, quantity: Quantity, *, where: str) -> None:
     WeatherError
         Always.
     """
-    low = NOISE_FLOOR.get(quantity.name, quantity.low)
     raise WeatherError(
         f"{quantity.name} cannot be true",
         where=where,
         got=f"{breach.value:g} {quantity.unit}; {breach.number} such values",
-        wanted=f"{low:g} to {quantity.high:g} {quantity.unit}",
+        wanted=f"{lowest_of(quantity):g} to {quantity.high:g} {quantity.unit}",
         cure="Check the units and the number that marks missing values.",
     )
 

@@ -13,9 +13,9 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.errors import WeatherError
-from stillfield.sources.gates import TAKEN_OUT
 from stillfield.sources.grids.grid_axes import snapped
 from stillfield.sources.grids.netcdf_pieces import Piece
+from stillfield.sources.settle import TAKEN_OUT
 
 #: Numbers that stand for "missing" in files that do not declare them.
 SENTINELS = (-999.0, -9999.0)

@@ -1,7 +1,7 @@
 """Gridded or station weather in CF NetCDF files, daily or sub-daily, opened lazily.
 
 Only headers, coordinates and a few days of a few cells are read here. The weather is read when it is computed;
-numbers that stood for missing travel as `gates.TAKEN_OUT` until the gates count them.
+numbers that stood for missing travel as `settle.TAKEN_OUT` until they are counted.
 """
 
 from __future__ import annotations
