@@ -2,12 +2,17 @@
 
 from __future__ import annotations
 
+import json
+
 import numpy as np
 import pandas as pd
 import pytest
 
+from stillfield.api import monthly_yield
 from stillfield.errors import UnitsError, WeatherError
+from stillfield.physics.still import Panel, Still
 from stillfield.sources import open_source
+from stillfield.sources.gates import gate
 from typical_year_samples import clear_sky
 
 SITE = {"latitude_deg": 12.0, "longitude_deg": 45.0, "elevation_m": 15.0}
@@ -275,13 +280,28 @@ def test_all_faults_are_told_with_their_lines(tmp_path):
         (lambda lines: [lines[0].replace("irradiation (MJ/m2/d)", "x"), *lines[1:]], {}, WeatherError,
          r"no sunshine was recognised.*radiation_from_temperature"),
         (lambda lines: [line.replace("18.5", "1850") for line in lines], {}, WeatherError,
-         "irradiation cannot be true"),
+         r"t\.csv, time 2013-01-06T00:00, site t: irradiation cannot be true \(got 1\.85e\+06 MJ m-2; 1 such values"),
     ],
 )  # fmt: skip
 def test_tables_that_cannot_be_right_are_refused(tmp_path, change, options, error, message):
     path = written(tmp_path, change(daily()))
     with pytest.raises(error, match=message):
-        opened(path, table={"site": SITE}, **options).compute()
+        opened(path, table={"site": SITE}, **options)
+
+
+def test_what_is_put_right_is_counted_once(tmp_path):
+    lines = daily()
+    lines[2], lines[5] = lines[2].replace("18.1000", "-0.0100"), lines[5].replace("18.4000", "")
+    weather = opened(written(tmp_path, lines), table={"site": SITE})
+    assert weather.irradiation.values[[1, 4], 0].tolist() == pytest.approx([0.0, np.nan], nan_ok=True)
+    for again in (weather, gate(weather)[0]):
+        months = monthly_yield(again, Still("flat", (Panel(1.0, 0.0),)), method="rule")
+        counted = json.loads(months.attrs["counts"])["irradiation"]
+        assert {kind: counted[kind] for kind in ("clipped", "missing", "values")} == {
+            "clipped": 1, "missing": 1, "values": 10}
+        told = [line for line in months.attrs["conventions"] if "values of irradiation" in line]
+        assert told == ["1 of 10 values of irradiation were slightly negative and set to 0.",
+                        "1 of 10 values of irradiation are missing."]
 
 
 def test_a_row_that_comes_twice_alike_counts_once(tmp_path):

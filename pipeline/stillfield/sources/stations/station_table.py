@@ -16,6 +16,7 @@ import pandas as pd
 import xarray as xr
 
 from stillfield.errors import Fault, WeatherError
+from stillfield.sources.gates import gate
 from stillfield.sources.grids.netcdf import weather_from_pieces
 from stillfield.sources.grids.netcdf_pieces import take_pieces
 from stillfield.sources.locate import locate
@@ -94,12 +95,14 @@ def open_station_table(
     Returns
     -------
     xarray.Dataset
-        Dims time and site; daily tables with ``clock`` 'own-days', finer ones 'local-standard' or 'UTC'.
+        Dims time and site, in memory, held against its bounds and counted; daily tables with ``clock`` 'own-days',
+        finer ones 'local-standard' or 'UTC'.
 
     Raises
     ------
     WeatherError
-        If a column, position or clock is missing, or cells are no numbers or dates: all at once, by line.
+        If a column, position or clock is missing, or cells are no numbers or dates: all at once, by line. If a value
+        cannot be true: the first, by station and time.
     UnitsError
         If a unit is missing, unknown or of the wrong kind.
     """
@@ -112,6 +115,7 @@ def open_station_table(
     made = weather_from_pieces(pieces, stations.choices, labels=labels, available=lambda: stations.headings,
                                radiation_from_temperature=radiation_from_temperature, day_clock="local")
     said = [line for line in made.attrs["conventions"] if " is read as " not in line]
+    made = gate(made.compute(), where=made.attrs["files"])[0]  # tables are in memory as it is
     return made.assign_attrs(conventions=[*stations.notes, *notes, *said], recognised=stations.recognised)
 
 
