@@ -301,7 +301,7 @@ def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult], pr
     said = [*prepared.weather.attrs.get("conventions", []), *sentences(counted)]
     weather = prepared.weather.copy(deep=False)
     weather.attrs = {key: value for key, value in weather.attrs.items() if key not in _OF_OPENING}
-    weather = weather.assign_attrs(counts=json.dumps(counted), conventions=list(dict.fromkeys(said)))
+    weather = weather.assign_attrs(counts=json.dumps(counted, sort_keys=True), conventions=list(dict.fromkeys(said)))
     space = space_of(weather)
     monthly = [
         aggregate(values, work.months, weather, space).assign_attrs(
