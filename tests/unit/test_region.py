@@ -10,10 +10,14 @@ import pytest
 import xarray as xr
 
 from gridded_samples import whole
+from stillfield.engine.job import Missing, months_of, prepare
+from stillfield.engine.readers import LazyReader, Reader
+from stillfield.engine.stored_reader import StoredReader
 from stillfield.errors import WeatherError
+from stillfield.methods.registry import get_method
+from stillfield.physics.still import Panel, Still
 from stillfield.sources.grids.netcdf import open_netcdf
 from stillfield.sources.region import Box, Mask, Region, keep_region
-from stillfield.sources.tally import totals
 from stillfield.stages.read import read_weather
 
 
@@ -29,6 +33,18 @@ def globe(step: float = 10.0, rows: tuple[float, ...] = (-15.0, -5.0, 5.0, 15.0)
 @pytest.fixture
 def weather(tmp_path: Path) -> xr.Dataset:
     return open_netcdf(whole(globe(), tmp_path))
+
+
+def worked(weather: xr.Dataset) -> tuple[Reader, xr.Dataset]:
+    """How weather is read by a run, and the months of the constant-efficiency rule."""
+    prepared = prepare(weather, get_method("rule"))
+    found = months_of(prepared, [Still("flat", (Panel(1.0, 0.0),))], missing=Missing(min_valid_days_share=0.05))
+    return prepared.reader, found.monthly[0]
+
+
+def counted(weather: xr.Dataset) -> dict[str, int]:
+    """What a run counts of the irradiation."""
+    return json.loads(worked(weather)[1].attrs["counts"])["irradiation"]
 
 
 def polygon_file(path: Path, *rings: list[tuple[float, float]]) -> Path:
@@ -57,8 +73,7 @@ def test_a_box_in_any_longitudes_gives_columns_that_run_eastward(weather, west, 
     assert cut.latitude.values.tolist() == [-5.0, 5.0]
     wanted = (np.array(columns, dtype=float) + 180.0) % 360.0 / 18.0
     np.testing.assert_allclose(cut.irradiation.isel(time=0, latitude=0), wanted)
-    counted = totals(cut["count"].values, cut["counts"].values)
-    assert counted["irradiation"]["values"] == 2 * 2 * len(columns)
+    assert counted(cut)["values"] == 2 * 2 * len(columns)
 
 
 def test_a_box_beside_the_weather_is_refused(weather):
@@ -74,12 +89,15 @@ def test_cells_whose_centre_lies_in_a_polygon_are_kept_and_the_others_count_noth
     assert cut.longitude.values.tolist() == [20.0, 30.0]
     assert cut.irradiation.isel(time=0).notnull().values.tolist() == [[True, True], [True, False]]
     assert "3 of 144 cells have their centre inside area.geojson; the others are left out." in cut.attrs["conventions"]
-    counted = totals(cut["count"].values, cut["counts"].values)["irradiation"]
-    assert (counted["values"], counted["missing"]) == (2 * 3, 0)
+    found = counted(cut)
+    assert (found["values"], found.get("missing", 0)) == (2 * 3, 0)
+
+
+ACROSS = [(165.0, -8.0), (195.0, -8.0), (195.0, 8.0), (165.0, 8.0)]
 
 
 @pytest.mark.parametrize("ring", [
-    [(165.0, -8.0), (195.0, -8.0), (195.0, 8.0), (165.0, 8.0)],
+    ACROSS,
     [(-195.0, -8.0), (-165.0, -8.0), (-165.0, 8.0), (-195.0, 8.0)],
 ])  # fmt: skip
 def test_a_polygon_across_the_antimeridian_is_one_block(weather, tmp_path, ring):
@@ -93,6 +111,29 @@ def test_two_polygons_on_either_side_of_the_antimeridian_are_one_block(weather, 
                         [(-180.0, -8.0), (-165.0, -8.0), (-165.0, 8.0), (-180.0, 8.0)])
     cut = keep_region(weather, Region(polygon=path))
     assert cut.longitude.values[[0, -1]].tolist() == [170.0, 190.0]
+
+
+@pytest.mark.parametrize("kind", ["box", "polygon", "box and polygon"])
+@pytest.mark.parametrize("order", ["0 to 360", "-180 to 180"])
+def test_weather_across_the_antimeridian_is_read_past_xarray(tmp_path, kind, order):
+    """The reader of plain files finds the columns that the region put side by side, and the months are the same."""
+    world = globe() if order == "0 to 360" else globe().assign_coords(lon=np.arange(-180.0, 180.0, 10.0))
+    if order == "-180 to 180":
+        world["rsds"] = world.rsds.copy(data=np.roll(world.rsds.values, 18, axis=2))
+    area = polygon_file(tmp_path / "area.geojson", ACROSS) if "polygon" in kind else None
+    box = Box(-10.0, 10.0, 165.0 if kind == "box" else 155.0, -165.0) if "box" in kind else None
+    weather = read_weather("netcdf", whole(world, tmp_path), region=Region(box, area))
+    assert weather.longitude.values.tolist() == [170.0, 180.0, 190.0]
+    np.testing.assert_allclose(weather.irradiation.isel(time=0, latitude=0), [350 / 18, 0.0, 10 / 18])
+    plain = weather.assign_attrs(stored=None)
+    (stored, months), (lazy, others) = worked(weather), worked(plain)
+    assert (type(stored), type(lazy)) == (StoredReader, LazyReader)
+    march = months.monthly_yield.sel(month=3)
+    assert march.notnull().all()
+    assert march.isel(latitude=0).values.argsort().tolist() == [1, 2, 0]
+    for name in ("monthly_yield", "annual_yield", "days_used"):
+        np.testing.assert_allclose(months[name], others[name], rtol=1e-6)
+    assert months.attrs["counts"] == others.attrs["counts"]
 
 
 def test_polygons_that_cannot_be_used_are_refused(weather, tmp_path):

@@ -127,10 +127,23 @@ def _columns(weather: xr.Dataset, columns: NDArray[np.intp]) -> xr.Dataset:
     """Columns of a grid in an order that runs eastward, longitudes continuous from the first on."""
     if columns.size == 0:
         return weather.isel(longitude=columns)
-    cut = weather.isel(longitude=slice(columns[0], columns[-1] + 1) if (np.diff(columns) == 1).all() else columns)
+    together = bool((np.diff(columns) == 1).all())
+    cut = weather.isel(longitude=slice(columns[0], columns[-1] + 1) if together else columns)
     longitude = cut["longitude"].values
-    running = longitude[0] + (longitude - longitude[0]) % _TURN
-    return cut.assign_coords(longitude=("longitude", clean_degrees(running), weather["longitude"].attrs))
+    running = clean_degrees(longitude[0] + (longitude - longitude[0]) % _TURN)
+    cut = cut.assign_coords(longitude=("longitude", running, weather["longitude"].attrs))
+    return cut if together else _stored_alike(cut)
+
+
+def _stored_alike(weather: xr.Dataset) -> xr.Dataset:
+    """Put what tells where the weather lies in its files on the columns of the weather, whose order is new."""
+    stored = weather.attrs.get("stored")
+    if stored is None:
+        return weather
+    longitude = weather["longitude"].values
+    places = _nearest(stored.longitude, longitude, "longitude", where=stored.where)
+    other = stored.with_columns(places, longitude)
+    return weather if other is None else weather.assign_attrs(stored=other)
 
 
 def run_on(weather: xr.Dataset) -> tuple[xr.Dataset, list[str]]:
