@@ -46,7 +46,7 @@ _NO_FLAGS = np.zeros((0, 0), dtype=np.bool_)
 
 def month_sums(
     days: Sequence[NDArray[Any]], flags: Sequence[NDArray[np.bool_] | None], slot: NDArray[np.int64],
-    out: NDArray[np.float64],
+    out: NDArray[np.floating[Any]],
 ) -> None:
     """Add days to the sums of their months; see `stillfield.stages.aggregate.month_sums`."""
     kind = np.result_type(*days)
