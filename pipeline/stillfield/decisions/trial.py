@@ -319,7 +319,7 @@ def block_length(memory: float, days: int, *, basin_memory: float = 0.0) -> int:
     Examples
     --------
     >>> block_length(0.0, 60), block_length(0.5, 60), block_length(0.0, 60, basin_memory=0.44)
-    (1, 6, 3)
+    (1, 5, 3)
     """
     best = (np.sqrt(6.0) * memory / (1.0 - memory**2)) ** (2.0 / 3.0) * days ** (1.0 / 3.0)
     forgets = np.log(0.1) / np.log(basin_memory) if basin_memory > 0.0 else 1.0

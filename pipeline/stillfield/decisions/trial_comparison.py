@@ -36,7 +36,7 @@ LEAST_PAIRED_DAYS = 10
 LEAST_PAIRED_SHARE = 0.5
 #: More days than these are not asked for. [1]
 MOST_MORE_DAYS = 3650
-_LONGER = np.geomspace(1.0, 1e4, 4001)
+_LONGER = np.geomspace(1.0, 1e4, 601)
 
 
 @dataclass(frozen=True)
@@ -207,22 +207,26 @@ def compare_stills(
     chance, freedom = _paired_error(first, second, ratios) if paired else _error_apart(*ratios)
     if same_weather is None:
         same_weather = (float(np.concatenate([first.modelled, second.modelled]).mean()),) * 2
-    adjusted = [float(ratio.factor) * mean for ratio, mean in zip(ratios, same_weather, strict=True)]
-    raw = [float(one.measured.mean()) for one in (first, second)]
     correction = np.log(same_weather[0] / first.modelled.mean()) - np.log(same_weather[1] / second.modelled.mean())
     allowance = weather_error * abs(float(correction)) / float(student.ppf(0.5 + level / 2.0, np.inf))
     error = float(np.hypot(chance, allowance))
-    whole_freedom = freedom * (error / chance) ** 4 if chance > 0.0 else np.inf
-    half = float(student.ppf(0.5 + level / 2.0, whole_freedom)) * error
-    factor_ratio, ratio = float(ratios[0].factor / ratios[1].factor), adjusted[0] / adjusted[1]
-    low, high = ratio * np.exp(-half), ratio * np.exp(half)
+    # Welch's formula again; the allowance is no estimate from days and has no degrees of freedom to lose.
+    freedom_of_all = freedom * (error / chance) ** 4
+    stretch = float(np.exp(student.ppf(0.5 + level / 2.0, freedom_of_all) * error))
+    factor_ratio = float(ratios[0].factor / ratios[1].factor)
+    ratio = factor_ratio * same_weather[0] / same_weather[1]
     longer = _visible(_LONGER, (chance, allowance, freedom), level)
+    days = max(first.day.size, second.day.size)
     return Comparison(
-        first.name, second.name, bool(paired), first.day.size, second.day.size, *raw, *adjusted, raw[0] / raw[1],
-        factor_ratio, factor_ratio * float(np.exp(-half)), factor_ratio * float(np.exp(half)), ratio, float(low),
-        float(high), level, error, float(whole_freedom), allowance, _verdict(float(low), float(high)),
-        float(longer[0]),
-        tuple(Settling(one, _more_days(one, longer, max(first.day.size, second.day.size))) for one in differences),
+        first=first.name, second=second.name, paired=bool(paired), days_first=first.day.size,
+        days_second=second.day.size, raw_first=float(first.measured.mean()), raw_second=float(second.measured.mean()),
+        adjusted_first=float(ratios[0].factor) * same_weather[0],
+        adjusted_second=float(ratios[1].factor) * same_weather[1],
+        raw_ratio=float(first.measured.mean() / second.measured.mean()), factor_ratio=factor_ratio,
+        factor_low=factor_ratio / stretch, factor_high=factor_ratio * stretch, ratio=ratio, low=ratio / stretch,
+        high=ratio * stretch, level=level, log_error=error, freedom=freedom_of_all, allowance=allowance,
+        verdict=_verdict(ratio / stretch, ratio * stretch), visible_difference=float(longer[0]),
+        settling=tuple(Settling(one, _more_days(one, longer, days)) for one in differences),
     )
 
 

@@ -17,6 +17,8 @@ Weight = Literal["refused", "warned", "told"]
 #: 2.257 MJ kg-1). [MJ kg-1]
 LEAST_LATENT_HEAT_MJ_KG = 2.257
 
+_MOST_ROWS_TOLD = 12
+
 
 @dataclass(frozen=True)
 class TrialRules:
@@ -73,10 +75,11 @@ class Finding:
     rows: tuple[int, ...] = ()
 
     def __str__(self) -> str:
-        """Sentence with the rows, the first dozen of them."""
+        """Sentence with the rows, the first of them."""
         if not self.rows:
             return self.message
-        shown = ", ".join(map(str, self.rows[:12])) + (f" and {len(self.rows) - 12} more" if len(self.rows) > 12 else "")
+        rest = len(self.rows) - _MOST_ROWS_TOLD
+        shown = ", ".join(map(str, self.rows[:_MOST_ROWS_TOLD])) + (f" and {rest} more" if rest > 0 else "")
         return f"{self.message} (row{'s' if len(self.rows) > 1 else ''} {shown})"
 
 
