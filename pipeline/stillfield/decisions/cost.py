@@ -15,7 +15,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
-from typing import Any, Literal
+from typing import Literal
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -78,11 +78,11 @@ class Part:
     def __post_init__(self) -> None:
         """Refuse impossible numbers."""
         prices, lives = self.price(), self.life()
-        _hold(0.0 <= prices["low"] <= prices["central"] <= prices["high"] < np.inf,
+        require(0.0 <= prices["low"] <= prices["central"] <= prices["high"] < np.inf,
               f"price of '{self.name}'", prices, "0 <= low <= price <= high")
-        _hold(0.0 < lives["low"] <= lives["central"] <= lives["high"], f"life of '{self.name}'", lives,
+        require(0.0 < lives["low"] <= lives["central"] <= lives["high"], f"life of '{self.name}'", lives,
               "0 < low <= life <= high")
-        _hold(0.0 <= self.salvage_share <= 1.0, f"salvage share of '{self.name}'", self.salvage_share, "0 to 1")
+        require(0.0 <= self.salvage_share <= 1.0, f"salvage share of '{self.name}'", self.salvage_share, "0 to 1")
 
     def price(self) -> Mapping[End, float]:
         """Price by its ends. [money m-2]."""
@@ -136,13 +136,13 @@ class StillCost:
 
     def __post_init__(self) -> None:
         """Refuse impossible numbers."""
-        _hold(len(self.parts) > 0, "parts of a still's cost", "none", "at least one part")
+        require(len(self.parts) > 0, "parts of a still's cost", "none", "at least one part")
         for name in ("interest", "maintenance_share", "maintenance_per_m2_year", "electricity_wh_m2_day",
                      "electricity_price_per_kwh"):
             value = getattr(self, name)
-            _hold(0.0 <= value < np.inf, name, value, "0 or more")
-        _hold(0.0 < self.availability <= 1.0, "availability", self.availability, "above 0 to 1")
-        _hold(0.0 < self.unit_area_m2 < np.inf, "unit_area_m2", self.unit_area_m2, "above 0")
+            require(0.0 <= value < np.inf, name, value, "0 or more")
+        require(0.0 < self.availability <= 1.0, "availability", self.availability, "above 0 to 1")
+        require(0.0 < self.unit_area_m2 < np.inf, "unit_area_m2", self.unit_area_m2, "above 0")
 
 
 @dataclass(frozen=True)
@@ -219,8 +219,8 @@ def sinking_fund_factor(interest: ArrayLike, years: ArrayLike) -> Array:
     0.06903
     """
     rate, life = np.broadcast_arrays(np.asarray(interest, np.float64), np.asarray(years, np.float64))
-    _hold(bool(np.all((rate >= 0.0) & np.isfinite(rate))), "interest", rate, "0 or more")
-    _hold(bool(np.all(life > 0.0)), "life in years", life, "above 0")
+    require(bool(np.all((rate >= 0.0) & np.isfinite(rate))), "interest", rate, "0 or more")
+    require(bool(np.all(life > 0.0)), "life in years", life, "above 0")
     some = np.where(rate > 0.0, rate, 1.0)
     with np.errstate(over="ignore"):
         # expm1 and log1p keep their digits where interest is close to nothing.
@@ -357,7 +357,25 @@ def _ends(low: float | None, central: float, high: float | None) -> Mapping[End,
     })
 
 
-def _hold(holds: bool, what: str, got: Any, wanted: str) -> None:
+def require(holds: bool, what: str, got: object, wanted: str) -> None:
+    """Refuse a number that cannot be, unless it `holds`.
+
+    Parameters
+    ----------
+    holds : bool
+        Whether it may stand.
+    what : str
+        Its name.
+    got : object
+        What was found.
+    wanted : str
+        What may stand there.
+
+    Raises
+    ------
+    StillfieldError
+        Where it does not hold.
+    """
     if not holds:
         shown = dict(got) if isinstance(got, Mapping) else got
         raise StillfieldError(f"{what} is impossible", got=shown, wanted=wanted)
