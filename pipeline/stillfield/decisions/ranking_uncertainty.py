@@ -15,13 +15,14 @@ from math import isfinite
 import numpy as np
 from numpy.typing import NDArray
 
+from stillfield.decisions.need import DAYS_OF_MONTHS
 from stillfield.decisions.ranking_score import Criterion
 from stillfield.errors import PlacesError
 
 Floats = NDArray[np.float64]
 
-#: Mean lengths of the Gregorian months. [d]
-DAYS_IN_MONTH = (31.0, 28.2425, 31.0, 30.0, 31.0, 30.0, 31.0, 31.0, 30.0, 31.0, 30.0, 31.0)
+#: Below this many years of record their spread is uncertain itself (common practice, no source).
+FEW_YEARS = 10
 
 
 @dataclass(frozen=True)
@@ -247,7 +248,7 @@ class MonthlyYields:
     low: Floats | None = None
     high: Floats | None = None
     need: Floats | None = None
-    days_in_month: Sequence[float] = DAYS_IN_MONTH
+    days_in_month: Sequence[float] = DAYS_OF_MONTHS
 
     def __post_init__(self) -> None:
         shape = self.by_year.shape
@@ -295,7 +296,7 @@ def yield_draws(
     --------
     Three years of a steady place, nothing but the years varied, and years that are all alike:
 
-    >>> months = np.array(DAYS_IN_MONTH)[:, np.newaxis] * 4.0
+    >>> months = np.array(DAYS_OF_MONTHS)[:, np.newaxis] * 4.0
     >>> only_years = Uncertainty(draws=5, model=False, condition=False)
     >>> drawn = yield_draws(["a"], MonthlyYields(np.stack([months] * 3)), only_years)
     >>> drawn.drawn.round(9).ravel().tolist()
@@ -360,7 +361,7 @@ def _notes(yields: MonthlyYields, uncertainty: Uncertainty) -> tuple[str, ...]:
     count = len(yields.by_year)
     if uncertainty.years and count == 1:
         notes.append("only one year of weather is known, so the years add nothing to the uncertainty")
-    elif uncertainty.years and count < 10:
+    elif uncertainty.years and count < FEW_YEARS:
         notes.append(f"only {count} years of weather are known; their spread is uncertain itself")
     if uncertainty.condition and yields.low is None:
         notes.append("no band of the still's condition is known, so the condition adds nothing to the uncertainty")
