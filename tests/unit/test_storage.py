@@ -76,8 +76,8 @@ def test_days_without_need_are_met():
 def test_published_table_of_the_sequent_peak():
     """Flows 1 3 3 5 8 6 7 2 1 and a release of 3.5 need 7.5, run twice over.
 
-    Loucks & van Beek, Water Resource Systems Planning and Management, sequent peak table; quoted from memory,
-    and the column of deficits is worked out by hand there: 2.5 3 3.5 2 0 0 0 1.5 4 | 6.5 7 7.5 6 1.5 0 0 1.5 4.
+    Loucks & van Beek, Water Resource Systems Planning and Management, sequent peak table; quoted from memory.
+    The deficits by hand: 2.5 3 3.5 2 0 0 0 1.5 4 | 6.5 7 7.5 6 1.5 0 0 1.5 4.
     """
     series = day_series(np.array([[1.0], [3.0], [3.0], [5.0], [8.0], [6.0], [7.0], [2.0], [1.0]]), 3.5)
     assert sequent_peak(series, area_m2=1.0, cyclic=True) == pytest.approx(7.5)

@@ -93,8 +93,8 @@ def day_series(daily_yield: ArrayLike, need_l: ArrayLike) -> DaySeries:
         )
     known = np.isfinite(yields) & np.isfinite(need)
     # One layout in memory whatever came in: sums run in the same order, so places do not change each other's digits.
-    settled = (np.ascontiguousarray(np.where(known, values, 0.0)) for values in (yields, need))
-    return DaySeries(*settled, np.ascontiguousarray(known))
+    yields, need = (np.ascontiguousarray(np.where(known, values, 0.0)) for values in (yields, need))
+    return DaySeries(yields, need, np.ascontiguousarray(known))
 
 
 @dataclass(frozen=True)
