@@ -295,7 +295,7 @@ def _words(place: PlaceRank, ranked: int, others: Sequence[str], simulated: Simu
     if place.rank_low != place.rank_high:
         rank += f" ({place.rank_low} to {place.rank_high})"
     if simulated is not None and place.top_probability is not None and top < ranked:
-        seats = "the first place" if top == 1 else f"the first {top}"
+        seats = "first" if top == 1 else f"among the first {top}"
         rank += f", {seats} in {100 * place.top_probability:.0f} of 100 draws"
     sentences = [f"{rank}."]
     if others:

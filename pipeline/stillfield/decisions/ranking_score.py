@@ -161,7 +161,7 @@ class ScaleUsed:
             f"first, {'logarithmic' if criterion.scale == 'log' else 'linear'} from {self.low:.4g} to "
             f"{self.high:.4g}{unit} ({ends})"
         )
-        if self.weight_share < 1:
+        if self.weight_share < 0.995:
             return f"{text}; counts {self.weight_share:.2g} of its weight, so little do the places differ"
         return text
 
@@ -260,13 +260,15 @@ def _ends(values: Floats, criterion: Criterion) -> tuple[Floats, Floats, Floats]
     high = np.where(finite, values, -np.inf).max(axis=-1, initial=-np.inf)
     some = high >= low
     low, high = np.where(some, low, np.nan), np.where(some, high, np.nan)
-    at_an_end = (~np.isnan(values) & ~finite).any(axis=-1) & some
+    # Values without a place on the scale stand at its ends: zeros of a logarithm below, infinite ones either side.
+    below = (~np.isnan(values) & ~finite & (values <= 0)).any(axis=-1) & some
+    above = np.isposinf(values).any(axis=-1) & some
     size = np.where(some, np.maximum(np.abs(low), np.abs(high)), 1.0)
     relative = np.where(some, high - low, 0.0) / np.where(size > 0, size, 1.0)
     same = relative <= SAME_WITHIN
-    # One finite value beside zeros of a logarithm or infinities still tells them apart: any step beyond it does.
-    low = np.where(at_an_end & same, low / 10.0 if criterion.scale == "log" else low - 1.0, low)
-    high = np.where(at_an_end & same, high * 10.0 if criterion.scale == "log" else high + 1.0, high)
+    # A single finite value is told apart from those: any step away from it makes the scale.
+    low = np.where(below & same, low / 10.0 if criterion.scale == "log" else low - 1.0, low)
+    high = np.where(above & same, high * 10.0 if criterion.scale == "log" else high + 1.0, high)
     if criterion.full_weight_span == 0:
         share = np.ones_like(relative)
     elif criterion.scale == "log":
@@ -274,7 +276,7 @@ def _ends(values: Floats, criterion: Criterion) -> tuple[Floats, Floats, Floats]
         share = -np.log1p(-np.minimum(relative, 0.999)) / np.log1p(criterion.full_weight_span)
     else:
         share = relative / criterion.full_weight_span
-    return low, high, np.where(at_an_end, 1.0, np.where(same, 0.0, np.minimum(share, 1.0)))
+    return low, high, np.where(below | above, 1.0, np.where(same, 0.0, np.minimum(share, 1.0)))
 
 
 def weighted_scores(columns: Columns, criteria: Sequence[Criterion], weights: Floats) -> tuple[Floats, Floats]:

@@ -413,5 +413,6 @@ def inversely(central: Floats, yields: YieldDraws) -> Floats:
         ``central * yields.central / yields.drawn``; infinite where a draw yields nothing.
     """
     none = yields.drawn <= 0
-    drawn = np.where(none, 1.0, yields.drawn)
-    return np.where(none, np.inf, np.asarray(central) * yields.central / drawn)
+    # A place that never yields has an infinite cost already, which times its yield of 0 would be nothing known.
+    product = np.where(yields.central > 0, central, 0.0) * yields.central
+    return np.where(none, np.inf, product / np.where(none, 1.0, yields.drawn))
