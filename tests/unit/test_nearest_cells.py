@@ -42,11 +42,11 @@ def test_arcs_of_known_length(a, b, degrees):
 
 
 def test_the_order_of_cells_does_not_matter_even_where_two_are_equally_near():
-    north, east = cell_centres([10.0, 11.0], [179.5, 180.5])
+    north, east = cell_centres([-0.5, 0.5], [179.5, 180.5])
     for order in (np.arange(4), np.arange(4)[::-1], np.array([2, 0, 3, 1])):
-        found = nearest_cells([10.5, 10.0], [-180.0, 180.0], north[order], east[order], np.ones(4, bool))
+        found = nearest_cells([0.0, -0.5], [-180.0, 180.0], north[order], east[order], np.ones(4, bool))
         chosen = order[found.cell]
-        assert north[chosen].tolist() == [10.0, 10.0]
+        assert north[chosen].tolist() == [-0.5, -0.5]
         assert east[chosen].tolist() == [179.5, 179.5]
 
 
