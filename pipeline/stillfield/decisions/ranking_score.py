@@ -99,7 +99,8 @@ class Criterion:
         How values become 0..1. A zero on a logarithmic scale stands at its lower end.
     limits : (float, float), optional
         Values that stand for the two ends; values beyond them count as the ends. Without limits the ends are
-        the least and the greatest finite value of the places that are ranked.
+        the least and the greatest finite value of the places that are ranked. A criterion that is the same
+        everywhere decides nothing: without limits it is left out, with limits it moves every score alike.
     unit : str
         Unit of the column, for words.
     full_weight_span : float
