@@ -36,7 +36,7 @@ PAYS = "pays"
 PAYS_NOT = "does not pay"
 CANNOT_TELL = "cannot tell"
 
-#: Ratio of the litres of two stills at one site as far as the model knows it: 10 to 15 % (see DEVELOPERS.md). [1]
+#: Ratio of the litres of two stills at one site as far as the model knows it: 10 to 15 % (see README.md). [1]
 USUAL_RATIO_UNCERTAINTY = 0.15
 
 
