@@ -202,6 +202,9 @@ def test_spell_below_the_mean_takes_each_day_by_its_own_month():
     daily[43] = np.nan
     found = spell_below_month_mean(daily, month)
     assert (int(found.days), int(found.start), int(found.days_at_most)) == (3, 40, 7)
+    # Days all alike are not below their mean, though the mean of 0.1 taken in sums is a little off.
+    alike = np.concatenate([np.full((60, 1), value) for value in (0.1, 0.7, 1.1, 2.3)], axis=1)
+    assert spell_below_month_mean(alike, month).days.tolist() == [0, 0, 0, 0]
     empty = spell_below_month_mean(np.full((60, 2), np.nan), month)
     assert empty.days.tolist() == [0, 0]
     assert empty.days_at_most.tolist() == [60, 60]

@@ -48,6 +48,13 @@ def test_every_tank_runs_as_by_hand(carried_over):
             assert run.end_l[place, column] == pytest.approx(left, abs=1e-9)
 
 
+def test_carried_over_means_one_year_from_a_full_tank():
+    """A tank of 500 L that loses 1 L a day starts with 500 - 365 L and lasts 135 of the 800 days."""
+    series = day_series(np.full((800, 1), 9.0), 10.0)
+    assert run_tank(series, area_m2=1.0, tank_l=500.0).share_of_days == pytest.approx(500 / 800)
+    assert run_tank(series, area_m2=1.0, tank_l=500.0, carried_over=True).share_of_days == pytest.approx(135 / 800)
+
+
 def test_missing_days_stand_still_and_are_not_counted():
     gappy = day_series([[3.0], [np.nan], [np.nan], [1.0]], 10.0)
     dense = day_series([[3.0], [1.0]], 10.0)
