@@ -83,6 +83,11 @@ def day_series(daily_yield: ArrayLike, need_l: ArrayLike) -> DaySeries:
     ------
     DecisionError
         For a negative value or another shape.
+
+    Examples
+    --------
+    >>> day_series([[4.0, 3.0], [np.nan, 2.0]], 20.0).days.tolist()
+    [1, 2]
     """
     yields, need = np.asarray(daily_yield, dtype=np.float64), np.asarray(need_l, dtype=np.float64)
     fits = yields.ndim == 2 and need.ndim in {0, 2} and yields.shape[0] > 0
@@ -167,7 +172,13 @@ def by_place_and_tank(series: DaySeries, area_m2: ArrayLike, tank_l: ArrayLike) 
     Raises
     ------
     DecisionError
-        If one is negative, or a tank is not a number.
+        If one is negative or not finite.
+
+    Examples
+    --------
+    >>> area, tank = by_place_and_tank(day_series([[4.0, 3.0]], 20.0), 5.0, [0.0, 10.0])
+    >>> tank.tolist()
+    [[0.0, 10.0], [0.0, 10.0]]
     """
     area, tank = np.broadcast_arrays(np.asarray(area_m2, dtype=np.float64), np.asarray(tank_l, dtype=np.float64))
     if area.ndim > 2 or not (np.isfinite(area) & (area >= 0.0) & np.isfinite(tank) & (tank >= 0.0)).all():
@@ -193,6 +204,12 @@ def walk(series: DaySeries, area: Array, tank: Array, *, carried_over: bool = Fa
     -------
     short_days, short_l, end_l : ndarray, shape (place, tank)
         Known days short of need, litres short, and litres stored at the end. [d], [L], [L]
+
+    Examples
+    --------
+    >>> series = day_series([[4.0], [1.0]], 20.0)
+    >>> [value.tolist() for value in walk(series, *by_place_and_tank(series, 5.0, 10.0))]
+    [[[1]], [[5.0]], [[0.0]]]
     """
     start = _walk(series.last(WARM_UP_DAYS), area, tank, tank)[2] if carried_over else tank
     return _walk(series, area, tank, start)

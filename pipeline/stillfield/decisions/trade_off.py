@@ -207,6 +207,13 @@ def curve_of(trade_off: TradeOff, place: int) -> tuple[CurvePoint, ...]:
     Returns
     -------
     tuple of CurvePoint
+
+    Examples
+    --------
+    >>> from stillfield.decisions.storage import day_series
+    >>> found = smallest_areas(day_series([[4.0], [1.0]], 20.0), tank_l=[0.0, 20.0], share_of_days=1.0)
+    >>> [(point.tank_l, round(point.area_m2, 1)) for point in curve_of(found, 0)]
+    [(0.0, 20.0), (20.0, 4.0)]
     """
     columns = (
         trade_off.tank_l, trade_off.area_m2, trade_off.share_of_days, trade_off.share_of_volume,
@@ -298,6 +305,14 @@ def knee_point(trade_off: TradeOff, *, within: float = KNEE_WITHIN) -> ChosenPoi
     ------
     DecisionError
         For a negative share.
+
+    Examples
+    --------
+    >>> from stillfield.decisions.storage import day_series
+    >>> series = day_series([[4.0], [1.0], [1.0], [4.0]], 20.0)
+    >>> found = smallest_areas(series, tank_l=[0.0, 24.0, 25.0], share_of_days=1.0)
+    >>> knee_point(found, within=0.1).tank_l.tolist()
+    [24.0]
     """
     if not 0.0 <= within < np.inf:
         raise DecisionError("share of the knee cannot be", where="storage", got=within, wanted="0 or more")
