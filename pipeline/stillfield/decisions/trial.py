@@ -41,6 +41,9 @@ LEAST_FREEDOM = 1.5
 HUBER_BEND = 1.345
 #: Standard deviation of a normal variable over its median absolute deviation. [1]
 MAD_TO_SD = 1.4826
+#: By how much the factor of one season may differ in others, with probability `LEVEL`: ratios between months are known
+#: to 10 to 15 %. A choice of this project. [1]
+SEASON_ERROR = 0.15
 _HUBER_ROUNDS = 30
 #: Residuals are taken as this far from the factor at least, lest exact data divide by nothing. [1]
 _LEAST_SPREAD = 1e-9
@@ -148,6 +151,37 @@ class FieldFactor:
         if not self.source.strip():
             raise DecisionError("a field factor does not tell its source", where="still_field_factor.source",
                                   cure="Name the trial it comes from.")
+
+
+def factor_for_runs(estimate: FactorEstimate, source: str, *, one_season: bool) -> FieldFactor:
+    """Field factor as a run file takes it, rounded to three decimals.
+
+    Parameters
+    ----------
+    estimate : FactorEstimate
+        What the trial found.
+    source : str
+        The trial in a few words.
+    one_season : bool
+        Whether the trial tells of one season only; the interval is then widened by `SEASON_ERROR`.
+
+    Returns
+    -------
+    FieldFactor
+
+    Examples
+    --------
+    >>> day = np.arange(30)
+    >>> found = field_factor(0.8 * (4.0 + 0.3 * np.sin(day)), 4.0 + 0.3 * np.cos(day), day)
+    >>> wide, plain = (factor_for_runs(found, "a month in one yard", one_season=one) for one in (True, False))
+    >>> wide.low < plain.low < plain.value < plain.high < wide.high
+    True
+    """
+    allowance = np.log1p(SEASON_ERROR) if one_season else 0.0
+    down, up = (float(np.exp(np.hypot(abs(np.log(bound / estimate.factor)), allowance)))
+                for bound in (estimate.low, estimate.high))
+    low, value, high = (round(estimate.factor * stretch, 3) for stretch in (1.0 / down, 1.0, up))
+    return FieldFactor(value, low, high, source)
 
 
 def apply_field_factor(litres: ArrayLike, factor: FieldFactor) -> tuple[Array, Array, Array]:
