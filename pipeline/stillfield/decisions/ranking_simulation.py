@@ -15,8 +15,8 @@ from stillfield.errors import PlacesError
 #: The rank interval runs between these shares of the simulated ranks.
 INTERVAL = (0.05, 0.95)
 
-#: Simulated scores that are held at a time.
-_SCORES_AT_A_TIME = 1_000_000
+#: Simulated scores that are worked at a time, few enough to stay in the processor's cache.
+_SCORES_AT_A_TIME = 100_000
 
 
 @dataclass(frozen=True)

@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from hashlib import blake2b
+from itertools import product
 from math import isfinite
 
 import numpy as np
@@ -23,6 +24,9 @@ Floats = NDArray[np.float64]
 
 #: Below this many years of record their spread is uncertain itself (common practice, no source).
 FEW_YEARS = 10
+
+#: Drawn yields that are worked at a time, few enough to stay in the processor's cache.
+_YIELDS_AT_A_TIME = 50_000
 
 
 @dataclass(frozen=True)
@@ -304,7 +308,7 @@ def yield_draws(
     """
     if len(ids) != yields.by_year.shape[2] or len(set(ids)) < len(ids):
         raise PlacesError("ids do not fit the yields", got=len(ids), wanted=f"{yields.by_year.shape[2]} different ids")
-    # Matrix products may round a column by where it stands, so all work is done in the order of the ids.
+    # Work in the order of the ids leaves no trace of the order of the input, not in the last digit either.
     canonical = np.array(sorted(range(len(ids)), key=lambda place: ids[place]), dtype=np.int64)
     back = np.argsort(canonical)
     ordered = _in_order(yields, canonical)
@@ -347,12 +351,15 @@ def _drawn_sizing(yields: MonthlyYields, ids: Sequence[str], uncertainty: Uncert
     shares = year_shares(len(yields.by_year), uncertainty)
     positions = band_positions(ids, uncertainty)
     drawn = np.full((uncertainty.draws, len(ids)), np.inf)
-    for month in range(12):
-        litres = _resampled(yields.by_year[:, month], shares, mean[month])
+    step = max(1, _YIELDS_AT_A_TIME // max(len(ids), 1))
+    for start, month in product(range(0, uncertainty.draws, step), range(12)):
+        part = slice(start, start + step)
+        litres = _resampled(yields.by_year[:, month], shares[part], mean[month])
         if yields.low is not None and yields.high is not None and uncertainty.condition:
             ends = (_ratio(band[month], mean[month]) for band in (yields.low, yields.high))
-            litres = litres * _within_band(positions, *ends)
-        drawn = np.minimum(drawn, _for_need(litres, need[month], yields.days_in_month[month]))
+            litres = litres * _within_band(positions[part], *ends)
+        for_need = _for_need(litres, need[month], yields.days_in_month[month])
+        np.minimum(drawn[part], for_need, out=drawn[part])
     return drawn
 
 
@@ -378,11 +385,16 @@ def _mean_over_years(by_year: Floats) -> Floats:
 def _resampled(by_year: Floats, shares: Floats, mean: Floats) -> Floats:
     """Mean (draw, place) over resampled years; the mean of all where a draw holds no year with the month."""
     known = ~np.isnan(by_year)
-    total = shares @ np.where(known, by_year, 0.0)
+    total = _over_years(shares, np.where(known, by_year, 0.0))
     if known.all():
-        return np.asarray(total)
-    weight = shares @ known.astype(float)
+        return total
+    weight = _over_years(shares, known.astype(float))
     return np.where(weight > 0, total / np.where(weight > 0, weight, 1.0), mean)
+
+
+def _over_years(shares: Floats, by_year: Floats) -> Floats:
+    """Product of matrices without threads, whose number could change the last digit and slows such small ones."""
+    return np.asarray(np.einsum("dy,yp->dp", shares, by_year, optimize=False))
 
 
 def _ratio(end: Floats, mean: Floats) -> Floats:
