@@ -116,13 +116,7 @@ def build_parser() -> argparse.ArgumentParser:
     fit.add_argument("still_files", metavar="STILL.yaml", nargs="+", help="still files")
     fit.add_argument("--into", metavar="FILE", help="keep the fits in FILE, beside those it holds")
 
-    trial = commands.add_parser(
-        "trial", help="set measured litres against modelled ones and compare stills", allow_abbrev=False,
-        description="From a log of measured litres and the weather of its days: the field factor of every still with "
-        "its interval, and which of two stills is better with the weather taken out.",
-    )
-    trial.add_argument("trial_file", metavar="TRIAL.yaml", help="the trial file")
-    trial.add_argument("--output", metavar="FOLDER", help="put the results under FOLDER, whatever the trial file says")
+    _add_trial(commands)
 
     evidence = commands.add_parser(
         "evidence", help="set what is known from outside beside what stillfield computes", allow_abbrev=False,
@@ -140,6 +134,16 @@ def build_parser() -> argparse.ArgumentParser:
     schema.add_argument("kind", nargs="?", choices=("run", "still", "trial"), default="run",
                         help="which file (default: run)")
     return parser
+
+
+def _add_trial(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    trial = commands.add_parser(
+        "trial", help="set measured litres against modelled ones and compare stills", allow_abbrev=False,
+        description="From a log of measured litres and the weather of its days: the field factor of every still with "
+        "its interval, and which of two stills is better with the weather taken out.",
+    )
+    trial.add_argument("trial_file", metavar="TRIAL.yaml", help="the trial file")
+    trial.add_argument("--output", metavar="FOLDER", help="put the results under FOLDER, whatever the trial file says")
 
 
 def _guarded(arguments: argparse.Namespace) -> int:
