@@ -47,7 +47,7 @@ def test_the_order_of_cells_does_not_matter_even_where_two_are_equally_near():
         found = nearest_cells([0.0, -0.5], [-180.0, 180.0], north[order], east[order], np.ones(4, bool))
         chosen = order[found.cell]
         assert north[chosen].tolist() == [-0.5, -0.5]
-        assert east[chosen].tolist() == [179.5, 179.5]
+        assert east[chosen].tolist() == [180.5, 180.5]  # -179.5, the lesser longitude
 
 
 def test_an_equally_near_valid_cell_is_no_substitute():

@@ -101,8 +101,8 @@ def nearest_cells(
     """Give every place the nearest valid cell.
 
     The search runs in chords on the unit sphere (a k-d tree), so poles and antimeridian are no edges. Cells that are
-    equally near are told apart by latitude, then longitude: the southern, then the western one is taken, whatever
-    their order.
+    equally near are told apart by their position, whatever their order: the lesser latitude is taken, then the lesser
+    longitude counted from -180.
 
     Parameters
     ----------
@@ -183,7 +183,7 @@ def _search(places: Array, cells: Array, among: NDArray[np.intp]) -> tuple[NDArr
     if not places.shape[1]:
         return np.empty(0, dtype=np.int64), np.empty(0)
     some = cells[:, among]
-    # The order of the tree is that of ties: south before north, west before east.
+    # Lesser latitudes first, then lesser longitudes: the order in which ties are settled.
     order = np.lexsort((np.mod(some[1] + 180.0, 360.0), some[0]))
     tree = cKDTree(_on_sphere(some[:, order]))
     _, found = tree.query(_on_sphere(places), k=min(_NEIGHBOURS, order.size))

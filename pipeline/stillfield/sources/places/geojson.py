@@ -9,7 +9,7 @@ from collections.abc import Iterator
 from typing import Any
 
 from stillfield.errors import PlacesError
-from stillfield.sources.places.columns import fold
+from stillfield.sources.places.columns import recognised
 from stillfield.sources.places.geometry import point_of, remark_on_kinds
 from stillfield.sources.places.raw_table import Cell, Faults, Point, RawTable, Row, quoted, within_limits
 
@@ -41,7 +41,7 @@ def read_geojson(raw: bytes, *, where: str) -> RawTable:
     for feature in features:
         for name in _properties(feature):
             names.setdefault(name, len(names))
-    with_id = "id" not in {fold(name) for name in names} and any("id" in feature for feature in features)
+    with_id = "id" not in recognised(list(names), {}) and any("id" in feature for feature in features)
     faults, kinds = Faults(where, "feature"), Counter[str]()
     rows = list(within_limits(_rows(features, list(names), faults, kinds, with_id=with_id), where=where,
                               counted="feature"))

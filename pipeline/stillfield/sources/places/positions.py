@@ -30,7 +30,7 @@ _SEXAGESIMAL = re.compile(
 _DECIMAL = re.compile(r"[+-]?(?:\d+(?:[.,]\d*)?|[.,]\d+)(?:e[+-]?\d{1,2})? ?°?", re.ASCII | re.IGNORECASE)
 _WKT = re.compile(r"POINT ?Z? ?\( ?([^\s()]+) ([^\s()]+)(?: [^\s()]+)? ?\)", re.IGNORECASE)
 #: Capital D, M, S and one S: seconds, or south?
-_ONE_S = re.compile(r"\d ?([dD]).*\d ?([mM]).*\d ?([sS])")
+_ONE_S = re.compile(r".*\d ?([dD]).*\d ?([mM]).*\d ?([sS])")
 
 WANTED = "should be degrees such as -12.345 or 12°20'42\" S"
 
@@ -200,7 +200,8 @@ def _halves(text: str) -> tuple[str, str]:
         if text.count(mark) == 1:
             first, second = text.split(mark)
             return first.strip(), second.strip()
-    if text.count(",") == 1 and not re.search(r"\d,\d+\D+\d", text):
+    decimal_comma = text.count(" ") == 1 and re.search(r"\d,\d", text)  # "12,5 40"
+    if text.count(",") == 1 and not decimal_comma:
         first, second = text.split(",")
         return first.strip(), second.strip()
     lettered = re.fullmatch(r"(.*\d.*?[NSns])[ ,]*((?:[^NSns]*\d[^NSns]*)[EWOewo])", text) or re.fullmatch(

@@ -68,7 +68,8 @@ def read_places(
     _refuse_contradictions(frame, faults)
     faults.refuse()
     remarks = [*table.remarks, *_remarks(table, found, frame)]
-    frame["longitude"] = (frame["longitude"] + 180.0) % 360.0 - 180.0
+    beyond = frame["longitude"] >= 180.0
+    frame["longitude"] = frame["longitude"].where(~beyond, frame["longitude"] - 360.0)
     _name_the_nameless(frame, remarks)
     frame.attrs["remarks"] = remarks
     return frame
