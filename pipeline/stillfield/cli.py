@@ -116,6 +116,8 @@ def build_parser() -> argparse.ArgumentParser:
     fit.add_argument("still_files", metavar="STILL.yaml", nargs="+", help="still files")
     fit.add_argument("--into", metavar="FILE", help="keep the fits in FILE, beside those it holds")
 
+    _add_trial(commands)
+
     evidence = commands.add_parser(
         "evidence", help="set what is known from outside beside what stillfield computes", allow_abbrev=False,
         description="Write tables and pictures of every check against outside knowledge, and of the correlation "
@@ -126,11 +128,22 @@ def build_parser() -> argparse.ArgumentParser:
     evidence.add_argument("--still", metavar="STILL.yaml", nargs="+", help="still files (default: config/stills)")
 
     schema = commands.add_parser(
-        "schema", help="print the JSON Schema of run files or still files", allow_abbrev=False,
-        description="Print the JSON Schema of run files or still files, for editors that complete and check.",
+        "schema", help="print the JSON Schema of run, still or trial files", allow_abbrev=False,
+        description="Print the JSON Schema of run, still or trial files, for editors that complete and check.",
     )
-    schema.add_argument("kind", nargs="?", choices=("run", "still"), default="run", help="which file (default: run)")
+    schema.add_argument("kind", nargs="?", choices=("run", "still", "trial"), default="run",
+                        help="which file (default: run)")
     return parser
+
+
+def _add_trial(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    trial = commands.add_parser(
+        "trial", help="set measured litres against modelled ones and compare stills", allow_abbrev=False,
+        description="From a log of measured litres and the weather of its days: the field factor of every still with "
+        "its interval, and which of two stills is better with the weather taken out.",
+    )
+    trial.add_argument("trial_file", metavar="TRIAL.yaml", help="the trial file")
+    trial.add_argument("--output", metavar="FOLDER", help="put the results under FOLDER, whatever the trial file says")
 
 
 def _guarded(arguments: argparse.Namespace) -> int:
@@ -198,6 +211,20 @@ def _fit(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
+def _trial(arguments: argparse.Namespace) -> int:
+    _log_to_stderr("plain")
+    from stillfield.settings.trial_file import load_trial
+
+    settings, rows = load_trial(arguments.trial_file)
+    if arguments.output is not None:
+        settings = settings.with_output(arguments.output)
+
+    from stillfield.trial import trial
+
+    _say(f"{trial(settings, rows, trial_file=arguments.trial_file)}\n")
+    return EXIT_OK
+
+
 def _evidence(arguments: argparse.Namespace) -> int:
     from stillfield.evidence.command import evidence
 
@@ -205,7 +232,7 @@ def _evidence(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
-_COMMANDS = {"evidence": _evidence, "run": _run, "plan": _plan, "schema": _schema, "fit": _fit}
+_COMMANDS = {"evidence": _evidence, "run": _run, "plan": _plan, "schema": _schema, "fit": _fit, "trial": _trial}
 
 
 class _PlainLines(logging.Formatter):

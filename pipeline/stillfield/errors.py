@@ -81,6 +81,10 @@ class MethodError(StillfieldError):
     """A yield method that does not exist or lacks the weather it needs."""
 
 
+class DecisionError(StillfieldError):
+    """A need, reliability, size, cost or rank that cannot be worked out from what was given."""
+
+
 class MemoryLimitError(StillfieldError):
     """A run that cannot be worked within the memory it is allowed."""
 

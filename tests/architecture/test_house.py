@@ -19,6 +19,7 @@ import pytest
 import stillfield
 from stillfield.settings.load import load_run
 from stillfield.settings.still_file import load_still_file
+from stillfield.settings.trial_file import load_trial
 
 ROOT = Path(__file__).parents[2]
 PACKAGE = ROOT / "pipeline" / "stillfield"
@@ -183,7 +184,8 @@ def test_importing_every_module_defines_names_and_does_nothing_else(tmp_path):
 
 @pytest.mark.parametrize("path", sorted((ROOT / "config").glob("*.yaml")), ids=lambda path: path.name)
 def test_shipped_run_files_load(path):
-    assert load_run(path).name == path.stem
+    settings = load_trial(path)[0] if path.stem == "trial" else load_run(path)
+    assert settings.name == path.stem
 
 
 @pytest.mark.parametrize("path", sorted((ROOT / "config" / "stills").glob("*.yaml")), ids=lambda path: path.name)

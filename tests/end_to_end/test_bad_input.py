@@ -145,8 +145,8 @@ def test_every_bad_row_of_a_village_table_is_told_by_its_number(tmp_path):
     said = complaint(tmp_path, weather=SITE, places={"table": "villages.csv"})
     assert "villages.csv has 3 faults" in said
     for words in (
-        "line 3, latitude: should be between -90 and 90 (got -120.2", "swapped?", "line 4, population", "'lots'",
-        "line 5, longitude: is empty",
+        "row 3, latitude: should be between -90 and 90 (got -120.2", "swapped?", "row 4, population", "'lots'",
+        "row 5, longitude: is empty",
     ):  # fmt: skip
         assert words in said
 

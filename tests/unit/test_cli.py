@@ -195,7 +195,7 @@ def test_a_real_interrupt_is_130(tmp_path):
     assert words == "stillfield: interrupted; outputs that were finished are whole\n"
 
 
-@pytest.mark.parametrize("kind", ["run", "still"])
+@pytest.mark.parametrize("kind", ["run", "still", "trial"])
 def test_schema_prints_what_config_ships(kind):
     told = command("schema", kind)
     assert told.returncode == 0

@@ -43,7 +43,7 @@ def test_the_shortest_file_has_the_defaults_of_the_record(load):
 
 
 def test_every_number_of_a_still_can_be_set_in_its_file():
-    keys = set(StillKeys.model_fields) - {"band"} | {"condition_low", "condition_high"}
+    keys = set(StillKeys.model_fields) - {"band", "cost", "modification"} | {"condition_low", "condition_high"}
     assert keys == {field.name for field in fields(Still)}
 
 
@@ -105,7 +105,7 @@ def test_the_band_without_words_reaches_down_to_the_condition(load):
     [
         ("colour: red", "line 4, colour: unknown key (known here: name, panels, cover, wall_gain, brine_depth_m, "
                         "liner_heat_capacity_j_m2_k, water_emittance, feed_salinity_g_kg, concentration_factor, "
-                        "condition, band, conditions, heat_transfer)"),
+                        "condition, band, conditions, heat_transfer, cost, modification)"),
         ("brine_depth: 0.02", "line 4, brine_depth: unknown key (did you mean 'brine_depth_m'?)"),
         ("brine_depth_cm: 2", "line 4, brine_depth_cm: unknown key (did you mean 'brine_depth_m'?)"),
         ("tilt_deg: 15", "line 4, tilt_deg: unknown key here (did you mean 'panels.tilt_deg'?)"),
@@ -209,7 +209,7 @@ def test_shipped_designs_load_and_are_called_as_their_file(path):
 @pytest.mark.parametrize("path", sorted(STILLS.glob("*.yaml")), ids=lambda path: path.stem)
 def test_shipped_designs_state_every_key_and_its_range(path):
     text = path.read_text(encoding="utf-8")
-    plain_keys = [key for key in StillKeys.model_fields if key != "conditions"]
+    plain_keys = [key for key in StillKeys.model_fields if key not in ("conditions", "modification")]
     lines = text.splitlines()
     starts = {line.split(":")[0]: line for line in lines if not line.startswith(("#", " ", "-"))}
     assert set(plain_keys) <= set(starts)

@@ -7,6 +7,7 @@ import json
 from pathlib import Path
 from typing import Any, Literal
 
+from pydantic import BaseModel
 from ruamel.yaml import YAML
 
 from stillfield.errors import RunFileError, StillfieldError
@@ -14,6 +15,11 @@ from stillfield.settings.faults import check, closest
 from stillfield.settings.model import RunSettings
 from stillfield.settings.still_file import StillKeys
 from stillfield.settings.text import read_text
+from stillfield.settings.trial_file import TrialSettings
+
+Kind = Literal["run", "still", "trial"]
+
+_MODELS: dict[str, type[BaseModel]] = {"run": RunSettings, "still": StillKeys, "trial": TrialSettings}
 
 _RESOLVED_HEADER = """\
 # The settings of this run, defaults filled in. Paths count from the folder of the run file it was made
@@ -86,17 +92,17 @@ def resolved_yaml(settings: RunSettings) -> str:
     return _RESOLVED_HEADER + stream.getvalue()
 
 
-def schema_text(kind: Literal["run", "still"] = "run") -> str:
+def schema_text(kind: Kind = "run") -> str:
     """Text of the schema file that ships in config/."""
     return json.dumps(json_schema(kind), indent=2, ensure_ascii=False) + "\n"
 
 
-def json_schema(kind: Literal["run", "still"] = "run") -> dict[str, Any]:
-    """JSON Schema of run files or still files, from the models that check them.
+def json_schema(kind: Kind = "run") -> dict[str, Any]:
+    """JSON Schema of run, still or trial files, from the models that check them.
 
     Parameters
     ----------
-    kind : {'run', 'still'}
+    kind : {'run', 'still', 'trial'}
         Which kind of file.
 
     Returns
@@ -104,7 +110,6 @@ def json_schema(kind: Literal["run", "still"] = "run") -> dict[str, Any]:
     dict
         JSON Schema, draft 2020-12, for editors that complete and check.
     """
-    model = RunSettings if kind == "run" else StillKeys
-    body = model.model_json_schema(by_alias=True)
+    body = _MODELS[kind].model_json_schema(by_alias=True)
     body["title"] = f"stillfield {kind} file"
     return {"$schema": "https://json-schema.org/draft/2020-12/schema", **body}

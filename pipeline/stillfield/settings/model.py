@@ -57,7 +57,8 @@ def _choice_schema(_source: Any, _handler: Any) -> core_schema.CoreSchema:
     )
 
 
-_StillKey = Annotated[
+#: A key that names a still file.
+StillKey = Annotated[
     StillChoice,
     GetPydanticSchema(_choice_schema),
     PlainSerializer(lambda choice: shown(choice.given), return_type=str),
@@ -231,7 +232,7 @@ def _as_list(value: Any) -> Any:
 
 
 _Stills = Annotated[
-    tuple[_StillKey, ...],
+    tuple[StillKey, ...],
     BeforeValidator(_as_list),
     WithJsonSchema({
         "anyOf": [{"type": "string"}, {"type": "array", "items": {"type": "string"}, "minItems": 1}],
@@ -295,9 +296,19 @@ class RunSettings(Group):
         StillfieldError
             When `folder` cannot be one.
         """
-        try:
-            output = Output(folder=folder)
-        except ValidationError as error:
-            said = error.errors(include_url=False)[0]["msg"]
-            raise StillfieldError(f"the output folder {said}") from None
-        return self.model_copy(update={"output": output})
+        return self.model_copy(update={"output": output_in(folder)})
+
+
+def output_in(folder: str) -> Output:
+    """Output keys that name `folder`.
+
+    Raises
+    ------
+    StillfieldError
+        When `folder` cannot be one.
+    """
+    try:
+        return Output(folder=folder)
+    except ValidationError as error:
+        said = error.errors(include_url=False)[0]["msg"]
+        raise StillfieldError(f"the output folder {said}") from None

@@ -1,18 +1,21 @@
-"""Still files: a design and its condition as keys with units, turned into a `Still`."""
+"""Still files: a design and its condition as keys with units, turned into a `Still`, with its money beside it."""
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
 from pydantic import Field, ValidationInfo, field_validator, model_validator
 
+from stillfield.decisions.cost import StillCost
+from stillfield.decisions.upgrade import Modification
 from stillfield.errors import RunFileError
 from stillfield.physics.brine import MAX_SALINITY_G_KG
 from stillfield.physics.cover import MATERIALS
 from stillfield.physics.still import STANDARD_CONDITIONS, Condition, CoverMaterial, Panel, Still
 from stillfield.settings.base import Group, OneOf, Section, folder_name
+from stillfield.settings.economy import CostKeys, ModificationKeys
 from stillfield.settings.faults import check
 from stillfield.settings.paths import refuse
 from stillfield.settings.text import harmless, read_text
@@ -25,6 +28,25 @@ _NUMBERS = ("refractive_index", "extinction_per_m", "thickness_m", "emittance")
 _SHARES_ADD_UP_TO = 1e-6
 
 _ConditionName = Annotated[str, OneOf(CONDITIONS)]
+
+
+@dataclass(frozen=True)
+class StillDesign:
+    """A still file: the still as the physics takes it, and beside it what the decisions take.
+
+    Attributes
+    ----------
+    still : Still
+        The design; it knows no money.
+    cost : StillCost or None
+        What it costs, where the file says so.
+    modification : Modification or None
+        A change to compare it with, where the file has one.
+    """
+
+    still: Still
+    cost: StillCost | None = None
+    modification: Modification | None = None
 
 
 class PanelKeys(Group):
@@ -119,6 +141,10 @@ class StillKeys(Group):
     heat_transfer: Literal["dunkle", "moist-air"] = Field(
         "dunkle", description="Relation for heat and vapour between water and cover"
     )
+    cost: CostKeys | None = Field(None, description="What the still costs; no cost per litre without it")
+    modification: ModificationKeys | None = Field(
+        None, description="A change to the still, compared with the still as it stands here; needs cost"
+    )
 
     @field_validator("panels")
     @classmethod
@@ -162,17 +188,32 @@ class StillKeys(Group):
             )
         return band
 
+    @field_validator("modification")
+    @classmethod
+    def _has_a_cost(cls, modification: ModificationKeys | None, info: ValidationInfo) -> ModificationKeys | None:
+        if modification is not None and "cost" in info.data and info.data["cost"] is None:
+            raise refuse("also needs 'cost' of the still, against which it is compared")
+        return modification
+
     def ends(self) -> tuple[str, str]:
         """Conditions behind the lower and the upper figures."""
         if self.band is not None:
             return self.band
         return ("neglected" if self.condition == "neglected" else "weathered"), "new"
 
+    def design(self) -> StillDesign:
+        """The still and its money."""
+        return StillDesign(
+            self.build(),
+            cost=self.cost.build() if self.cost is not None else None,
+            modification=self.modification.build() if self.modification is not None else None,
+        )
+
     def build(self) -> Still:
         """The still as the physics takes it."""
         low, high = self.ends()
         numbers: dict[str, Any] = self.model_dump(
-            exclude={"panels", "cover", "band", "conditions"}
+            exclude={"panels", "cover", "band", "conditions", "cost", "modification"}
         )
         own = self.conditions
         return Still(
@@ -188,8 +229,35 @@ class StillKeys(Group):
         )
 
 
+def load_still_design(path: str | Path, *, given: str | None = None) -> StillDesign:
+    """Read a still file with its cost and modification.
+
+    Parameters
+    ----------
+    path : path
+        The file.
+    given : str, optional
+        Its name in messages; the default is `path` itself.
+
+    Returns
+    -------
+    StillDesign
+
+    Raises
+    ------
+    RunFileError
+        With every fault of the file at once.
+    """
+    path = Path(path)
+    source = given if given is not None else str(path)
+    keys, faults = check(StillKeys, read_text(path, source), {"folder": path.parent})
+    if keys is None:
+        raise RunFileError(source, faults)
+    return keys.design()
+
+
 def load_still_file(path: str | Path, *, given: str | None = None) -> Still:
-    """Read a still file.
+    """Read a still file; its cost and modification are checked and left out.
 
     Parameters
     ----------
@@ -207,9 +275,4 @@ def load_still_file(path: str | Path, *, given: str | None = None) -> Still:
     RunFileError
         With every fault of the file at once.
     """
-    path = Path(path)
-    source = given if given is not None else str(path)
-    keys, faults = check(StillKeys, read_text(path, source), {"folder": path.parent})
-    if keys is None:
-        raise RunFileError(source, faults)
-    return keys.build()
+    return load_still_design(path, given=given).still

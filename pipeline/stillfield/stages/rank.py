@@ -11,9 +11,10 @@ import pandas as pd
 import xarray as xr
 from numpy.typing import NDArray
 
+from stillfield.decisions.nearest import great_circle_km, nearest_cells
 from stillfield.errors import PlacesError
 
-EARTH_RADIUS_KM = 6371.0088  # mean radius, IUGG 1980
+__all__ = ["great_circle_km", "rank_places"]
 
 MONTH_NAMES = ("jan", "feb", "mar", "apr", "may", "jun", "jul", "aug", "sep", "oct", "nov", "dec")
 
@@ -81,12 +82,13 @@ def rank_places(
     a rank and stand in the order of name and id, so the order of the input does not matter.
     """
     used = _checked_weights(weights)
-    every_cell, valid = _flat_cells(monthly)
-    cells = every_cell.isel(cell=np.flatnonzero(valid))
-    nearest, distance = _nearest(places, cells)
-    reached = distance <= max_cell_distance_km
-    substituted = ~valid[_nearest(places, every_cell)[0]]
-    table = _with_yields(places, cells, nearest, distance, reached, substituted)
+    cells, valid = _flat_cells(monthly)
+    found = nearest_cells(
+        places["latitude"].to_numpy(), places["longitude"].to_numpy(), cells["latitude"].to_numpy(),
+        cells["longitude"].to_numpy(), valid, max_distance_km=max_cell_distance_km,
+    )
+    reached = found.reached
+    table = _with_yields(places, cells, found.cell, found.distance_km, reached, found.substituted)
     table = _with_area(table, litres_per_person_day)
     table["score"] = _score(table, reached, used)
     table["reason"] = np.where(
@@ -121,51 +123,6 @@ def _flat_cells(monthly: xr.Dataset) -> tuple[xr.Dataset, NDArray[np.bool_]]:
             cure="Give weather for every month of a year, lower missing.min_valid_days_share, or leave places out.",
         )
     return flat, valid
-
-
-def great_circle_km(
-    latitude_a: NDArray[np.float64], longitude_a: NDArray[np.float64],
-    latitude_b: NDArray[np.float64], longitude_b: NDArray[np.float64],
-) -> NDArray[np.float64]:
-    """Great-circle distance by the haversine formula on a sphere of the mean radius.
-
-    Parameters
-    ----------
-    latitude_a, longitude_a, latitude_b, longitude_b : ndarray
-        Broadcast against each other. [deg]
-
-    Returns
-    -------
-    ndarray
-        [km]
-
-    Examples
-    --------
-    A quarter of the equator:
-
-    >>> round(float(great_circle_km(np.array(0.0), np.array(0.0), np.array(0.0), np.array(90.0))), 1)
-    10007.6
-    """
-    lat_a, lon_a, lat_b, lon_b = (np.radians(x) for x in (latitude_a, longitude_a, latitude_b, longitude_b))
-    half_chord = (
-        np.sin((lat_b - lat_a) / 2) ** 2 + np.cos(lat_a) * np.cos(lat_b) * np.sin((lon_b - lon_a) / 2) ** 2
-    )
-    return np.asarray(2.0 * EARTH_RADIUS_KM * np.arcsin(np.sqrt(np.minimum(half_chord, 1.0))))
-
-
-def _nearest(places: pd.DataFrame, cells: xr.Dataset) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
-    """Index of and distance to the nearest valid cell; the search runs in chords on the unit sphere."""
-    from scipy.spatial import cKDTree
-
-    def on_sphere(latitude: NDArray[np.float64], longitude: NDArray[np.float64]) -> NDArray[np.float64]:
-        lat, lon = np.radians(latitude), np.radians(longitude)
-        return np.column_stack([np.cos(lat) * np.cos(lon), np.cos(lat) * np.sin(lon), np.sin(lat)])
-
-    cell_lat, cell_lon = cells["latitude"].to_numpy(), cells["longitude"].to_numpy()
-    place_lat, place_lon = places["latitude"].to_numpy(), places["longitude"].to_numpy()
-    found = cKDTree(on_sphere(cell_lat, cell_lon)).query(on_sphere(place_lat, place_lon))[1]
-    nearest = np.asarray(found, dtype=np.int64)
-    return nearest, great_circle_km(place_lat, place_lon, cell_lat[nearest], cell_lon[nearest])
 
 
 def _with_yields(
