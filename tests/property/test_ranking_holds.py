@@ -13,6 +13,9 @@ from stillfield.decisions.ranking_uncertainty import Uncertainty
 
 VALUES = st.one_of(st.floats(0.01, 1000.0), st.sampled_from([1.0, 5.0, 5.004, 10.0]), st.just(float("nan")))
 
+#: None, or one that stays above nothing when it is scaled.
+WEIGHTS = st.just(0.0) | st.floats(1e-3, 5.0)
+
 
 @st.composite
 def tables(draw: st.DrawFn) -> tuple[PlaceTable, list[Criterion]]:
@@ -21,8 +24,8 @@ def tables(draw: st.DrawFn) -> tuple[PlaceTable, list[Criterion]]:
     limits = draw(st.sampled_from([None, (0.5, 20.0)]))
     criteria = [
         Criterion("a", "a", draw(st.booleans()), draw(st.floats(0.1, 5.0)), limits=limits),
-        Criterion("b", "b", draw(st.booleans()), draw(st.floats(0.0, 5.0)), "log"),
-        Criterion("c", "c", draw(st.booleans()), draw(st.floats(0.0, 5.0))),
+        Criterion("b", "b", draw(st.booleans()), draw(WEIGHTS), "log"),
+        Criterion("c", "c", draw(st.booleans()), draw(WEIGHTS)),
     ]
     ids = tuple(f"p{number}" for number in range(count))
     return PlaceTable(ids, tuple(draw(st.sampled_from(["Ulu", "Ambo"])) for _ in ids), columns), criteria

@@ -9,6 +9,9 @@ from collections.abc import Iterable
 MISSING = frozenset({"", "na", "n/a", "n.a.", "nan", "none", "null", "nil", "-", "--", "–", "—", "?", ".", "unknown",
                      "nd", "n.d.", "#n/a", "..", "s/d", "s.d."})
 
+#: No number is longer, and patterns need not be tried on what is.
+_LONGEST = 100
+
 _SIGNS = str.maketrans({"−": "-", "٫": ".", "٬": ",", "،": ",", "\u00a0": " ", "\u202f": " ", "\u2009": " ",
                         "’": "'", "\u200e": None, "\u200f": None})
 _SET_APART = re.compile(r"([+-]?\d{1,3})(?:[ '](\d{3}))+(?=$|[.,])", re.ASCII)
@@ -55,7 +58,9 @@ def decimal_mark(texts: Iterable[str], *, degrees: bool = False) -> str | None:
     """
     marks = set()
     for text in texts:
-        found = _NUMBER.fullmatch(plain(text))
+        if "." not in text and "," not in text and text.isascii():
+            continue
+        found = _NUMBER.fullmatch(plain(text)) if len(text) <= _LONGEST else None
         mark = _shown_mark(found[2], degrees=degrees) if found else None
         if mark:
             marks.add(mark)
@@ -104,7 +109,9 @@ def number_of(text: str, mark: str | None) -> float:
     Traceback (most recent call last):
     ValueError: could be 1250 or 1.250 (got '1.250'); write it without a mark between the thousands
     """
-    found = _NUMBER.fullmatch(plain(text))
+    if text.isascii() and text.isdigit() and len(text) <= _LONGEST:
+        return float(text)
+    found = _NUMBER.fullmatch(plain(text)) if len(text) <= _LONGEST else None
     if found is None:
         raise ValueError("should be a number")
     sign, digits, power = found[1], found[2], found[3] or ""

@@ -32,6 +32,11 @@ _WKT = re.compile(r"POINT ?Z? ?\( ?([^\s()]+) ([^\s()]+)(?: [^\s()]+)? ?\)", re.
 #: Capital D, M, S and one S: seconds, or south?
 _ONE_S = re.compile(r".*\d ?([dD]).*\d ?([mM]).*\d ?([sS])")
 
+#: What nearly all coordinates are; the rest takes longer.
+_PLAIN = re.compile(r"-?\d+(?:\.\d+)?", re.ASCII)
+#: No coordinate is longer, and patterns need not be tried on what is.
+_LONGEST = 100
+
 WANTED = "should be degrees such as -12.345 or 12°20'42\" S"
 
 
@@ -55,6 +60,12 @@ def tidy(text: str) -> str:
     text = re.sub(r"(?<=[\d ])(?:degrees?|degrés?|degres?|grados?|graus?|deg)(?![a-z])", "°", text, flags=re.IGNORECASE)
     text = re.sub(r"(?<=[\d ])(?:minutes?|minutos?|min)(?![a-z])", "'", text, flags=re.IGNORECASE)
     return re.sub(r"(?<=[\d ])(?:seconds?|secondes?|segundos?|sec)(?![a-z])", '"', text, flags=re.IGNORECASE)
+
+
+def _not_endless(text: str) -> str:
+    if len(text) > _LONGEST:
+        raise ValueError(WANTED)
+    return text
 
 
 def check_angle(value: float, axis: str) -> None:
@@ -100,7 +111,10 @@ def parse_angle(text: str, axis: str = "") -> Angle:
     >>> parse_angle("12 30 36 S"), parse_angle("40d30mO"), parse_angle("-3,25")
     (Angle(degrees=-12.51, letter='S'), Angle(degrees=-40.5, letter='O'), Angle(degrees=-3.25, letter=''))
     """
-    body, letter = _letter_of(tidy(text))
+    if _PLAIN.fullmatch(text):
+        body, letter = text, ""
+    else:
+        body, letter = _letter_of(tidy(_not_endless(text)))
     if axis and _AXIS.get(letter, axis) != axis:
         raise ValueError(f"says {letter}, which is a {_AXIS[letter]}; are latitude and longitude swapped?")
     value = _degrees(body)
@@ -178,7 +192,7 @@ def parse_position(text: str, *, longitude_first: bool = False) -> tuple[Angle, 
     >>> [angle.degrees for angle in parse_position("12,5; -40,25")]
     [12.5, -40.25]
     """
-    plain = tidy(text)
+    plain = tidy(_not_endless(text))
     wkt = _WKT.fullmatch(plain)
     if wkt:
         halves, longitude_first = (wkt[1], wkt[2]), True
