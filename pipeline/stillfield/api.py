@@ -17,15 +17,15 @@ from typing import Any
 import pandas as pd
 import xarray as xr
 
+from stillfield.decide import Preferences, decide, usual_wishes
 from stillfield.engine.job import Missing, months_of, prepare
 from stillfield.methods.registry import get_method
 from stillfield.physics.rule import USUAL_EFFICIENCY
-from stillfield.physics.still import Still
+from stillfield.physics.still import Panel, Still
 from stillfield.settings.still_file import load_still_file
 from stillfield.sources import guess_kind
 from stillfield.sources.gates import gate
 from stillfield.sources.places import read_places
-from stillfield.stages.rank import rank_places
 from stillfield.stages.read import Box, Mask, Region, mark_as_stored, read_weather
 from stillfield.vocabulary import STEP_HOURS_DAILY
 
@@ -87,9 +87,54 @@ def load_still(still: str | Path) -> Still:
     return load_still_file(still)
 
 
-def load_places(table: str | Path, columns: Mapping[str, str] | None = None) -> pd.DataFrame:
+def load_places(
+    table: str | Path, columns: Mapping[str, str] | None = None, *, sheet: str | None = None, layer: str | None = None
+) -> pd.DataFrame:
     """Load a table of villages; see `stillfield.sources.places.read_places`."""
-    return read_places(table, columns)
+    return read_places(table, columns, sheet=sheet, layer=layer)
+
+
+def rank_places(
+    monthly: xr.Dataset, places: pd.DataFrame, still: Still | None = None, *,
+    litres_per_person_day: float | None = None, max_cell_distance_km: float = 25.0,
+    weights: Mapping[str, float] | None = None,
+) -> pd.DataFrame:
+    """Give every place its cell's litres, the basin area it needs and its rank.
+
+    Parameters
+    ----------
+    monthly : xarray.Dataset
+        As `monthly_yield` gives it.
+    places : pandas.DataFrame
+        As `load_places` gives it.
+    still : Still, optional
+        The design, for feed and brine; without it a basin that concentrates its feed twofold.
+    litres_per_person_day : float, optional
+        Water each person needs; the published figure for drinking without it. [L]
+    max_cell_distance_km : float
+        A place farther than this from every valid cell stays in the table without litres. [km]
+    weights : mapping of str to float, optional
+        Weight of each criterion (`stillfield.stages.rank.CRITERIA`); missing ones count 0.
+
+    Returns
+    -------
+    pandas.DataFrame
+        First to visit first, every place kept; `stillfield.products.place_columns` explains the columns. Without
+        the days of the record no tank is sized.
+
+    Raises
+    ------
+    PlacesError
+        If the weights are unusable.
+
+    Notes
+    -----
+    A still is no barrier to volatile contaminants; distillate must be disinfected, remineralised and tested
+    before people drink it. See `stillfield.vocabulary.WATER_CAUTION`.
+    """
+    design = still or Still("stated by nobody", (Panel(1.0, 15.0),))
+    ways = Preferences(weights, max_cell_distance_km=max_cell_distance_km)
+    return decide(monthly, places, still=design, wishes=usual_wishes(litres_per_person_day), preferences=ways).places
 
 
 def monthly_yield(

@@ -12,6 +12,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield import __version__
+from stillfield.decisions.nearest import great_circle_km
 from stillfield.engine.job import Prepared
 from stillfield.methods import Method
 from stillfield.methods.fit_store import fit_state
@@ -20,7 +21,6 @@ from stillfield.opening import Opened, fits_folder, open_run
 from stillfield.physics.still import Still
 from stillfield.settings.model import RunSettings
 from stillfield.stages.forecast import Job, forecast
-from stillfield.stages.rank import great_circle_km
 from stillfield.stages.survey import outside_box, survey_places, survey_space, survey_time, survey_variables
 from stillfield.stages.write import file_names, makes_rasters
 
@@ -147,7 +147,8 @@ def _nearest_site_km(places: pd.DataFrame, sites: xr.Dataset) -> NDArray[np.floa
 
 
 def _outputs(settings: RunSettings, opened: Opened, stills: list[dict[str, Any]], *, grid: bool) -> list[str]:
-    names = file_names(grid=grid, ranked=opened.places is not None, rasters=makes_rasters(opened.prepared.weather))
+    names = file_names(grid=grid, ranked=opened.places is not None, rasters=makes_rasters(opened.prepared.weather),
+                       stored=bool(opened.followed) and opened.prepared.weather.attrs.get("record") != "typical-year")
     outputs = [(folder / name).as_posix() for folder in opened.folders for name in names]
     for still, told in zip(settings.stills, stills, strict=True):
         made = [condition for condition, state in (told["fits"] or {}).items() if state == "to be made"]

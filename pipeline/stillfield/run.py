@@ -10,15 +10,15 @@ from typing import Any
 
 import xarray as xr
 
+from stillfield.decide import Days, decide
 from stillfield.engine.job import Missing, months_of
 from stillfield.methods import Method
-from stillfield.opening import Opened, open_run
-from stillfield.physics.still import Still
+from stillfield.opening import Opened, open_run, preferences_of, wishes_of
 from stillfield.products.summary import Summary, summarise
 from stillfield.settings.load import resolved_yaml
 from stillfield.settings.model import RunSettings
+from stillfield.settings.still_file import StillDesign
 from stillfield.stages.audit import Audit, Sample, audit
-from stillfield.stages.rank import rank_places
 from stillfield.stages.read import describe_inputs
 from stillfield.stages.write import Results, write_results
 
@@ -55,13 +55,15 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     log.info("estimating by method %s", settings.method)
     outcome = months_of(
         opened.prepared, settings.stills, rule_efficiency=settings.rule.efficiency,
-        missing=Missing(**settings.missing.model_dump()), progress=_tell_progress,
+        missing=Missing(**settings.missing.model_dump()), followed=opened.followed, progress=_tell_progress,
     )
     for sentence in outcome.monthly[0].attrs.get("conventions", [])[said:]:
         log.info("%s", sentence)  # what was counted on the way
     summaries = [
-        _one_still(settings, still, opened, monthly, outcome.sample, inputs=inputs, folder=folder)
-        for still, monthly, folder in zip(settings.stills, outcome.monthly, opened.folders, strict=True)
+        _one_still(settings, design, opened, monthly, outcome.sample, inputs=inputs, folder=folder,
+                   days=Days(outcome.followed, opened.prepared.local.time, number))
+        for number, (design, monthly, folder) in enumerate(
+            zip(settings.designs, outcome.monthly, opened.folders, strict=True))
     ]
     return Summary(
         "\n".join(summary.text for summary in summaries),
@@ -75,18 +77,20 @@ def _tell_progress(done: int, of: int) -> None:
 
 
 def _one_still(
-    settings: RunSettings, still: Still, opened: Opened, monthly: xr.Dataset, sample: Sample, *,
-    inputs: dict[str, dict[str, Any]], folder: Path,
+    settings: RunSettings, design: StillDesign, opened: Opened, monthly: xr.Dataset, sample: Sample, *,
+    inputs: dict[str, dict[str, Any]], folder: Path, days: Days,
 ) -> Summary:
+    still = design.still
     method, places = opened.prepared.method, opened.places
     counts = json.loads(monthly.attrs.get("counts", "{}"))
-    ranked = None
+    decision = None
     if places is not None and settings.places is not None:
-        ranked = rank_places(
-            monthly, places, litres_per_person_day=settings.need.litres_per_person_day,
-            max_cell_distance_km=settings.places.max_cell_distance_km,
-            weights=settings.rank.weights.by_criterion(),
+        decision = decide(
+            monthly, places, still=design.still, cost=design.cost, wishes=wishes_of(settings),
+            preferences=preferences_of(settings), days=days,
         )
+        for note in decision.notes:
+            log.info("%s", note)
     audited = None
     if method.name == "fitted":
         audited = audit(method, monthly["annual_yield"].to_numpy().ravel(), sample, still)
@@ -94,18 +98,19 @@ def _one_still(
     title = f"Solar still yield, {settings.name}"
     condition = f", {still.condition}" if method.knows_condition else ""
     line = f"Still {still.name}{condition}; method {method.name}."
-    remarks = _remarks(monthly, method, audited)
+    remarks = (*_remarks(monthly, method, audited), *(() if decision is None else decision.notes))
     log.info("writing to %s", folder)
     files = write_results(
         folder,
         Results(
-            monthly, ranked, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
+            monthly, decision, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
             inputs, land=None if settings.map.land is None else settings.map.land.path, remarks=remarks,
             facts={"counts": {"weather": counts}, "audit": None if audited is None else asdict(audited)},
         ),
     )
     return summarise(
-        monthly, ranked, title=title, method_line=line, folder=folder, files=files,
+        monthly, None if decision is None else decision.places, title=title, method_line=line, folder=folder,
+        files=files,
         remarks=[remark for remark in remarks if "WARNING" in remark or "udit" in remark],
     )
 

@@ -11,6 +11,7 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
+from stillfield.decisions.nearest import great_circle_km
 from stillfield.engine.job import names_for
 from stillfield.engine.labelled import on_local_days
 from stillfield.errors import MethodError, WeatherError
@@ -22,7 +23,6 @@ from stillfield.settings.trial_file import TrialSettings
 from stillfield.settings.trial_log import WEATHER_QUANTITIES, LogRow
 from stillfield.sources.calendars import solar_day_of_year
 from stillfield.stages.prepare import space_of
-from stillfield.stages.rank import great_circle_km
 from stillfield.stages.read import read_weather
 from stillfield.vocabulary import STEP_HOURS_DAILY
 

@@ -113,6 +113,11 @@ class Prepared:
     plan: Plan
     means: Means = field(default_factory=Means)
 
+    def kept(self) -> NDArray[np.bool_]:
+        """Which cells belong to the region, shape (cell,)."""
+        _, rows, columns = self.reader.layout.shape
+        return self.reader.kept(BlockPlan(slice(0, rows), slice(0, columns), ())).ravel()
+
     @property
     def months(self) -> Months:
         """Calendar of the days."""

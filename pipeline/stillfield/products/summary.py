@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -103,15 +104,21 @@ def _places(ranked: pd.DataFrame) -> list[str]:
     lines = [f"First to visit, of {len(ranked)} places:"]
     width = max([len(str(name)) for name in first["name"]] + [5])
     for row in first.to_dict("records"):
-        month = MONTH_NAMES[int(row["worst_month"]) - 1]
+        month = MONTH_NAMES[int(row["sizing_month"]) - 1]
         least, most = row["area_per_person_at_high_yield_m2"], row["area_per_person_at_low_yield_m2"]
         band = f" ({least:.1f} to {most:.1f})" if least < most else ""
         lines.append(
             f"  {row['rank']:>2}  {row['name']:<{width}}  "
-            f"{row['worst_month_yield_l_m2_day']:.2f} L/m2 a day in {month}: "
-            f"{row['area_per_person_m2']:.1f} m2 a person{band}"
+            f"{row['sizing_yield_l_m2_day']:.2f} L/m2 a day in {month}: "
+            f"{row['area_per_person_m2']:.1f} m2 a person{band}{_sureness(row)}"
         )
     without = int(ranked["rank"].isna().sum())
     if without:
         lines.append(f"  {without} places without litres; the reasons stand in places.csv.")
     return lines
+
+
+def _sureness(row: Mapping[str, Any]) -> str:
+    """Rank interval of a place, where it was drawn."""
+    low, high = row.get("rank_low"), row.get("rank_high")
+    return "" if pd.isna(low) or pd.isna(high) or low == high else f"; rank {low} to {high}"

@@ -16,7 +16,6 @@ from pydantic import (
     WithJsonSchema,
     field_serializer,
     field_validator,
-    model_validator,
 )
 from pydantic_core import PydanticCustomError, core_schema
 
@@ -25,25 +24,31 @@ from stillfield.physics.still import Still
 from stillfield.settings.base import MAX_NAME, Group, OneOf, Section, folder_name
 from stillfield.settings.paths import FileKey, find_file, folder_of, refuse, shown
 from stillfield.settings.region import Region
-from stillfield.settings.still_file import load_still_file
+from stillfield.settings.still_file import StillDesign, load_still_design
 from stillfield.settings.text import harmless
 from stillfield.settings.weather import Weather
+from stillfield.settings.wishes import Feed, FieldFactorKeys, Need, Rank, Storage
 from stillfield.vocabulary import METHODS
 
 
 @dataclass(frozen=True)
 class StillChoice:
-    """A still file named in a run file, and the still it describes."""
+    """A still file named in a run file, and the design it describes."""
 
     given: str
     path: Path
-    still: Still
+    design: StillDesign
+
+    @property
+    def still(self) -> Still:
+        """The still as the physics takes it."""
+        return self.design.still
 
 
 def _load_choice(given: str, folder: Path) -> StillChoice:
     file = find_file(given, folder)
     try:
-        return StillChoice(given, file.path, load_still_file(file.path, given=given))
+        return StillChoice(given, file.path, load_still_design(file.path, given=given))
     except RunFileError as error:
         parts = tuple(f"{harmless(given)}, {fault}" for fault in error.faults)
         raise PydanticCustomError("stillfield", "{message}", {"message": parts[0], "faults": parts}) from None
@@ -86,6 +91,7 @@ class PlaceColumns(Group):
     feed_salinity_g_kg: str | None = Field(None, description="Column with the salinity of the feed water [g kg-1]")
     distance_to_feed_km: str | None = Field(None, description="Column with the distance to the feed water [km]")
     elevation_m: str | None = Field(None, description="Column with the height above sea [m]")
+    position: str | None = Field(None, description="Column with latitude and longitude together")
     note: str | None = Field(None, description="Column with a remark")
 
     def given(self) -> dict[str, str]:
@@ -96,56 +102,16 @@ class PlaceColumns(Group):
 class Places(Group):
     """The villages to rank."""
 
-    table: FileKey = Field(description="CSV table of places with name, latitude and longitude")
+    table: FileKey = Field(
+        description="Table of places with name, latitude and longitude: CSV, GeoJSON, GeoPackage or XLSX"
+    )
+    sheet: str | None = Field(None, description="Sheet of an XLSX table")
+    layer: str | None = Field(None, description="Layer of a GeoPackage")
     max_cell_distance_km: float = Field(
         25.0, ge=0, le=1000, description="How far the next cell with weather may lie from a place [km]"
     )
     columns: Section[PlaceColumns] = Field(
         default_factory=PlaceColumns, description="Names of columns that are not recognised by themselves"
-    )
-
-
-class Need(Group):
-    """Water that people need from the stills."""
-
-    litres_per_person_day: float = Field(
-        3.0, ge=0.1, le=100, description="Drinking water each person needs [L day-1]; 2.5 to 3 for survival"
-    )
-
-
-class Weights(Group):
-    """How much each criterion counts in the order of the places; only the proportions matter."""
-
-    yield_: float = Field(0.0, ge=0, le=1000, alias="yield", description="Weight of the litres per basin area")
-    people: float = Field(0.0, ge=0, le=1000, description="Weight of the number of people")
-    salinity: float = Field(0.0, ge=0, le=1000, description="Weight of the salinity of the water they have")
-    distance: float = Field(0.0, ge=0, le=1000, description="Weight of the distance to the feed water")
-
-    @model_validator(mode="after")
-    def _some_weight(self) -> Weights:
-        if not any(self.by_criterion().values()):
-            raise refuse("at least one weight should be above 0")
-        return self
-
-    def by_criterion(self) -> dict[str, float]:
-        """Weights by the name of the criterion, as the run file has them."""
-        return self.model_dump(by_alias=True)
-
-
-#: Weights of a run file that states none; one that states some gives the others no weight.
-USUAL_WEIGHTS = {"yield": 0.3, "people": 0.3, "salinity": 0.2, "distance": 0.2}
-
-
-def _usual_if_empty(value: Any) -> Any:
-    return dict(USUAL_WEIGHTS) if value in (None, {}) else value
-
-
-class Rank(Group):
-    """How the places are ordered."""
-
-    weights: Annotated[Weights, BeforeValidator(_usual_if_empty)] = Field(
-        default_factory=lambda: Weights(**USUAL_WEIGHTS),
-        description="Weight of each criterion; one that is left out counts nothing",
     )
 
 
@@ -253,6 +219,11 @@ class RunSettings(Group):
     rule: Section[Rule] = Field(default_factory=Rule, description="Numbers of the constant-efficiency rule")
     places: Places | None = Field(None, description="Villages to rank; no ranking without them")
     need: Section[Need] = Field(default_factory=Need, description="Water that people need")
+    storage: Section[Storage] = Field(default_factory=Storage, description="How sure the water is to be")
+    feed: Section[Feed] = Field(default_factory=Feed, description="Brine and blending")
+    still_field_factor: FieldFactorKeys | None = Field(
+        None, description="What a trial of this very still found; litres of places are multiplied by it"
+    )
     rank: Section[Rank] = Field(default_factory=Rank, description="How the places are ordered")
     missing: Section[Missing] = Field(default_factory=Missing, description="When weather is too scarce")
     output: Section[Output] = Field(default_factory=Output, description="Where results go")
@@ -282,6 +253,11 @@ class RunSettings(Group):
     def stills(self) -> tuple[Still, ...]:
         """The still designs of the run."""
         return tuple(choice.still for choice in self.still)
+
+    @property
+    def designs(self) -> tuple[StillDesign, ...]:
+        """The same with their prices."""
+        return tuple(choice.design for choice in self.still)
 
     @property
     def folder(self) -> Path:

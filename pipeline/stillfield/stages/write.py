@@ -13,7 +13,7 @@ from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any
+from typing import Any, Protocol
 
 import pandas as pd
 import xarray as xr
@@ -22,7 +22,7 @@ from stillfield.errors import OutputError
 from stillfield.products.grid import cell_edges, is_even, is_grid
 from stillfield.products.manifest import digest_dataset, digest_file, write_manifest
 from stillfield.products.netcdf import MONTH_NAMES, write_netcdf
-from stillfield.products.place_columns import PLACE_COLUMNS
+from stillfield.products.place_columns import MONTH_COLUMNS, PLACE_COLUMNS, STORAGE_COLUMNS
 from stillfield.products.tables import CELL_COLUMNS, cells_frame, write_csv, write_notes
 from stillfield.vocabulary import WATER_CAUTION
 
@@ -41,6 +41,25 @@ RASTERS = ("monthly_yield", "monthly_yield_low", "monthly_yield_high", "annual_y
 SINGLE_MAPS = ("annual_yield", "worst_month_yield", "worst_month")
 
 
+class Tables(Protocol):
+    """Tables about places."""
+
+    @property
+    def places(self) -> pd.DataFrame:
+        """One row per place, in the order to visit."""
+        ...
+
+    @property
+    def months(self) -> pd.DataFrame:
+        """One row per place and month."""
+        ...
+
+    @property
+    def storage(self) -> pd.DataFrame:
+        """One row per place and tank; may be empty."""
+        ...
+
+
 @dataclass(frozen=True)
 class Results:
     """What a run found, and the words that travel with it.
@@ -49,8 +68,8 @@ class Results:
     ----------
     monthly : xarray.Dataset
         As `aggregate` gives it.
-    ranked : pandas.DataFrame or None
-        As `rank` gives it.
+    decision : Tables or None
+        What was decided about places.
     title, method_line : str
         Heading of the products, and one line on method and still.
     resolved : str
@@ -68,7 +87,7 @@ class Results:
     """
 
     monthly: xr.Dataset
-    ranked: pd.DataFrame | None
+    decision: Tables | None
     title: str
     method_line: str
     resolved: str
@@ -139,7 +158,7 @@ def makes_rasters(weather: xr.Dataset) -> bool:
     return is_grid(weather) and is_even(weather)
 
 
-def file_names(*, grid: bool, ranked: bool, rasters: bool = True) -> tuple[str, ...]:
+def file_names(*, grid: bool, ranked: bool, rasters: bool = True, stored: bool = True) -> tuple[str, ...]:
     """Files `write_results` writes into a run's folder, as paths below it, in the order it gives them.
 
     Parameters
@@ -150,6 +169,8 @@ def file_names(*, grid: bool, ranked: bool, rasters: bool = True) -> tuple[str, 
         Whether there are places.
     rasters : bool
         Whether a grid makes GeoTIFF files (`makes_rasters`).
+    stored : bool
+        Whether tanks are sized, which needs the days of a real record.
 
     Returns
     -------
@@ -163,7 +184,8 @@ def file_names(*, grid: bool, ranked: bool, rasters: bool = True) -> tuple[str, 
     maps = ["monthly_yield", *SINGLE_MAPS] if grid else ["site_months"]
     names = ["READ-ME-FIRST.txt", "cells.csv", "monthly_yield.nc", "run.yaml", *(f"maps/{name}.png" for name in maps)]
     names += [f"{name}.tif" for name in RASTERS] if grid and rasters else []
-    names += ["places.csv"] if ranked else []
+    names += ["places.csv", "places_months.csv"] if ranked else []
+    names += ["places_storage.csv"] if ranked and stored else []
     return (*(path.as_posix() for path in sorted(map(Path, names))), MANIFEST)
 
 
@@ -278,10 +300,9 @@ def _write_maps(stage: Path, results: Results) -> None:
     from stillfield.products.maps import MapPlace, write_map_single, write_map_twelve_months
 
     places: list[MapPlace] = []
-    if results.ranked is not None:
-        for latitude, longitude, rank in results.ranked[["latitude_deg", "longitude_deg", "rank"]].itertuples(
-            index=False
-        ):
+    if results.decision is not None:
+        spots = results.decision.places[["latitude_deg", "longitude_deg", "rank"]]
+        for latitude, longitude, rank in spots.itertuples(index=False):
             places.append(MapPlace(latitude, longitude, None if pd.isna(rank) else int(rank)))
     write_map_twelve_months(
         results.monthly, maps / "monthly_yield.png", words=words, land=results.land, places=places
@@ -295,20 +316,30 @@ def _write_maps(stage: Path, results: Results) -> None:
 def _write_tables(stage: Path, results: Results) -> None:
     write_csv(cells_frame(results.monthly), stage / "cells.csv")
     columns = list(CELL_COLUMNS)
-    if results.ranked is not None:
-        table = results.ranked.copy()
-        table["worst_month"] = [
-            None if pd.isna(month) else MONTH_NAMES[int(month) - 1] for month in table["worst_month"]
-        ]
-        present = [column for column in PLACE_COLUMNS if column.name in table]
-        write_csv(table, stage / "places.csv", columns=[column.name for column in present])
-        known = {column.name for column in present}
-        columns = present + [column for column in columns if column.name not in known]
+    if results.decision is not None:
+        tables = {"places": (results.decision.places, PLACE_COLUMNS), "places_months": (results.decision.months,
+                  MONTH_COLUMNS), "places_storage": (results.decision.storage, STORAGE_COLUMNS)}
+        for name, (table, known) in tables.items():
+            if table.empty:
+                continue
+            present = [column for column in known if column.name in table]
+            write_csv(_in_words(table), stage / f"{name}.csv", columns=[column.name for column in present])
+            columns += present
+        columns = list({column.name: column for column in reversed(columns)}.values())[::-1]
     uneven = (_NO_RASTERS,) if is_grid(results.monthly) and not makes_rasters(results.monthly) else ()
     write_notes(
         stage / "READ-ME-FIRST.txt", columns, title=results.title,
         remarks=(results.method_line, *results.remarks, *uneven),
     )
+
+
+def _in_words(table: pd.DataFrame) -> pd.DataFrame:
+    """The table with months by name."""
+    made = table.copy()
+    for name in ("sizing_month", "least_yield_month", "month"):
+        if name in made:
+            made[name] = [None if pd.isna(month) else MONTH_NAMES[int(month) - 1] for month in made[name]]
+    return made
 
 
 def _digests(stage: Path, files: Iterable[Path], results: Results) -> dict[str, str]:
