@@ -64,7 +64,11 @@ def open_weather(
     """
     names = [str(files)] if isinstance(files, str | Path) else [str(name) for name in files]
     weather = read_weather(kind or guess_kind(names), names, region=region, **options)
-    return mark_as_stored(gate(weather, where=str(weather.attrs.get("files", "weather")))[0])
+    checked, _ = gate(weather, where=str(weather.attrs.get("files", "weather")))
+    if any(values.chunks is not None for values in weather.data_vars.values()):
+        # Of lazy weather the gate counts nothing, and what it puts right the engine would no longer see.
+        checked = checked.assign_attrs(ungated=weather)
+    return mark_as_stored(checked)
 
 
 def load_still(still: str | Path) -> Still:

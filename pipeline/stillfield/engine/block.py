@@ -151,10 +151,13 @@ def work_block(work: Work, block: BlockPlan) -> BlockResult:
     """
     steps = Steps(work.reader, work.names, work.local, block, _fill_steps(work))
     walk = _Walk(work, block)
-    for number, window in enumerate(block.windows, start=1):
-        last = number == len(block.windows)
-        first_day, weather = steps.take(window, last=last)
-        walk.on(first_day, weather, last=last)
+    try:
+        for number, window in enumerate(block.windows, start=1):
+            last = number == len(block.windows)
+            first_day, weather = steps.take(window, last=last)
+            walk.on(first_day, weather, last=last)
+    finally:
+        work.reader.close()
     return walk.result(steps.counts)
 
 

@@ -27,12 +27,13 @@ from stillfield.sources.tally import COUNT, COUNTS, sentences, totals
 from stillfield.stages.aggregate import Months, aggregate
 from stillfield.stages.audit import MOST_DAYS, Sample
 from stillfield.stages.prepare import LocalDays, count_days, local_days, space_of
+from stillfield.stages.read import is_as_stored
 from stillfield.vocabulary import STEP_HOURS_DAILY
 
 Progress = Callable[[int, int], None]
 
 #: Attributes that only tell the engine how to read.
-_OF_OPENING = ("stored", "stored_graphs", "files")
+_OF_OPENING = ("stored", "stored_graphs", "ungated", "files")
 #: Cells whose weather is kept for the audit to choose from.
 AUDIT_CANDIDATES = 48
 
@@ -174,7 +175,7 @@ def prepare(
     used = means or Means()
     inside = _inside(weather)
     reader: Reader = (stored_reader(weather, names, inside, fast=used.fast)
-                      or LazyReader(_bare(weather, names), inside))
+                      or LazyReader(_bare(_ungated(weather, names), names), inside))
     typical = weather.attrs.get("record") == "typical-year"
     months = Months.of(local.time, typical=typical)
     plan = plan_blocks(
@@ -184,6 +185,17 @@ def prepare(
     if used.scheduler is not None:
         plan = split_in_time(plan, months, local, workers=used.at_once)
     return Prepared(weather, local, method, names, reader, plan, used)
+
+
+def _ungated(weather: xr.Dataset, names: Sequence[str]) -> xr.Dataset:
+    """Weather with its lazy variables as they were before they were checked, for the engine checks and counts itself.
+
+    Those that were changed since stay as they are.
+    """
+    before = weather.attrs.get("ungated")
+    if before is None:
+        return weather
+    return weather.assign({name: before[name].variable for name in names if is_as_stored(weather, [name])})
 
 
 def _bare(weather: xr.Dataset, names: Sequence[str]) -> xr.Dataset:

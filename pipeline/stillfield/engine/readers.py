@@ -21,6 +21,10 @@ Array = NDArray[np.floating[Any]]
 class Reader(Protocol):
     """Where weather comes from; may be sent to another process."""
 
+    def close(self) -> None:
+        """Let go of what is held open."""
+        ...
+
     def from_anywhere(self) -> Reader:
         """The same with whole paths, for workers in another folder."""
         ...
@@ -94,6 +98,9 @@ class LazyReader:
 
     weather: xr.Dataset
     inside: NDArray[np.bool_] | None = None
+
+    def close(self) -> None:
+        """Nothing is held open."""
 
     def from_anywhere(self) -> LazyReader:
         """The same; a graph keeps the paths that it was made with."""

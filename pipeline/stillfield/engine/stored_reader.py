@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 from stillfield.engine.planning import BlockPlan, Layout
 from stillfield.engine.readers import totals_of
 from stillfield.sources.grids.stored import StoredWeather
+from stillfield.sources.grids.stored_reading import close_files
 from stillfield.sources.settle import Breach
 from stillfield.stages.read import is_as_stored
 
@@ -44,6 +45,10 @@ class StoredReader:
     size: tuple[int, int, int]
     inside: NDArray[np.bool_] | None = None
     fast: bool = True
+
+    def close(self) -> None:
+        """Close the files that the NetCDF library holds open."""
+        close_files()
 
     def from_anywhere(self) -> StoredReader:
         """The same with whole paths, for workers in another folder."""

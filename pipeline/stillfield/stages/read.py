@@ -61,14 +61,15 @@ def mark_as_stored(weather: xr.Dataset) -> xr.Dataset:
     Parameters
     ----------
     weather : xarray.Dataset
-        With attribute ``stored`` where its source says how it lies in its files.
+        With attribute ``stored`` where its source says how it lies in its files, or ``ungated`` where it was checked
+        since and that is what it was before.
 
     Returns
     -------
     xarray.Dataset
-        With attribute ``stored_graphs``, the names of the graphs of its lazy variables; unchanged without ``stored``.
+        With attribute ``stored_graphs``, the names of the graphs of its lazy variables; unchanged without these.
     """
-    if "stored" not in weather.attrs:
+    if not {"stored", "ungated"} & set(weather.attrs):
         return weather
     graphs = {str(name): _graph(values) for name, values in weather.data_vars.items()}
     return weather.assign_attrs(stored_graphs=graphs)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import OrderedDict
 from collections.abc import Iterator
 from contextlib import contextmanager
 from math import prod
@@ -157,20 +158,37 @@ def _through_library(
 ) -> Iterator[tuple[NDArray[Any], tuple[int, ...]]]:
     """Slices of whole chunks through the NetCDF library, which one thread at a time may use."""
     where = f"{variable.name} in {file.path}"
-    with ONE_READER, _in_our_words(where):
-        opened = netCDF4.Dataset(file.path)
-    try:
-        for cut in _slices(variable, slab, np.dtype(file.coding.dtype).itemsize):
-            with ONE_READER, _in_our_words(where):
-                stored = opened.variables[variable.name]
-                stored.set_auto_maskandscale(False)
-                values = np.asarray(stored[tuple(slice(low, high) for low, high in cut)])
-            if values.shape != tuple(high - low for low, high in cut) or values.dtype.kind not in "iuf":
-                raise _changed(file.path, variable.name)
-            yield np.ascontiguousarray(values, np.dtype(file.coding.dtype)), tuple(low for low, _ in cut)
-    finally:
-        with ONE_READER:
-            opened.close()
+    for cut in _slices(variable, slab, np.dtype(file.coding.dtype).itemsize):
+        with ONE_READER, _in_our_words(where):
+            stored = _opened(file.path).variables[variable.name]
+            values = np.asarray(stored[tuple(slice(low, high) for low, high in cut)])
+        if values.shape != tuple(high - low for low, high in cut) or values.dtype.kind not in "iuf":
+            raise _changed(file.path, variable.name)
+        yield np.ascontiguousarray(values, np.dtype(file.coding.dtype)), tuple(low for low, _ in cut)
+
+
+#: Files that the library holds open, the last used last: opening one costs as much as inflating some chunks of it.
+_OPEN: OrderedDict[str, netCDF4.Dataset] = OrderedDict()
+_MOST_OPEN = 4
+
+
+def _opened(path: str) -> netCDF4.Dataset:
+    """An open file; the caller holds the lock."""
+    if path not in _OPEN:
+        while len(_OPEN) >= _MOST_OPEN:
+            _OPEN.popitem(last=False)[1].close()
+        opened = netCDF4.Dataset(path)
+        opened.set_auto_maskandscale(False)
+        _OPEN[path] = opened
+    _OPEN.move_to_end(path)
+    return _OPEN[path]
+
+
+def close_files() -> None:
+    """Close what the library holds open; whoever still reads opens it again."""
+    with ONE_READER:
+        while _OPEN:
+            _OPEN.popitem()[1].close()
 
 
 @contextmanager
