@@ -15,6 +15,9 @@ from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.sources.plausible import count_doubtful
 
 DESIGN = sf.load_still(Path(__file__).parents[2] / "config" / "stills" / "single-slope-glass.yaml")
+FINE = {"dull": 0, "bright": 0, "values": 1}
+DULL = {"dull": 1, "bright": 0, "values": 1}
+BRIGHT = {"dull": 0, "bright": 1, "values": 1}
 
 
 def daily(clearness: np.ndarray, days: int = 60, latitude: float = 20.0, chunk: bool = False) -> xr.Dataset:
@@ -28,6 +31,22 @@ def daily(clearness: np.ndarray, days: int = 60, latitude: float = 20.0, chunk: 
     return weather.chunk(time=7) if chunk else weather
 
 
+def found(weather: xr.Dataset) -> dict[str, int]:
+    """What is doubted of the months of some days."""
+    irradiation = weather["irradiation"].to_numpy()
+    month = weather["time"].dt.month.to_numpy()
+    sums, days = np.zeros((12, irradiation.shape[1])), np.zeros((12, irradiation.shape[1]))
+    np.add.at(sums, month - 1, np.nan_to_num(irradiation))
+    np.add.at(days, month - 1, np.isfinite(irradiation))
+    return count_doubtful(sums, days, weather["latitude"].to_numpy())
+
+
+def run(weather: xr.Dataset, **needs: float) -> dict[str, int]:
+    """The same of a run."""
+    monthly = sf.monthly_yield(weather, DESIGN, method="rule", **needs)
+    return json.loads(monthly.attrs["counts"])["clearness"]
+
+
 @pytest.mark.parametrize("chunk", [False, True])
 def test_records_out_of_range_are_counted_and_told(chunk):
     # 0.6 is an ordinary sky; 0.6 / 3.6 is the same read in Wh as if it were kJ; 0.88 is brighter than any sky.
@@ -38,13 +57,51 @@ def test_records_out_of_range_are_counted_and_told(chunk):
     assert any("WARNING: at 1 of 3 cells the sunshine of the whole record is more than 0.85" in line for line in told)
 
 
-def test_short_records_and_low_suns_are_not_judged():
-    for weather in (daily(np.array([0.1]), days=19), daily(np.array([0.1]), days=20, latitude=89.0)):
-        assert int(count_doubtful(weather)["counts"].sel(count="clearness:dull").sum()) == 0
-    assert int(count_doubtful(daily(np.array([0.1]), days=20))["counts"].sel(count="clearness:dull").sum()) == 1
+def test_ordinary_records_are_not_warned_of():
+    monthly = sf.monthly_yield(daily(np.array([0.3, 0.6, 0.75])), DESIGN, method="rule")
+    assert json.loads(monthly.attrs["counts"])["clearness"] == {"dull": 0, "bright": 0, "values": 3}
+    assert not any("WARNING" in line for line in monthly.attrs["conventions"])
+
+
+@pytest.mark.parametrize(("units", "dull"), [("kWh m-2", 0), ("MJ m-2", 2)])
+def test_wrong_units_of_files_are_noticed(tmp_path, units, dull):
+    """About 6 kWh m-2 a day are 21 MJ m-2. Taken for MJ m-2 they are too little, though any one day may be so dull."""
+    weather = daily(np.array([0.6, 0.6]))
+    file = xr.Dataset(
+        {"rsds": (("time", "lat", "lon"), weather["irradiation"].to_numpy()[:, None] / 3.6, {"units": units})},
+        coords={"time": weather["time"], "lat": ("lat", [20.0], {"units": "degrees_north"}),
+                "lon": ("lon", [10.0, 11.0], {"units": "degrees_east"})})
+    file.to_netcdf(tmp_path / "w.nc")
+    monthly = sf.monthly_yield(sf.open_weather(str(tmp_path / "w.nc"), kind="netcdf"), DESIGN, method="rule")
+    assert json.loads(monthly.attrs["counts"])["clearness"] == {"dull": dull, "bright": 0, "values": 2}
+    told = [line for line in monthly.attrs["conventions"] if line.startswith("WARNING: at 2 of 2 cells the sunshine")]
+    assert len(told) == (dull > 0)
+
+
+@pytest.mark.parametrize(("clearness", "doubted"), [(0.1, DULL), (0.92, BRIGHT)])
+def test_short_records_and_low_suns_are_not_judged(clearness, doubted):
+    assert found(daily(np.array([clearness]), days=20)) == doubted
+    assert found(daily(np.array([clearness]), days=19)) == FINE
+    assert found(daily(np.array([clearness]), days=20, latitude=89.0)) == FINE
+
+
+def test_a_run_judges_no_short_record_either():
+    for days, doubted in ((19, FINE), (20, DULL)):
+        assert run(daily(np.array([0.1]), days=days), min_valid_days_share=0.05) == doubted
 
 
 def test_missing_days_do_not_make_a_record_dull():
-    weather = daily(np.array([0.6]))
-    weather["irradiation"][::2] = np.nan
-    assert int(count_doubtful(weather)["counts"].sel(count="clearness:dull").sum()) == 0
+    weather = daily(np.array([0.3]))
+    weather["irradiation"][::2] = np.nan  # half of 0.3 would be dull
+    assert found(weather) == FINE
+    assert run(weather, min_valid_days_share=0.05) == FINE
+
+
+def test_months_left_out_for_their_gaps_do_not_make_a_record_dull():
+    """Of the 61 days of two months, 40 are kept; the month with the gap is left out, not counted as dark."""
+    weather = daily(np.array([0.3]), days=61)
+    weather["irradiation"][10:31] = np.nan
+    assert run(weather) == FINE
+    dim = daily(np.array([0.1]), days=61)
+    dim["irradiation"][10:31] = np.nan
+    assert run(dim) == DULL
