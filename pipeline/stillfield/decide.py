@@ -6,7 +6,7 @@ Run and notebook go through here, so that both decide alike.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 import pandas as pd
@@ -14,6 +14,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.decisions.cost import StillCost
+from stillfield.decisions.nearest import NearestCells
 from stillfield.decisions.need import need_of
 from stillfield.decisions.ranking import Ranking
 from stillfield.decisions.ranking_score import Screen
@@ -21,7 +22,8 @@ from stillfield.decisions.ranking_uncertainty import MonthlyYields, Uncertainty
 from stillfield.physics.still import Still
 from stillfield.stages.rank import rank_places
 from stillfield.stages.reach import daily_of_places, reach_places
-from stillfield.stages.size import DailyLitres, Sized, Wishes, size_places
+from stillfield.stages.size import DailyLitres, Sized, Wishes, size_places, values_at_places
+from stillfield.stages.upgrade import Change, upgrade_places
 
 
 @dataclass(frozen=True)
@@ -107,6 +109,7 @@ def usual_wishes(litres_per_person_day: float | None = None) -> Wishes:
 def decide(
     monthly: xr.Dataset, places: pd.DataFrame, *, still: Still, cost: StillCost | None = None,
     wishes: Wishes | None = None, preferences: Preferences | None = None, days: Days | None = None,
+    change: Change | None = None,
 ) -> Decision:
     """Size and rank places.
 
@@ -126,6 +129,8 @@ def decide(
         How they are ordered.
     days : Days, optional
         Daily litres; without them no tank is sized.
+    change : Change, optional
+        A modification of the still, compared with the still as it stands; needs `cost`.
 
     Returns
     -------
@@ -144,12 +149,27 @@ def decide(
         stamps: Sequence[str] = [str(stamp)[:10] for stamp in days.time.values]
         daily = DailyLitres(litres, days.time.dt.month.to_numpy().astype(np.int64), stamps)
     sized = size_places(places, reach, monthly, still=still, cost=cost, wishes=wanted, days=daily)
+    if cost is not None and change is not None:
+        sized = _with_change(sized, reach, monthly, cost, change)
     order = rank_places(
         sized.places, _monthly_yields(sized, wanted), weights=ways.weights, screens=ways.screens,
         uncertainty=ways.uncertainty, top=ways.top,
     )
     return Decision(order.places, _in_order(sized.months, order.places), _in_order(sized.storage, order.places),
                     order.ranking, (*sized.notes, order.ranking.summary))
+
+
+def _with_change(
+    sized: Sized, reach: NearestCells, monthly: xr.Dataset, cost: StillCost, change: Change
+) -> Sized:
+    """Add what a modification of the still does."""
+    litres = sized.months["yield_l_m2_month"].to_numpy(dtype=float).reshape(len(sized.places), -1).T
+    found = upgrade_places(
+        sized.places, litres, values_at_places(monthly, "monthly_yield_rule", reach), cost=cost, change=change,
+        typical=monthly.attrs.get("record") == "typical-year",
+    )
+    return replace(sized, places=sized.places.assign(**found.places), months=sized.months.assign(**found.months),
+                   notes=(*sized.notes, *found.notes))
 
 
 def _monthly_yields(sized: Sized, wishes: Wishes) -> MonthlyYields:

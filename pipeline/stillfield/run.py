@@ -19,7 +19,9 @@ from stillfield.settings.load import resolved_yaml
 from stillfield.settings.model import RunSettings
 from stillfield.settings.still_file import StillDesign
 from stillfield.stages.audit import Audit, Sample, audit
+from stillfield.stages.rank import rank_region
 from stillfield.stages.read import describe_inputs
+from stillfield.stages.upgrade import Change
 from stillfield.stages.write import Results, write_results
 
 log = logging.getLogger(__name__)
@@ -88,6 +90,7 @@ def _one_still(
         decision = decide(
             monthly, places, still=design.still, cost=design.cost, wishes=wishes_of(settings),
             preferences=preferences_of(settings), days=days,
+            change=None if design.modification is None else Change(design.modification, settings.rule.efficiency),
         )
         for note in decision.notes:
             log.info("%s", note)
@@ -98,7 +101,8 @@ def _one_still(
     title = f"Solar still yield, {settings.name}"
     condition = f", {still.condition}" if method.knows_condition else ""
     line = f"Still {still.name}{condition}; method {method.name}."
-    remarks = (*_remarks(monthly, method, audited), *(() if decision is None else decision.notes))
+    cells = rank_region(monthly, settings.rank.weights.by_criterion())
+    remarks = (*_remarks(monthly, method, audited), *(() if decision is None else decision.notes), cells.attrs["note"])
     log.info("writing to %s", folder)
     files = write_results(
         folder,
@@ -106,6 +110,7 @@ def _one_still(
             monthly, decision, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
             inputs, land=None if settings.map.land is None else settings.map.land.path, remarks=remarks,
             facts={"counts": {"weather": counts}, "audit": None if audited is None else asdict(audited)},
+            cells=cells,
         ),
     )
     return summarise(

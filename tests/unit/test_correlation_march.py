@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 
 from stillfield.methods.fit_store import fit_for
 from stillfield.physics.correlation import VARIANTS, DailyCorrelation, Day
+from stillfield.physics.correlation_compiled import _walk
 from stillfield.physics.correlation_march import CorrelationMarch, daily_litres, rows
 from stillfield.physics.still import Still
 from stillfield.settings.still_file import load_still_file
@@ -201,6 +202,13 @@ def test_broadcast_fields_are_filled() -> None:
     for engine in ENGINES:
         ours, theirs = (daily_litres(fits("daily"), one, engine=engine)[0][0] for one in (spread, full))
         np.testing.assert_array_equal(ours, theirs)
+
+
+def test_every_walk_is_kept_under_a_name_of_its_own() -> None:
+    """Two processes that compile two walks at once must not be able to put one in the place of the other."""
+    walks = [_walk(variant, from_weather) for variant in VARIANTS for from_weather in (False, True)]
+    names = {walk.stats.cache_path + walk._cache._cache_file._index_name for walk in walks}
+    assert len(names) == len(walks) == 2 * len(VARIANTS)
 
 
 def test_correlations_that_cannot_walk_together_are_refused() -> None:

@@ -249,6 +249,9 @@ def _walk(variant: str, from_weather: bool) -> Any:
                     _thawed(temp, score, made, frost[one].reshape(-1)[to:], count)
                 _held(x, numbers, ceilings[one], made, count)
 
+    # What numba keeps it files by this name, and numbers within it. Under one name two processes could take one number
+    # for two walks.
+    walk.__qualname__ = f"walk_{variant}_from_{'weather' if from_weather else 'predictors'}"
     try:
         return njit(error_model="numpy", nogil=True, cache=True)(walk)
     except RuntimeError:  # no folder to keep the cache in: compile anew in every process

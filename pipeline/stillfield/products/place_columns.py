@@ -54,6 +54,18 @@ PLACE_COLUMNS: tuple[Column, ...] = (
     Column("cost_per_litre_low", "currency L-1", "The same with low prices, long lives and the high yield."),
     Column("cost_per_litre_high", "currency L-1", "The same with high prices, short lives and the low yield."),
     Column("annual_cost_per_person", "currency year-1", "Yearly cost of the stills of one person."),
+    Column("modification", "", "Change to the still that is compared with the still as it stands."),
+    Column("modification_pays", "", "Whether it makes the litre of a year cheaper: pays, does not pay, or cannot tell "
+           "where the intervals of factor and cost leave both open."),
+    Column("modification_factor", "1", "Litres of a year with it over litres without it, central figure."),
+    Column("modification_factor_needed", "1", "Such a factor from which on it pays, central cost."),
+    Column("modification_capital_to_break_even_per_m2", "currency m-2", "What it may cost to buy before it stops paying; "
+           "below 0 it would not pay even as a gift."),
+    Column("modification_panel_wp_per_m2", "Wp m-2", "Panel that drives it in the month of least sunshine."),
+    Column("annual_yield_modified_l_m2_year", "L m-2 year-1", "Distillate of a mean year with it."),
+    Column("cost_per_litre_modified", "currency L-1", "Cost per litre with it, central cost and factor."),
+    Column("cost_per_litre_modified_low", "currency L-1", "The same with the high end of its factor."),
+    Column("cost_per_litre_modified_high", "currency L-1", "The same with the low end of its factor."),
     Column("feed_l_m2_day", "L m-2 d-1", "Feed water to bring per basin area in the sizing month."),
     Column("brine_l_m2_day", "L m-2 d-1", "Brine to get rid of per basin area in the sizing month."),
     Column("salt_kg_m2_year", "kg m-2 year-1", "Salt left over per basin area in a year."),
@@ -103,6 +115,13 @@ MONTH_COLUMNS: tuple[Column, ...] = (
     Column("feed_l_m2_month", "L m-2 month-1", "Feed water to bring per basin area."),
     Column("brine_l_m2_month", "L m-2 month-1", "Brine to get rid of per basin area."),
     Column("salt_kg_m2_month", "kg m-2 month-1", "Salt left over per basin area."),
+    Column("modification_pays", "", "Whether the change makes the litre of the month cheaper, where a month bears its "
+           "share of the days of the year's cost: pays, does not pay, or cannot tell."),
+    Column("yield_modified_l_m2_month", "L m-2 month-1", "Distillate of the month with the change."),
+    Column("cost_per_litre", "currency L-1", "The month's share of the yearly cost over its litres, central figures."),
+    Column("cost_per_litre_modified", "currency L-1", "The same with the change."),
+    Column("cost_per_litre_modified_low", "currency L-1", "The same with the high end of its factor."),
+    Column("cost_per_litre_modified_high", "currency L-1", "The same with the low end of its factor."),
 )
 
 #: Columns of the table of places and tanks.

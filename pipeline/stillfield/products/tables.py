@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import csv
 import textwrap
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -58,7 +58,9 @@ class Column:
 
 #: Columns of the table of cells, in order; `site` leads where there are sites.
 CELL_COLUMNS: tuple[Column, ...] = (
-    Column("rank", "1", "Place by litres a day in the worst month; equal cells share a rank."),
+    Column("rank", "1", "1 is the best cell by the weights that cells know; equal cells share a rank."),
+    Column("score", "1", "Weighted mean of what is known of cells (litres of the worst month, reliability, litres of a "
+           "year), each scaled 0 to 1 over the cells of the region."),
     Column("latitude_deg", "deg north", "Latitude of the cell centre."),
     Column("longitude_deg", "deg east", "Longitude of the cell centre."),
     Column("worst_month", "", "Month with the fewest litres a day."),
@@ -73,18 +75,18 @@ CELL_COLUMNS: tuple[Column, ...] = (
 )
 #: Variables the table of cells takes when they are there.
 _OPTIONAL = ("annual_yield_low", "annual_yield_high", "annual_yield_rule", "monthly_yield_low", "monthly_yield_high",
-             "monthly_yield_rule", "days_used")
+             "monthly_yield_rule", "days_used", "cell_rank", "cell_score")
 SITE_COLUMN = Column("site", "", "Identifier of the site.")
 
 
 def cells_frame(monthly: xr.Dataset) -> pd.DataFrame:
-    """One row per cell or site that has a value, best worst month first.
+    """One row per cell or site that has a value, best first.
 
     Parameters
     ----------
     monthly : Dataset
-        Monthly result with monthly_yield, annual_yield, worst_month and worst_month_yield; band, rule and
-        day counts where there are any.
+        Monthly result with monthly_yield, annual_yield, worst_month and worst_month_yield; band, rule, day counts
+        and ``cell_rank`` with ``cell_score`` where there are any. Cells without a rank are ranked by their worst month.
 
     Returns
     -------
@@ -121,7 +123,8 @@ def cells_frame(monthly: xr.Dataset) -> pd.DataFrame:
     frame = pd.DataFrame(_cell_values(flat, with_site=space == ["site"]))
     order = [column.name for column in CELL_COLUMNS]
     order = [SITE_COLUMN.name, *order] if "site" in frame else order
-    frame["rank"] = frame["worst_month_yield_l_m2_day"].rank(method="min", ascending=False).astype("Int64")
+    if "rank" not in frame:
+        frame["rank"] = frame["worst_month_yield_l_m2_day"].rank(method="min", ascending=False).astype("Int64")
     keys = ["rank", *(["site"] if "site" in frame else []), "latitude_deg", "longitude_deg"]
     rising = [key != "latitude_deg" for key in keys]
     return frame.sort_values(keys, ascending=rising, kind="stable", na_position="last")[order].reset_index(drop=True)
@@ -146,6 +149,9 @@ def _cell_values(flat: xr.Dataset, *, with_site: bool) -> dict[str, Any]:
     by_month = {int(month): flat["monthly_yield"].values[row] for row, month in enumerate(flat["month"].values)}
     for number, key in enumerate(_MONTH_KEYS, start=1):
         values[f"yield_{key}_l_m2_month"] = _rounded(by_month.get(number, nothing))
+    if "cell_rank" in flat:
+        values["rank"] = pd.array(np.asarray(flat["cell_rank"].values, dtype=float)).astype("Int64")
+    values["score"] = np.asarray(flat["cell_score"].values, dtype=float) if "cell_score" in flat else nothing
     used = flat["days_used"].values.min(axis=0) if "days_used" in flat else nothing
     values["days_used_min"] = pd.array(np.asarray(used, dtype=float)).astype("Int64")
     return values
@@ -236,7 +242,7 @@ def _harmless(text: str) -> str:
 
 def write_notes(
     path: str | Path,
-    columns: Iterable[Column],
+    columns: Iterable[Column] | Mapping[str, Iterable[Column]],
     *,
     title: str = "",
     caution: str = WATER_CAUTION,
@@ -248,8 +254,8 @@ def write_notes(
     ----------
     path : str or Path
         File to write, exactly as named; READ-ME-FIRST.txt beside the tables.
-    columns : iterable of Column
-        Dictionary of the columns, in the order of the table.
+    columns : iterable of Column, or mapping of str to it
+        Dictionary of the columns, in the order of the table; by name of the file where there are several.
     title : str
         Heading.
     caution : str
@@ -273,7 +279,9 @@ def write_notes(
     parts = [title] if title else []
     parts.append("BEFORE ANYONE DRINKS\n" + textwrap.fill(caution, 96))
     parts += [textwrap.fill(remark, 96) for remark in remarks]
-    parts.append("\n".join(["COLUMNS", *map(_entry, columns)]))
+    tables = {f"COLUMNS OF {name}": listed for name, listed in columns.items()} if isinstance(columns, Mapping) \
+        else {"COLUMNS": columns}
+    parts += ["\n".join([heading, *map(_entry, listed)]) for heading, listed in tables.items()]
     Path(path).write_text("\n\n".join(parts) + "\n", encoding="utf-8", newline="\n")
 
 

@@ -1,4 +1,4 @@
-"""Rank: which villages to visit first, how sure the order is, and what drives it."""
+"""Rank: which villages to visit first, how sure the order is, and what drives it; cells of the region as well."""
 
 from __future__ import annotations
 
@@ -7,12 +7,15 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
+import xarray as xr
 
 from stillfield.decisions.ranking import PlaceTable, Ranking
 from stillfield.decisions.ranking import rank_places as ranked
+from stillfield.decisions.ranking_cells import rank_cells
 from stillfield.decisions.ranking_reasons import drivers_words
 from stillfield.decisions.ranking_score import Criterion, Screen
 from stillfield.decisions.ranking_uncertainty import MonthlyYields, Uncertainty, YieldDraws, inversely, yield_draws
+from stillfield.decisions.reliability import reached_yields
 from stillfield.errors import PlacesError
 
 #: Criteria by their name in the run file. Salty sources and long walks to water come first: that is where a still
@@ -26,7 +29,17 @@ CRITERIA: dict[str, Criterion] = {
     "distance": Criterion("distance", "distance_to_feed_km", True, unit="km"),
 }
 USUAL_WEIGHTS = {"yield": 0.3, "people": 0.3, "salinity": 0.2, "distance": 0.2}
-#: Score difference below which two places count as level; see `decisions.ranking`.
+#: What is known of cells, by the weight it takes. With one still the litre is cheapest where a year gives most.
+CELL_CRITERIA: dict[str, Criterion] = {
+    "yield": Criterion("litres a day in the worst month", "worst_month_yield", True, unit="L m-2 d-1"),
+    "reliability": Criterion("poor year over usual year in that month", "reliability", True, unit="1"),
+    "cost": Criterion("litres of a year", "annual_yield", True, unit="L m-2 year-1"),
+}
+#: Litres are rounded before cells are compared: what looks equal in the table has an equal rank. [decimals]
+_CELL_DECIMALS = 2
+#: Score difference up to which cells share a rank. A million scores lie so close that the tolerance for places would
+#: chain all of them into one.
+_CELL_TIE = 1e-9
 _FIRST = ("rank", "name", "id", "score", "rank_low", "rank_high", "top_probability")
 
 
@@ -95,6 +108,56 @@ def rank_places(
         draws=draws, uncertainty=uncertainty, top=top,
     )
     return Order(_ordered(table, found), found)
+
+
+def rank_region(monthly: xr.Dataset, weights: Mapping[str, float] | None = None) -> xr.Dataset:
+    """Score and rank the cells or sites of a region, by what of the weights can be known of a cell.
+
+    Parameters
+    ----------
+    monthly : xarray.Dataset
+        As `aggregate` gives it.
+    weights : mapping of str to float, optional
+        As for places; a weight without a criterion in `CELL_CRITERIA` counts nothing, and where no other is left the
+        litres of the worst month decide.
+
+    Returns
+    -------
+    xarray.Dataset
+        ``cell_score`` (0 to 1) and ``cell_rank`` (from 1) on space, NaN where a month is missing; attribute ``note``
+        says in words what was weighed.
+    """
+    stated = dict(USUAL_WEIGHTS if weights is None else weights)
+    used = [replace(one, weight=stated.get(name, 0.0)) for name, one in CELL_CRITERIA.items()
+            if stated.get(name, 0.0) > 0 and (name != "reliability" or monthly.attrs.get("record") != "typical-year")]
+    used = used or [CELL_CRITERIA["yield"]]
+    space = [dim for dim in ("latitude", "longitude", "site") if dim in monthly.dims]
+    worst = monthly["worst_month"].transpose(*space).to_numpy()
+    known = np.isfinite(worst).ravel()
+    columns = {one.column: _of_cells(monthly, one.column, space, worst) for one in used}
+    score, rank = np.full(known.size, np.nan), np.full(known.size, np.nan)
+    if known.any():
+        found = rank_cells(columns, used, valid=known, tie_tolerance=_CELL_TIE)
+        score, rank = found.score, np.where(found.rank > 0, found.rank, np.nan)
+    told = ", ".join(f"{one.name} (weight {one.weight:g})" for one in used)
+    return xr.Dataset(
+        {"cell_score": (space, score.reshape(worst.shape)), "cell_rank": (space, rank.reshape(worst.shape))},
+        attrs={"note": f"Cells are ranked by {told}; other weights, and limits for places, say nothing of cells."},
+    )
+
+
+def _of_cells(
+    monthly: xr.Dataset, column: str, space: Sequence[str], worst: np.ndarray
+) -> np.ndarray:
+    """Values of a criterion, one per cell."""
+    if column != "reliability":
+        litres = monthly[column].transpose(*space).to_numpy().astype(np.float64)
+        return np.round(litres, _CELL_DECIMALS).ravel()
+    by_year = monthly["monthly_yield_by_year"].transpose("year", "month", *space).to_numpy()
+    month = np.nan_to_num(worst - 1.0, nan=0.0).astype(np.int64)[None, None]
+    reached = reached_yields(np.take_along_axis(by_year, month, axis=1)[:, 0])
+    share = reached.p90 / np.where(reached.p50 > 0, reached.p50, np.nan)
+    return np.asarray(np.round(share, _CELL_DECIMALS)).ravel()
 
 
 def _criteria(weights: Mapping[str, float] | None, table: pd.DataFrame) -> list[Criterion]:

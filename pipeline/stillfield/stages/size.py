@@ -172,16 +172,31 @@ def _with_factor(monthly: xr.Dataset, reach: NearestCells, factor: FieldFactor |
     """Litres of the places: of the condition band, or where a trial has pinned the still down, of its factor."""
     names = {end: f"monthly_yield{end}" for end in ("", "_low", "_high", "_by_year")}
     if factor is None:
-        return {name: _taken(monthly, name, reach) for name in names.values()}
-    central = _taken(monthly, names[""], reach)
+        return {name: values_at_places(monthly, name, reach) for name in names.values()}
+    central = values_at_places(monthly, names[""], reach)
     return {
         names[""]: central * factor.value, names["_low"]: central * factor.low, names["_high"]: central * factor.high,
-        names["_by_year"]: _taken(monthly, names["_by_year"], reach) * factor.value,
+        names["_by_year"]: values_at_places(monthly, names["_by_year"], reach) * factor.value,
     }
 
 
-def _taken(monthly: xr.Dataset, name: str, reach: NearestCells) -> Array:
-    """Values of the cell of every place, place last; NaN where none is near enough."""
+def values_at_places(monthly: xr.Dataset, name: str, reach: NearestCells) -> Array:
+    """Values of the cell of every place.
+
+    Parameters
+    ----------
+    monthly : xarray.Dataset
+        As `aggregate` gives it.
+    name : str
+        Variable.
+    reach : NearestCells
+        Cell of every place.
+
+    Returns
+    -------
+    ndarray, shape (..., place)
+        NaN where no cell is near enough.
+    """
     space = [dim for dim in ("latitude", "longitude", "site") if dim in monthly.dims]
     values = monthly[name].transpose(..., *space).to_numpy()
     flat = values.reshape(*values.shape[: values.ndim - len(space)], -1)
@@ -210,8 +225,8 @@ def _yield_columns(yields: Mapping[str, Array], monthly: xr.Dataset, reach: Near
     columns = {f"yield_{month[:3].lower()}_l_m2_month": months[number] for number, month in enumerate(MONTH_NAMES)}
     for end in ("", "_low", "_high"):
         columns[f"annual_yield{end}_l_m2_year"] = yields[f"monthly_yield{end}"].sum(axis=0)
-    columns["annual_yield_rule_l_m2_year"] = _taken(monthly, "monthly_yield_rule", reach).sum(axis=0)
-    columns["days_used_min"] = _taken(monthly, "days_used", reach).min(axis=0)
+    columns["annual_yield_rule_l_m2_year"] = values_at_places(monthly, "monthly_yield_rule", reach).sum(axis=0)
+    columns["days_used_min"] = values_at_places(monthly, "days_used", reach).min(axis=0)
     return columns
 
 

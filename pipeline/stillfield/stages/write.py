@@ -84,6 +84,8 @@ class Results:
         Sentences on assumptions and warnings.
     facts : mapping
         Further sections of the manifest.
+    cells : xarray.Dataset or None
+        Rank and score of the cells; ranked by the worst month without them.
     """
 
     monthly: xr.Dataset
@@ -96,6 +98,7 @@ class Results:
     land: Path | None = None
     remarks: tuple[str, ...] = ()
     facts: Mapping[str, Any] = field(default_factory=dict)
+    cells: xr.Dataset | None = None
 
 
 def check_outputs(folders: Iterable[Path], *, land: Path | None = None) -> None:
@@ -314,8 +317,9 @@ def _write_maps(stage: Path, results: Results) -> None:
 
 
 def _write_tables(stage: Path, results: Results) -> None:
-    write_csv(cells_frame(results.monthly), stage / "cells.csv")
-    columns = list(CELL_COLUMNS)
+    cells = results.monthly if results.cells is None else results.monthly.assign(results.cells)
+    write_csv(cells_frame(cells), stage / "cells.csv")
+    columns = {"cells.csv": list(CELL_COLUMNS)}
     if results.decision is not None:
         tables = {"places": (results.decision.places, PLACE_COLUMNS), "places_months": (results.decision.months,
                   MONTH_COLUMNS), "places_storage": (results.decision.storage, STORAGE_COLUMNS)}
@@ -324,8 +328,7 @@ def _write_tables(stage: Path, results: Results) -> None:
                 continue
             present = [column for column in known if column.name in table]
             write_csv(_in_words(table), stage / f"{name}.csv", columns=[column.name for column in present])
-            columns += present
-        columns = list({column.name: column for column in reversed(columns)}.values())[::-1]
+            columns[f"{name}.csv"] = present
     uneven = (_NO_RASTERS,) if is_grid(results.monthly) and not makes_rasters(results.monthly) else ()
     write_notes(
         stage / "READ-ME-FIRST.txt", columns, title=results.title,

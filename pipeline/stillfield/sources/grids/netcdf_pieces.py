@@ -21,7 +21,7 @@ from stillfield.sources.recognise import Choice, Found, recognise
 #: Coordinates of stations that are kept where a file has them.
 _OF_SITES = ("elevation", "utc_offset_hours", "name")
 #: Size of the blocks weather is read in. [bytes]
-_BLOCK_BYTES = 64 * 2**20
+_BLOCK_BYTES = 16 * 2**20
 
 
 @dataclass(frozen=True)
@@ -231,7 +231,7 @@ def _hours(span: Any) -> float:
 
 
 def block_sizes(variable: xr.Variable, time_dim: str, sizes: Mapping[Any, int] | None = None) -> dict[Any, int]:
-    """Blocks of whole stored chunks, about 64 MiB each, growing along time first.
+    """Blocks of whole stored chunks, about 16 MiB each, growing along time first.
 
     Parameters
     ----------

@@ -161,6 +161,8 @@ def _through_library(
     for cut in _slices(variable, slab, np.dtype(file.coding.dtype).itemsize):
         with ONE_READER, _in_our_words(where):
             stored = _opened(file.path).variables[variable.name]
+            if variable.chunk is not None:
+                stored.set_var_chunk_cache(*_NO_CACHE)  # no chunk is asked for twice
             values = np.asarray(stored[tuple(slice(low, high) for low, high in cut)])
         if values.shape != tuple(high - low for low, high in cut) or values.dtype.kind not in "iuf":
             raise _changed(file.path, variable.name)
@@ -170,6 +172,8 @@ def _through_library(
 #: Files that the library holds open, the last used last: opening one costs as much as inflating some chunks of it.
 _OPEN: OrderedDict[str, netCDF4.Dataset] = OrderedDict()
 _MOST_OPEN = 4
+#: Size in bytes, slots and preemption of the library's own cache of chunks.
+_NO_CACHE = (0, 1, 0.75)
 
 
 def _opened(path: str) -> netCDF4.Dataset:
