@@ -11,7 +11,6 @@ from hypothesis import strategies as st
 
 from stillfield.methods.fit_store import fit_for
 from stillfield.physics.correlation import VARIANTS, DailyCorrelation, Day
-from stillfield.physics.correlation_compiled import _walk
 from stillfield.physics.correlation_march import CorrelationMarch, daily_litres, rows
 from stillfield.physics.still import Still
 from stillfield.settings.still_file import load_still_file
@@ -206,6 +205,8 @@ def test_broadcast_fields_are_filled() -> None:
 
 def test_every_walk_is_kept_under_a_name_of_its_own() -> None:
     """Two processes that compile two walks at once must not be able to put one in the place of the other."""
+    from stillfield.physics.correlation_compiled import _walk
+
     walks = [_walk(variant, from_weather) for variant in VARIANTS for from_weather in (False, True)]
     names = {walk.stats.cache_path + walk._cache._cache_file._index_name for walk in walks}
     assert len(names) == len(walks) == 2 * len(VARIANTS)
