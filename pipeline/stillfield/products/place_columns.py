@@ -59,8 +59,8 @@ PLACE_COLUMNS: tuple[Column, ...] = (
            "where the intervals of factor and cost leave both open."),
     Column("modification_factor", "1", "Litres of a year with it over litres without it, central figure."),
     Column("modification_factor_needed", "1", "Such a factor from which on it pays, central cost."),
-    Column("modification_capital_to_break_even_per_m2", "currency m-2", "What it may cost to buy before it stops paying; "
-           "below 0 it would not pay even as a gift."),
+    Column("modification_capital_to_break_even_per_m2", "currency m-2", "What it may cost to buy before it stops "
+           "paying; below 0 it would not pay even as a gift."),
     Column("modification_panel_wp_per_m2", "Wp m-2", "Panel that drives it in the month of least sunshine."),
     Column("annual_yield_modified_l_m2_year", "L m-2 year-1", "Distillate of a mean year with it."),
     Column("cost_per_litre_modified", "currency L-1", "Cost per litre with it, central cost and factor."),

@@ -21,9 +21,9 @@ from stillfield.errors import PlacesError
 #: Criteria by their name in the run file. Salty sources and long walks to water come first: that is where a still
 #: changes most.
 CRITERIA: dict[str, Criterion] = {
-    "yield": Criterion("yield", "sizing_yield_l_m2_day", True, unit="L m-2 d-1"),
+    "yield": Criterion("yield", "yield_for_need_l_m2_day", True, unit="L m-2 d-1"),
     "reliability": Criterion("reliability", "reliability", True, unit="1"),
-    "cost": Criterion("cost", "cost_per_litre", False, unit="L-1"),
+    "cost": Criterion("cost", "cost_per_litre", False, unit="money per L"),
     "people": Criterion("people", "population", True, scale="log", unit="people"),
     "salinity": Criterion("salinity", "feed_salinity_g_kg", True, unit="g kg-1"),
     "distance": Criterion("distance", "distance_to_feed_km", True, unit="km"),
@@ -53,10 +53,13 @@ class Order:
         First to visit first, every place kept.
     ranking : Ranking
         Scales, screens and the summary in words.
+    notes : tuple of str
+        How many are ranked, by what on which scale, and which weights counted nothing.
     """
 
     places: pd.DataFrame
     ranking: Ranking
+    notes: tuple[str, ...]
 
 
 def rank_places(
@@ -89,12 +92,12 @@ def rank_places(
     PlacesError
         If weights or screens cannot be used.
     """
-    used = _criteria(weights, table)
+    known = table.assign(yield_for_need_l_m2_day=_for_need(table, yields))
+    used, unused = _criteria(weights, known)
     reached = table["reason"].to_numpy() == ""
-    columns = {
-        name: np.where(reached, table[name].to_numpy(dtype=float), np.nan)
-        for name in dict.fromkeys([one.column for one in used] + [screen.column for screen in screens]) if name in table
-    }
+    wanted = ["sizing_yield_l_m2_day", *(one.column for one in used), *(screen.column for screen in screens)]
+    columns = {name: np.where(reached, known[name].to_numpy(dtype=float), np.nan)
+               for name in dict.fromkeys(wanted) if name in known}
     sites = [f"{lat:.4f} {lon:.4f}" for lat, lon in zip(table["cell_latitude_deg"], table["cell_longitude_deg"],
                                                         strict=True)]
     ids = tuple(table["id"].astype(str))
@@ -107,7 +110,20 @@ def rank_places(
         screens=[Screen("sizing_yield_l_m2_day", "above", 0.0, "no litres", missing_passes=False), *screens],
         draws=draws, uncertainty=uncertainty, top=top,
     )
-    return Order(_ordered(table, found), found)
+    scales = "; ".join(scale.words for scale in found.scales)
+    nothing = (f"Weights that count nothing, since no column or price is there for them: {', '.join(unused)}.",)
+    return Order(_ordered(table, found), found, (found.summary, f"Criteria of the places: {scales}.",
+                                                 *(nothing if unused else ())))
+
+
+def _for_need(table: pd.DataFrame, yields: MonthlyYields) -> np.ndarray:
+    """Litres of a day in the sizing month for the mean need of the year, so that places with other months compare."""
+    month = table["sizing_month"].to_numpy(dtype=float)
+    need = np.broadcast_to(yields.relative_need, (12, len(table)))
+    row = np.nan_to_num(month - 1.0, nan=0.0).astype(int)
+    relative = np.take_along_axis(need, row[None], axis=0)[0]
+    litres = table["sizing_yield_l_m2_day"].to_numpy(dtype=float)
+    return np.where(relative > 0, litres / np.where(relative > 0, relative, 1.0), np.nan)
 
 
 def rank_region(monthly: xr.Dataset, weights: Mapping[str, float] | None = None) -> xr.Dataset:
@@ -142,13 +158,12 @@ def rank_region(monthly: xr.Dataset, weights: Mapping[str, float] | None = None)
     told = ", ".join(f"{one.name} (weight {one.weight:g})" for one in used)
     return xr.Dataset(
         {"cell_score": (space, score.reshape(worst.shape)), "cell_rank": (space, rank.reshape(worst.shape))},
+        coords={name: coord for name, coord in monthly.coords.items() if set(coord.dims) <= set(space)},
         attrs={"note": f"Cells are ranked by {told}; other weights, and limits for places, say nothing of cells."},
     )
 
 
-def _of_cells(
-    monthly: xr.Dataset, column: str, space: Sequence[str], worst: np.ndarray
-) -> np.ndarray:
+def _of_cells(monthly: xr.Dataset, column: str, space: Sequence[str], worst: np.ndarray) -> np.ndarray:
     """Values of a criterion, one per cell."""
     if column != "reliability":
         litres = monthly[column].transpose(*space).to_numpy().astype(np.float64)
@@ -160,7 +175,8 @@ def _of_cells(
     return np.asarray(np.round(share, _CELL_DECIMALS)).ravel()
 
 
-def _criteria(weights: Mapping[str, float] | None, table: pd.DataFrame) -> list[Criterion]:
+def _criteria(weights: Mapping[str, float] | None, table: pd.DataFrame) -> tuple[list[Criterion], list[str]]:
+    """Criteria with a weight, and names of those that have a weight and no column."""
     stated = dict(USUAL_WEIGHTS if weights is None else weights)
     unknown = sorted(set(stated) - set(CRITERIA))
     if unknown or not any(value > 0 for value in stated.values()) or any(value < 0 for value in stated.values()):
@@ -176,13 +192,13 @@ def _criteria(weights: Mapping[str, float] | None, table: pd.DataFrame) -> list[
             wanted="a criterion whose column the table of places or the still file has",
             cure="Give weight to another criterion, or add the column.",
         )
-    return used
+    return used, [name for name, weight in stated.items() if weight > 0 and CRITERIA[name].column not in table]
 
 
 def _drawn_columns(drawn: YieldDraws, columns: Mapping[str, np.ndarray]) -> dict[str, np.ndarray]:
     made = {}
-    if "sizing_yield_l_m2_day" in columns:
-        made["sizing_yield_l_m2_day"] = drawn.drawn
+    if "yield_for_need_l_m2_day" in columns:
+        made["yield_for_need_l_m2_day"] = drawn.drawn
     if "cost_per_litre" in columns:
         made["cost_per_litre"] = inversely(columns["cost_per_litre"], drawn)
     return made
@@ -190,15 +206,17 @@ def _drawn_columns(drawn: YieldDraws, columns: Mapping[str, np.ndarray]) -> dict
 
 def _ordered(table: pd.DataFrame, found: Ranking) -> pd.DataFrame:
     told = found.places
+    # Where a place has no litres, that says all: the screen that asks for litres would only say it again.
+    reasons = ["; ".join(filter(None, [mine, *(place.reasons if not mine else place.reasons[1:])]))
+               for mine, place in zip(table["reason"], told, strict=True)]
     result = table.assign(
         rank=pd.array([place.rank for place in told], dtype="Int64"),
         score=[np.nan if place.score is None else place.score for place in told],
         rank_low=pd.array([place.rank_low for place in told], dtype="Int64"),
         rank_high=pd.array([place.rank_high for place in told], dtype="Int64"),
         top_probability=[np.nan if place.top_probability is None else place.top_probability for place in told],
-        drivers=[drivers_words(place.drivers) for place in told], remark=[place.words for place in told],
-        reason=["; ".join(dict.fromkeys(filter(None, [mine, *place.reasons])))
-                for mine, place in zip(table["reason"], told, strict=True)],
+        drivers=[drivers_words(place.drivers) for place in told], reason=reasons,
+        remark=[f"Left out: {why}." if why else place.words for why, place in zip(reasons, told, strict=True)],
     )
     result = result.iloc[list(found.order)].reset_index(drop=True)
     return result[[*_FIRST, *[column for column in result.columns if column not in _FIRST]]]
