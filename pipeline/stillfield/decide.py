@@ -156,7 +156,7 @@ def decide(
         uncertainty=ways.uncertainty, top=ways.top,
     )
     return Decision(order.places, _in_order(sized.months, order.places), _in_order(sized.storage, order.places),
-                    order.ranking, (*sized.notes, order.ranking.summary))
+                    order.ranking, (*sized.notes, *order.notes))
 
 
 def _with_change(

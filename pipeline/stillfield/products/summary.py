@@ -101,7 +101,7 @@ def _middle(values: np.ndarray, decimals: int = 0) -> str:
 
 def _places(ranked: pd.DataFrame) -> list[str]:
     first = ranked[ranked["rank"].notna()].head(_BEST)
-    lines = [f"First to visit, of {len(ranked)} places:"]
+    lines = [f"First to visit, of {len(ranked)} places:" if len(first) else f"None of {len(ranked)} places is ranked:"]
     width = max([len(str(name)) for name in first["name"]] + [5])
     for row in first.to_dict("records"):
         month = MONTH_NAMES[int(row["sizing_month"]) - 1]
@@ -114,11 +114,11 @@ def _places(ranked: pd.DataFrame) -> list[str]:
         )
     without = int(ranked["rank"].isna().sum())
     if without:
-        lines.append(f"  {without} places without litres; the reasons stand in places.csv.")
+        lines.append(f"  {without} left out; the reasons stand in places.csv.")
     return lines
 
 
-def _sureness(row: Mapping[str, Any]) -> str:
+def _sureness(row: Mapping[Any, Any]) -> str:
     """Rank interval of a place, where it was drawn."""
     low, high = row.get("rank_low"), row.get("rank_high")
     return "" if pd.isna(low) or pd.isna(high) or low == high else f"; rank {low} to {high}"

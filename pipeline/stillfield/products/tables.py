@@ -25,12 +25,19 @@ _DANGEROUS = ("=", "+", "-", "@", "\t", "\r", "\n")
 #: Decimals by the unit at the end of a column name; the first that fits counts.
 _DECIMALS: tuple[tuple[tuple[str, ...], int], ...] = (
     (("_deg",), 5),
-    (("_l_m2_month", "_l_m2_year", "_l_m2_day", "_l_day", "_l_year", "_l"), 2),
+    (("_l_m2_month", "_l_m2_year", "_l_m2_day", "_l_person_day", "_l_day", "_l_year", "_l", "_l_distillate"), 2),
+    (("_kg_m2_month", "_kg_m2_year"), 2),
     (("_m2", "_km"), 2),
+    (("_spell_days", "_wp_per_m2"), 0),
     (("_m", "_percent", "_days"), 1),
-    (("_share", "_probability"), 3),
+    (("_probability", "reliability", "_factor", "_factor_needed"), 2),
     (("score",), 4),
 )
+#: Shares, by how their name starts, get two decimals.
+_SHARES = ("share_of_",)
+#: Money, by how its name starts, gets three digits that count: prices are not better known.
+_MONEY = ("cost_per_litre", "annual_cost", "capital_", "modification_capital")
+_MONEY_DIGITS = 3
 #: Numbers without a unit above (people, grams per kilogram) stand as they are, to at most so many decimals.
 _MOST_DECIMALS = 4
 
@@ -172,9 +179,9 @@ def _rounded(values: NDArray[Any]) -> NDArray[np.float64]:
 def write_csv(frame: pd.DataFrame, path: str | Path, *, columns: Sequence[str] | None = None) -> None:
     """Write a table as plain CSV: UTF-8, commas, decimal points, one heading line.
 
-    Numbers get the decimals their unit deserves (litres 2, degrees 5), people and the like as many as they
-    have; missing is empty; truth values are yes and no. Text that a spreadsheet would run as a formula gets
-    an apostrophe in front; numbers stay numbers, negative ones too.
+    Numbers get the decimals their unit deserves (litres 2, degrees 5), money three digits that count, people and
+    the like as many as they have; missing is empty; truth values are yes and no. Text that a spreadsheet would run as
+    a formula gets an apostrophe in front; numbers stay numbers, negative ones too.
 
     Parameters
     ----------
@@ -213,8 +220,19 @@ def write_csv(frame: pd.DataFrame, path: str | Path, *, columns: Sequence[str] |
 
 
 def _text_cells(column: pd.Series[Any], name: str) -> list[str]:
-    decimals = next((count for ends, count in _DECIMALS if name.endswith(ends)), None)
+    if name.startswith(_MONEY):
+        return [_cell(value, _decimals_of_digits(value, _MONEY_DIGITS)) for value in column.tolist()]
+    shares = 2 if name.startswith(_SHARES) else None
+    decimals = next((count for ends, count in _DECIMALS if name.endswith(ends)), shares)
     return [_cell(value, decimals) for value in column.tolist()]
+
+
+def _decimals_of_digits(value: object, digits: int) -> int | None:
+    """Decimals that leave a number so many digits that count; below 0 for tens and hundreds."""
+    if not isinstance(value, float | np.floating) or not np.isfinite(value) or value == 0.0:
+        return None
+    # The exponent is that of the rounded number: 0.0999 to two digits is 0.10.
+    return digits - 1 - int(f"{float(value):.{digits - 1}e}".partition("e")[2])
 
 
 def _cell(value: object, decimals: int | None) -> str:
@@ -227,7 +245,8 @@ def _cell(value: object, decimals: int | None) -> str:
     if isinstance(value, float | np.floating):
         if not np.isfinite(value):
             return ""
-        text = f"{float(value):.{_MOST_DECIMALS if decimals is None else decimals}f}"
+        places = _MOST_DECIMALS if decimals is None else decimals
+        text = f"{round(float(value), places):.{max(places, 0)}f}"
         text = text.rstrip("0").rstrip(".") if decimals is None else text
         # A loss too small to print is zero, not minus zero.
         return text.lstrip("-") if float(text) == 0.0 else text

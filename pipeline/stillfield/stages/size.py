@@ -34,9 +34,10 @@ from stillfield.decisions.trial import FieldFactor
 from stillfield.physics.still import Still
 from stillfield.products.netcdf import MONTH_NAMES
 
-Array = NDArray[np.floating[Any]]
+Array = NDArray[np.float64]
 MONTHS = 12
-_NO_LITRES = "no litres: no cell with twelve known months is near enough, or a month gives nothing"
+_NO_CELL = "no litres: no cell knows all twelve months"
+_NO_YIELD = "no litres: a month with need gives nothing"
 
 
 @dataclass(frozen=True)
@@ -87,7 +88,7 @@ class DailyLitres:
         Of the days.
     """
 
-    litres: Array
+    litres: NDArray[np.floating[Any]]
     month: NDArray[np.int64]
     dates: Sequence[str]
 
@@ -159,7 +160,7 @@ def size_places(
     if days is not None:
         columns, storage = _over_days(table, days, wishes, cost)
         table = table.assign(**columns)
-    table = table.assign(**_of_people(table, wishes, cost, yields))
+    table = table.assign(**_of_people(table, wishes, cost, yields), reason=_reasons(reach, sizing))
     feed, said = _with_feed(table, yields, still, wishes)
     months = _month_table(table, yields, per_person, still, wishes, typical=typical)
     return Sized(
@@ -252,6 +253,14 @@ def _sizing(yields: Mapping[str, Array], per_person: Array, availability: float)
     }
 
 
+def _reasons(reach: NearestCells, sizing: Mapping[str, Any]) -> NDArray[np.str_]:
+    """Why a place has no litres; empty where it has."""
+    beyond = [f"no litres: the nearest cell with twelve known months is {km:.0f} km away, beyond "
+              "places.max_cell_distance_km" for km in reach.distance_km]
+    told = np.where(reach.cell < 0, _NO_CELL, np.where(reach.reached, _NO_YIELD, beyond))
+    return np.asarray(np.where(np.isfinite(sizing["area_per_person_m2"]), "", told), dtype=np.str_)
+
+
 def _reached_columns(yields: Mapping[str, Array], sizing: Mapping[str, Any], *, typical: bool) -> dict[str, Any]:
     """What is reached in half, three quarters and nine tenths of the years."""
     by_year = yields["monthly_yield_by_year"]
@@ -319,7 +328,6 @@ def _of_people(
     area = table["area_per_person_m2"].to_numpy(dtype=float)
     household = wishes.need.people_per_household
     columns["area_per_household_m2"] = area * household
-    columns["reason"] = np.where(np.isfinite(area), "", _NO_LITRES)
     people = table["population"].to_numpy(dtype=float) if "population" in table else None
     if people is not None:
         columns["need_l_day"] = table["need_l_person_day"] * people
@@ -345,7 +353,7 @@ def _with_feed(
 ) -> tuple[dict[str, Any], tuple[str, ...]]:
     """Feed and brine of one square metre in the sizing month, salt of its year, and what blending would allow."""
     salinity = table["feed_salinity_g_kg"].to_numpy(dtype=float) if "feed_salinity_g_kg" in table else None
-    factor = draw_off_factor(still.concentration_factor, wishes.flushing)  # type: ignore[arg-type]
+    factor = float(draw_off_factor(still.concentration_factor, wishes.flushing))  # type: ignore[arg-type]
     if not factor > 1.0:
         return {}, ("The still file's concentration_factor of 1 means that no salt is left: no feed or brine is told.",)
     day = feed_and_brine(table["sizing_yield_l_m2_day"].to_numpy(dtype=float), factor, salinity)
@@ -380,10 +388,11 @@ def _month_table(
         columns["years_of_record"] = reached.years.T.ravel()
     columns["need_l_person_day"] = np.tile(per_person, count)
     days = np.tile(DAYS_OF_MONTHS, count)
+    sized = (table["need_l_person_day"] / table["sizing_yield_l_m2_day"]).to_numpy(dtype=float)
     columns["share_of_need_at_sized_area"] = (
-        columns["yield_l_m2_month"] / days * np.repeat(table["area_per_person_m2"].to_numpy(dtype=float), MONTHS)
+        columns["yield_l_m2_month"] / days * np.repeat(sized, MONTHS)
         / np.where(columns["need_l_person_day"] > 0, columns["need_l_person_day"], np.nan))
-    factor = draw_off_factor(still.concentration_factor, wishes.flushing)  # type: ignore[arg-type]
+    factor = float(draw_off_factor(still.concentration_factor, wishes.flushing))  # type: ignore[arg-type]
     if factor > 1.0:
         salinity = np.repeat(table["feed_salinity_g_kg"].to_numpy(dtype=float), MONTHS) \
             if "feed_salinity_g_kg" in table else None
@@ -399,7 +408,7 @@ def _notes(wishes: Wishes, *, typical: bool, years: int) -> tuple[str, ...]:
     if typical:
         said.append("A typical year holds no poor year: how sure the litres are over the years is not told.")
     else:
-        said += [warning for warning in (years_warning(years),) if warning is not None]
+        said += [f"{warning[0].upper()}{warning[1:]}." for warning in (years_warning(years),) if warning is not None]
     if wishes.field_factor is not None:
         factor = wishes.field_factor
         said.append(f"Litres of places are the modelled ones times {factor.value:g} ({factor.low:g} to "
