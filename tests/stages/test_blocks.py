@@ -131,7 +131,7 @@ def test_memory_is_honoured_or_refused_before_anything_is_read() -> None:
     stored = Layout(np.arange(0, 350641, 744), np.arange(0, 722, 721), np.arange(0, 1441, 1440))
     with pytest.raises(MemoryLimitError, match=r"compute\.memory: .*744 times, 721 rows and 1440 columns"):
         plan_blocks(stored, variables=4, years=40, memory_bytes=4_000_000_000)
-    for allowed in (400_000_000, 1_000_000_000, 3_000_000_000):
+    for allowed in (700_000_000, 1_000_000_000, 3_000_000_000):
         plan = plan_blocks(Layout(np.arange(0, 350641, 744), np.arange(0, 101, 10), np.arange(0, 101, 10)),
                            variables=4, years=40, workers=8, memory_bytes=allowed)
         assert plan.memory_bytes <= allowed

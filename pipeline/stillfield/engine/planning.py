@@ -20,16 +20,16 @@ from stillfield.stages.prepare import LocalDays
 Edges = NDArray[np.int64]
 
 #: Memory of interpreter and libraries. [bytes]
-BASE_BYTES = 260_000_000
+BASE_BYTES = 400_000_000
 #: Weather of a window: enough to keep the cost of a call small, small enough to stay near the cache. [bytes]
-WINDOW_BYTES = 16_000_000
+WINDOW_BYTES = 12_000_000
 #: Days before a span that are walked through to know the state of the basin: what is left of any difference after
 #: them is far below the last digit.
 SPIN_UP_DAYS = 60
 #: Cells of a block where the chunks leave the choice.
 CELLS_WANTED = 4096
 #: How many times the weather of a window is held at most: as stored, in its place, and as what it is turned into.
-COPIES_HELD = 3.0
+COPIES_HELD = 4.0
 #: Result of a cell, without and per year. [bytes]
 CELL_BYTES, CELL_YEAR_BYTES = 3200, 12 * 12
 _VALUE_BYTES = 4
