@@ -18,7 +18,7 @@ from stillfield.decisions.trial import FieldFactor, apply_field_factor
 from stillfield.settings.trial_file import load_trial
 from stillfield.trial_weather import modelled_litres, site_days
 from stillfield.vocabulary import WATER_CAUTION
-from whole_runs import CONFIG, STILL, stillfield_command
+from whole_runs import CONFIG, SMALL_WEATHER, STILL, finished, months_of, stillfield_command, table, write_run
 
 #: Truth behind the invented log.
 FACTORS = {"plain": 0.82, "wick": 0.82 * 1.25}
@@ -94,6 +94,31 @@ def test_the_demonstration_finds_the_factors_it_was_made_with_and_the_better_sti
     assert " ".join(WATER_CAUTION.split()) in " ".join(text.split())
     factor = FieldFactor(**figures["stills"]["plain"]["still_field_factor"])
     assert apply_field_factor(100.0, factor)[0] == pytest.approx(82.0, abs=6.0)
+
+
+def test_the_factor_of_a_trial_pasted_into_a_run_file_multiplies_the_litres_of_places(finished_demo, tmp_path):
+    figures = json.loads((finished_demo[1] / "trial.json").read_text(encoding="utf-8"))
+    factor = figures["stills"]["plain"]["still_field_factor"]
+    keys = {"weather": SMALL_WEATHER, "places": {"table": str(CONFIG / "demo" / "villages.csv"),
+                                                "max_cell_distance_km": 60}}
+    plain, tried = (
+        {row["id"]: row for row in table(finished(write_run(tmp_path / f"{name}.yaml", **keys, **more), cwd=tmp_path)
+                                         / "places.csv") if row["annual_yield_l_m2_year"]}
+        for name, more in (("plain", {}), ("tried", {"still_field_factor": factor})))
+    assert len(plain) > 3
+    assert plain.keys() == tried.keys()
+    for place, before in plain.items():
+        after = tried[place]
+        for end, share in (("", "value"), ("_low", "low"), ("_high", "high")):
+            # The rule knows no condition: without a factor both ends are the central figure.
+            for name in (f"annual_yield{end}_l_m2_year", f"sizing_yield{end}_l_m2_day"):
+                assert float(after[name]) == pytest.approx(float(before[name]) * factor[share], abs=0.011)
+        assert months_of(after) == pytest.approx([litres * factor["value"] for litres in months_of(before)], abs=0.011)
+        area = float(before["area_per_person_m2"]) / factor["value"]
+        assert float(after["area_per_person_m2"]) == pytest.approx(area, abs=0.011)
+    notes = " ".join((tmp_path / "outputs" / "tried" / "READ-ME-FIRST.txt").read_text(encoding="utf-8").split())
+    assert f"the modelled ones times {factor['value']:g}" in notes
+    assert factor["source"] in notes
 
 
 def test_every_day_stands_in_the_table_with_its_row_of_the_log(finished_demo):
