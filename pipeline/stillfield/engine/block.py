@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property, lru_cache
 from importlib.util import find_spec
@@ -98,6 +98,8 @@ class BlockResult:
         Their numbers in the region.
     span : tuple of int, or None
         As in the plan.
+    size : int
+        Records times cells.
     sums : list of list of (ndarray of int or slice, MonthSums)
         For each still the months of the cells that have any, by groups of them.
     missing_days : ndarray of int, shape (cell,)
@@ -112,6 +114,7 @@ class BlockResult:
 
     cells: NDArray[np.int64]
     span: tuple[int, int] | None
+    size: int
     sums: list[list[tuple[NDArray[np.intp] | slice, MonthSums]]]
     missing_days: NDArray[np.int64]
     counts: Counts
@@ -130,7 +133,7 @@ class _Group:
     done: list[int]
 
 
-def work_block(work: Work, block: BlockPlan) -> BlockResult:
+def work_block(work: Work, block: BlockPlan, tell: Callable[[int], None] | None = None) -> BlockResult:
     """Walk all stills through one block.
 
     Parameters
@@ -139,6 +142,8 @@ def work_block(work: Work, block: BlockPlan) -> BlockResult:
         What is to be done.
     block : BlockPlan
         Where.
+    tell : callable, optional
+        Told after every window how many records times cells are done.
 
     Returns
     -------
@@ -156,6 +161,8 @@ def work_block(work: Work, block: BlockPlan) -> BlockResult:
             last = number == len(block.windows)
             first_day, weather = steps.take(window, last=last)
             walk.on(first_day, weather, last=last)
+            if tell is not None:
+                tell((window.stop - window.start) * block.cells)
     finally:
         work.reader.close()
     return walk.result(steps.counts)
@@ -304,7 +311,7 @@ class _Walk:
     def result(self, counts: Counts) -> BlockResult:
         """What the block gave."""
         return BlockResult(
-            self.cells, self.block.span,
+            self.cells, self.block.span, self.block.size,
             [[(group.cells, group.sums[number]) for group in self.groups] for number in range(len(self.work.stills))],
             self.missing_days, counts,
             {cell: np.stack(litres) for cell, litres in self.followed.items()},

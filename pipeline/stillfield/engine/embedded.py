@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
 from itertools import islice
 
@@ -10,7 +10,7 @@ from stillfield.engine.block import BlockResult, Work, work_block
 from stillfield.engine.planning import Plan
 
 
-def work_embedded(work: Work, plan: Plan) -> Iterator[BlockResult]:
+def work_embedded(work: Work, plan: Plan, tell: Callable[[int], None] | None = None) -> Iterator[BlockResult]:
     """Work all blocks of a plan in this process.
 
     Parameters
@@ -19,6 +19,8 @@ def work_embedded(work: Work, plan: Plan) -> Iterator[BlockResult]:
         What is done with every block.
     plan : Plan
         Blocks, and how many of them at the same time.
+    tell : callable, optional
+        Told after every window how many records times cells are done; from the thread that did it.
 
     Yields
     ------
@@ -27,12 +29,12 @@ def work_embedded(work: Work, plan: Plan) -> Iterator[BlockResult]:
     """
     if plan.workers == 1:
         for block in plan.blocks:
-            yield work_block(work, block)
+            yield work_block(work, block, tell)
         return
     waiting = iter(plan.blocks)
     with ThreadPoolExecutor(plan.workers, thread_name_prefix="block") as pool:
         running: set[Future[BlockResult]] = {
-            pool.submit(work_block, work, block) for block in islice(waiting, plan.workers)}
+            pool.submit(work_block, work, block, tell) for block in islice(waiting, plan.workers)}
         try:
             while running:
                 done, running = wait(running, return_when=FIRST_COMPLETED)
@@ -40,7 +42,7 @@ def work_embedded(work: Work, plan: Plan) -> Iterator[BlockResult]:
                     yield future.result()
                     following = next(waiting, None)
                     if following is not None:
-                        running.add(pool.submit(work_block, work, following))
+                        running.add(pool.submit(work_block, work, following, tell))
         finally:
             for future in running:
                 future.cancel()

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import threading
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 
@@ -30,7 +31,8 @@ from stillfield.stages.prepare import LocalDays, count_days, local_days, space_o
 from stillfield.stages.read import is_as_stored
 from stillfield.vocabulary import STEP_HOURS_DAILY
 
-Progress = Callable[[int, int], None]
+#: Told again and again which share of the work is done. [1]
+Progress = Callable[[float], None]
 
 #: Attributes that only tell the engine how to read.
 _OF_OPENING = ("stored", "stored_graphs", "ungated", "files")
@@ -263,7 +265,7 @@ def months_of(
     followed : iterable of int
         Cells whose daily litres are wanted.
     progress : callable, optional
-        Told after every block how many of how many are done.
+        Told after every window, or on a cluster after every block, which share of the work is done.
 
     Returns
     -------
@@ -284,15 +286,32 @@ def months_of(
         needs.min_valid_days_share, np.array(sorted(set(followed)), dtype=np.int64),
         _candidates(prepared), MOST_DAYS,
     )
-    return _gathered(prepared, work, _results(prepared, work), progress)
+    share = _Share(sum(block.size for block in prepared.plan.blocks), progress)
+    return _gathered(prepared, work, _results(prepared, work, share))
 
 
-def _results(prepared: Prepared, work: Work) -> Iterator[BlockResult]:
+class _Share:
+    """Which share of the work is done; told from several threads."""
+
+    def __init__(self, whole: int, progress: Progress | None) -> None:
+        self._whole, self._progress, self._done, self._lock = whole, progress, 0, threading.Lock()
+
+    def tell(self, done: int) -> None:
+        with self._lock:
+            self._done += done
+            if self._progress is not None:
+                self._progress(self._done / self._whole)
+
+
+def _results(prepared: Prepared, work: Work, share: _Share) -> Iterator[BlockResult]:
     if prepared.means.scheduler is None:
-        return work_embedded(work, prepared.plan)
+        yield from work_embedded(work, prepared.plan, share.tell)
+        return
     from stillfield.engine.cluster import work_on_cluster
 
-    return work_on_cluster(work, prepared.plan, scheduler=prepared.means.scheduler)
+    for result in work_on_cluster(work, prepared.plan, scheduler=prepared.means.scheduler):
+        share.tell(result.size)
+        yield result
 
 
 def _candidates(prepared: Prepared) -> NDArray[np.int64]:
@@ -308,12 +327,10 @@ def _candidates(prepared: Prepared) -> NDArray[np.int64]:
     return cells[np.unique(np.round(spots).astype(np.int64))] if cells.size else cells
 
 
-def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult], progress: Progress | None) -> Outcome:
+def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult]) -> Outcome:
     gathering = Gathering(work, prepared.plan)
-    for done, result in enumerate(results, start=1):
+    for result in results:
         gathering.take(result)
-        if progress is not None:
-            progress(done, len(prepared.plan.blocks))
     counted = _all_counts(prepared, gathering)
     said = [*prepared.weather.attrs.get("conventions", []), *sentences(counted)]
     weather = prepared.weather.copy(deep=False)

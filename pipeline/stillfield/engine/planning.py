@@ -81,6 +81,11 @@ class BlockPlan:
         return int((self.rows.stop - self.rows.start) * (self.columns.stop - self.columns.start))
 
     @property
+    def size(self) -> int:
+        """Records times cells."""
+        return sum(window.stop - window.start for window in self.windows) * self.cells
+
+    @property
     def longest(self) -> int:
         """Records of the longest window."""
         return int(max(window.stop - window.start for window in self.windows))
