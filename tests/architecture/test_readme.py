@@ -14,6 +14,9 @@ from stillfield import errors
 from stillfield.products.place_columns import PLACE_COLUMNS
 from stillfield.products.tables import CELL_COLUMNS
 from stillfield.settings.load import load_run
+from stillfield.settings.model import RunSettings
+from stillfield.settings.still_file import StillKeys
+from stillfield.settings.trial_file import TrialSettings
 from stillfield.vocabulary import METHODS, WATER_CAUTION
 from whole_runs import CONFIG, finished, table
 
@@ -82,6 +85,45 @@ def test_the_first_run_runs(tmp_path):
     near, far = table(finished(run_file, cwd=tmp_path) / "places.csv")
     assert (near["name"], near["rank"], far["rank"], far["reason"]) == ("Near", "1", "", "no valid cell within 25 km")
     assert 500 < float(near["annual_yield_l_m2_year"]) < 1500
+
+
+def test_the_keys_of_decisions_work_as_they_stand(tmp_path):
+    weather = "{kind: typical-year, files: 'pvlib:data/12839.tm2'}"
+    text = f"name: a\nweather: {weather}\nstill: {CONFIG}/stills/low-cost-film.yaml\n{block('decisions')}"
+    (tmp_path / "run.yaml").write_text(text, encoding="utf-8")
+    settings = load_run(tmp_path / "run.yaml")
+    assert (settings.need.figure, settings.storage.tank_price_per_litre, settings.rank.top) == (
+        "drinking-and-cooking", 0.08, 8)
+
+
+def test_every_key_in_its_tables_is_a_key():
+    models = (RunSettings, StillKeys, TrialSettings)
+    schemas = [model.model_json_schema(by_alias=True) for model in models]
+    tables = TEXT[TEXT.index("## Decisions") : TEXT.index("## Large regions")]
+    cells = [line.split(" | ")[0] for line in tables.splitlines() if line.startswith("| `")]
+    keys = [key for cell in cells for key in re.findall(r"`([a-z0-9_.]+)`", cell)]
+    assert len(keys) > 35
+    assert [key for key in keys if not any(is_key(key.split("."), schema, schema) for schema in schemas)] == []
+
+
+def is_key(path, schema, whole):
+    """Whether a key written with dots leads into a JSON schema; names of stills are passed over."""
+    if not path:
+        return True
+    if "$ref" in schema:
+        return is_key(path, whole["$defs"][schema["$ref"].rsplit("/", 1)[1]], whole)
+    if any(is_key(path, choice, whole) for choice in schema.get("anyOf", [])):
+        return True
+    if path[0] in schema.get("properties", {}):
+        return is_key(path[1:], schema["properties"][path[0]], whole)
+    inner = schema.get("additionalProperties")
+    return isinstance(inner, dict) and is_key(path, inner, whole)
+
+
+@pytest.mark.parametrize("key", ["need.litres", "stills.area", "cost.prices", "weather_errors"])
+def test_a_key_that_is_none_is_seen(key):
+    assert not any(is_key(key.split("."), one, one) for one in (
+        model.model_json_schema(by_alias=True) for model in (RunSettings, StillKeys, TrialSettings)))
 
 
 def test_what_it_names_exists(tmp_path):
