@@ -117,6 +117,7 @@ def build_parser() -> argparse.ArgumentParser:
     fit.add_argument("--into", metavar="FILE", help="keep the fits in FILE, beside those it holds")
 
     _add_trial(commands)
+    _add_compare(commands)
 
     evidence = commands.add_parser(
         "evidence", help="set what is known from outside beside what stillfield computes", allow_abbrev=False,
@@ -144,6 +145,17 @@ def _add_trial(commands: argparse._SubParsersAction[argparse.ArgumentParser]) ->
     )
     trial.add_argument("trial_file", metavar="TRIAL.yaml", help="the trial file")
     trial.add_argument("--output", metavar="FOLDER", help="put the results under FOLDER, whatever the trial file says")
+
+
+def _add_compare(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    compare = commands.add_parser(
+        "compare", help="set two finished runs beside each other", allow_abbrev=False,
+        description="From the folders of two finished runs: which settings, inputs and versions differ, and how the "
+        "litres, areas, costs and ranks of places and the litres of cells differ in consequence.",
+    )
+    compare.add_argument("run_a", metavar="RUN_A", help="folder of a run; of several stills each has its own")
+    compare.add_argument("run_b", metavar="RUN_B", help="folder of the run that is held against it")
+    compare.add_argument("--into", metavar="FOLDER", help="write the differences as CSV into FOLDER")
 
 
 def _guarded(arguments: argparse.Namespace) -> int:
@@ -225,6 +237,13 @@ def _trial(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
+def _compare(arguments: argparse.Namespace) -> int:
+    from stillfield.compare import compare
+
+    _say(str(compare(arguments.run_a, arguments.run_b, into=arguments.into)))
+    return EXIT_OK
+
+
 def _evidence(arguments: argparse.Namespace) -> int:
     from stillfield.evidence.command import evidence
 
@@ -232,7 +251,10 @@ def _evidence(arguments: argparse.Namespace) -> int:
     return EXIT_OK
 
 
-_COMMANDS = {"evidence": _evidence, "run": _run, "plan": _plan, "schema": _schema, "fit": _fit, "trial": _trial}
+_COMMANDS = {
+    "compare": _compare, "evidence": _evidence, "run": _run, "plan": _plan, "schema": _schema, "fit": _fit,
+    "trial": _trial,
+}
 
 
 class _PlainLines(logging.Formatter):

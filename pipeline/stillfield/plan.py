@@ -19,6 +19,7 @@ from stillfield.methods.fit_store import fit_state
 from stillfield.methods.fitted import Fitted
 from stillfield.opening import Opened, fits_folder, open_run
 from stillfield.physics.still import Still
+from stillfield.products.still_table import FILES as STILLS_FILES
 from stillfield.settings.model import RunSettings
 from stillfield.stages.forecast import Job, forecast
 from stillfield.stages.survey import outside_box, survey_places, survey_space, survey_time, survey_variables
@@ -150,6 +151,7 @@ def _outputs(settings: RunSettings, opened: Opened, stills: list[dict[str, Any]]
     names = file_names(grid=grid, ranked=opened.places is not None, rasters=makes_rasters(opened.prepared.weather),
                        stored=bool(opened.followed) and opened.prepared.weather.attrs.get("record") != "typical-year")
     outputs = [(folder / name).as_posix() for folder in opened.folders for name in names]
+    outputs += [(settings.folder / name).as_posix() for name in STILLS_FILES] if len(stills) > 1 else []
     for still, told in zip(settings.stills, stills, strict=True):
         made = [condition for condition, state in (told["fits"] or {}).items() if state == "to be made"]
         outputs += [

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import logging
+from collections.abc import Sequence
 from dataclasses import asdict
 from pathlib import Path
 from typing import Any
@@ -14,6 +15,7 @@ from stillfield.decide import Days, decide
 from stillfield.engine.job import Missing, months_of
 from stillfield.methods import Method
 from stillfield.opening import Opened, open_run, preferences_of, wishes_of
+from stillfield.products.still_table import still_row, stills_text, write_stills
 from stillfield.products.summary import Summary, summarise
 from stillfield.settings.load import resolved_yaml
 from stillfield.settings.model import RunSettings
@@ -61,16 +63,22 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     )
     for sentence in outcome.monthly[0].attrs.get("conventions", [])[said:]:
         log.info("%s", sentence)  # what was counted on the way
-    summaries = [
+    told = [
         _one_still(settings, design, opened, monthly, outcome.sample, inputs=inputs, folder=folder,
                    days=Days(outcome.followed, opened.prepared.local.time, number))
         for number, (design, monthly, folder) in enumerate(
             zip(settings.designs, outcome.monthly, opened.folders, strict=True))
     ]
-    return Summary(
-        "\n".join(summary.text for summary in summaries),
-        tuple(file for summary in summaries for file in summary.files),
-    )
+    return _together(settings, [summary for summary, _ in told], [row for _, row in told])
+
+
+def _together(settings: RunSettings, summaries: Sequence[Summary], rows: Sequence[dict[str, Any]]) -> Summary:
+    """One summary of all stills, several of them side by side in a table of their own."""
+    texts, files = [summary.text for summary in summaries], [file for one in summaries for file in one.files]
+    if len(rows) > 1:
+        files += write_stills(settings.folder, rows, title=f"Stills side by side, {settings.name}")
+        texts.append(stills_text(rows, settings.folder))
+    return Summary("\n".join(texts), tuple(files))
 
 
 def _tell_progress(done: int, of: int) -> None:
@@ -81,7 +89,8 @@ def _tell_progress(done: int, of: int) -> None:
 def _one_still(
     settings: RunSettings, design: StillDesign, opened: Opened, monthly: xr.Dataset, sample: Sample, *,
     inputs: dict[str, dict[str, Any]], folder: Path, days: Days,
-) -> Summary:
+) -> tuple[Summary, dict[str, Any]]:
+    """Decide and write for one still; also its row beside the others."""
     still = design.still
     method, places = opened.prepared.method, opened.places
     counts = json.loads(monthly.attrs.get("counts", "{}"))
@@ -109,15 +118,16 @@ def _one_still(
         Results(
             monthly, decision, title, line, resolved_yaml(settings), settings.model_dump(mode="json", by_alias=True),
             inputs, land=None if settings.map.land is None else settings.map.land.path, remarks=remarks,
-            facts={"counts": {"weather": counts}, "audit": None if audited is None else asdict(audited)},
+            facts={"counts": {"weather": counts}, "audit": None if audited is None else asdict(audited),
+                   "design": asdict(design)},
             cells=cells,
         ),
     )
+    ranked = None if decision is None else decision.places
     return summarise(
-        monthly, None if decision is None else decision.places, title=title, method_line=line, folder=folder,
-        files=files,
+        monthly, ranked, title=title, method_line=line, folder=folder, files=files,
         remarks=[remark for remark in remarks if "WARNING" in remark or "udit" in remark],
-    )
+    ), still_row(still, monthly, ranked, method=method.name)
 
 
 def _remarks(monthly: xr.Dataset, method: Method, audited: Audit | None) -> tuple[str, ...]:
