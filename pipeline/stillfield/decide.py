@@ -173,7 +173,8 @@ def _with_change(
 
 
 def _monthly_yields(sized: Sized, wishes: Wishes) -> MonthlyYields:
-    return MonthlyYields(sized.by_year, sized.low, sized.high, need=np.asarray(wishes.need.month_factors))
+    return MonthlyYields(sized.by_year, sized.low, sized.high, need=np.asarray(wishes.need.month_factors),
+                         days_in_month=tuple(sized.days_in_month.tolist()))
 
 
 def _in_order(rows: pd.DataFrame, places: pd.DataFrame) -> pd.DataFrame:

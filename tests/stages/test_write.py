@@ -5,6 +5,7 @@ from __future__ import annotations
 import errno
 import json
 import os
+from types import SimpleNamespace
 
 import pandas as pd
 import pytest
@@ -66,8 +67,8 @@ def test_what_a_killed_run_left_is_cleared_away(tmp_path):
 
 
 def test_files_of_an_earlier_run_that_the_new_one_has_not_are_removed_and_strangers_stay(tmp_path):
-    places = pd.DataFrame({"rank": [1], "name": ["A"], "id": ["1"], "worst_month": [1.0]})
-    write_results(tmp_path, results(ranked=places))
+    places = pd.DataFrame({"rank": [1], "name": ["A"], "id": ["1"], "sizing_month": [1.0]})
+    write_results(tmp_path, results(ranked=SimpleNamespace(places=places, months=places, storage=pd.DataFrame())))
     (tmp_path / "my-notes.txt").write_text("kept")
     assert (tmp_path / "places.csv").exists()
     write_results(tmp_path, results())

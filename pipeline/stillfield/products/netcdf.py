@@ -33,6 +33,7 @@ _KNOWN: dict[str, tuple[str, str]] = {
     "worst_month_yield": ("L m-2 d-1", "Daily distillate in the worst month"),
     "days_used": ("d", "Valid days behind the figure"),
     "days_expected": ("d", "Days a complete record has"),
+    "days_in_month": ("d", "Days of the month"),
     "month": ("1", "Calendar month"),
     "year": ("1", "Calendar year"),
     "elevation": ("m", "Height above mean sea level"),

@@ -68,6 +68,20 @@ class Months:
         """Calendar years from the first to the last."""
         return np.arange(self.year[0], self.year[-1] + 1)
 
+    @property
+    def mean_length(self) -> Array:
+        """Days of each month of the year, mean of the record; NaN for a month it does not have, shape (12,) [d]."""
+        total = np.bincount(self.month - 1, weights=self.length, minlength=MONTHS)
+        seen = np.bincount(self.month - 1, minlength=MONTHS)
+        return np.where(seen > 0, total / np.maximum(seen, 1), np.nan)
+
+    @property
+    def lengths(self) -> Array:
+        """Days of the months of each year, the mean for those before and after the record, (year, 12) [d]."""
+        days = np.tile(self.mean_length, (self.years.size, 1))
+        days[self.year - self.year[0], self.month - 1] = self.length
+        return days
+
 
 @dataclass
 class MonthSums:
@@ -245,9 +259,7 @@ def climatology(sums: MonthSums, *, rule_litres_per_mj: float) -> dict[str, Arra
     result["monthly_yield_rule"] *= rule_litres_per_mj
     there = months.month - 1
     expected = np.bincount(there, weights=months.length, minlength=MONTHS)
-    seen = np.bincount(there, minlength=MONTHS)
-    days = np.where(seen > 0, expected / np.maximum(seen, 1), np.nan)
-    per_day = result["monthly_yield"] / days[:, None]
+    per_day = result["monthly_yield"] / months.mean_length[:, None]
     # A cell with any month missing has no worst month: the missing one might be it.
     known = np.isfinite(per_day).all(axis=0)
     worst = np.argmin(np.where(known, per_day, np.inf), axis=0)
@@ -290,7 +302,7 @@ def aggregate(values: dict[str, Array], months: Months, weather: xr.Dataset, spa
         reached or passed in 9 of 10 years (absent for typical years); ``annual_yield`` [L m-2 year-1];
         ``worst_month`` (1 to 12, fewest litres per day) and ``worst_month_yield`` [L m-2 d-1];
         ``days_used`` and ``days_expected`` (all years together), ``frost_share``, ``outside_fit_share`` of the
-        days used.
+        days used; coordinate ``days_in_month`` of the record's calendar on year and month [d].
     """
     sizes = [weather.sizes[dim] for dim in space]
     variables: dict[str, Any] = {}
@@ -304,6 +316,7 @@ def aggregate(values: dict[str, Array], months: Months, weather: xr.Dataset, spa
     year, meaning = (np.zeros(1, dtype=int), "Typical year") if months.typical else (months.years, "Calendar year")
     coords["month"] = ("month", np.arange(1, MONTHS + 1), {"long_name": "Month of the year", "units": "1"})
     coords["year"] = ("year", year, {"long_name": meaning, "units": "1"})
+    coords["days_in_month"] = (("year", "month"), months.lengths, {"long_name": "Days of the month", "units": "d"})
     return xr.Dataset(variables, coords=coords, attrs=weather.attrs)
 
 

@@ -109,6 +109,8 @@ class Sized:
         Central litres of every month, the field factor in them. [L m-2 month-1]
     low, high : ndarray, shape (12, place)
         Ends of the band, means of the years. [L m-2 month-1]
+    days_in_month : ndarray, shape (12,)
+        Mean over the years. [d]
     notes : tuple of str
         What was assumed, and what the figures cannot tell.
     """
@@ -119,6 +121,7 @@ class Sized:
     by_year: Array
     low: Array
     high: Array
+    days_in_month: Array
     notes: tuple[str, ...]
 
 
@@ -153,20 +156,29 @@ def size_places(
     yields = _with_factor(monthly, reach, wishes.field_factor)
     central = "monthly_yield_by_year"
     per_person = daily_need(wishes.need, 1.0)
-    sizing = _sizing(yields, per_person, 1.0 if cost is None else cost.availability)
+    lengths = _lengths(monthly)
+    days_in_month = lengths.mean(axis=0)
+    sizing = _sizing(yields, days_in_month, per_person, 1.0 if cost is None else cost.availability)
     table = _with_cells(places, monthly, reach).assign(
-        **_yield_columns(yields, monthly, reach), **sizing, **_reached_columns(yields, sizing, typical=typical))
+        **_yield_columns(yields, monthly, reach), **sizing,
+        **_reached_columns(yields, lengths, sizing, typical=typical))
     storage = pd.DataFrame()
     if days is not None:
         columns, storage = _over_days(table, days, wishes, cost)
         table = table.assign(**columns)
     table = table.assign(**_of_people(table, wishes, cost, yields), reason=_reasons(reach, sizing))
     feed, said = _with_feed(table, yields, still, wishes)
-    months = _month_table(table, yields, per_person, still, wishes, typical=typical)
-    return Sized(
-        table.assign(**feed), months, storage, yields[central], yields["monthly_yield_low"],
-        yields["monthly_yield_high"], (*_notes(wishes, typical=typical, years=len(yields[central])), *said),
-    )
+    months = _month_table(table, yields, still, wishes, days_in_month=days_in_month, typical=typical)
+    notes = (*_notes(wishes, typical=typical, years=len(yields[central])), *said)
+    return Sized(table.assign(**feed), months, storage, yields[central], yields["monthly_yield_low"],
+                 yields["monthly_yield_high"], days_in_month, notes)
+
+
+def _lengths(monthly: xr.Dataset) -> Array:
+    """Days of the months of each year in the calendar of the record, (year, 12); of a mean year where not told."""
+    if "days_in_month" in monthly.coords:
+        return np.asarray(monthly["days_in_month"].transpose("year", "month").to_numpy(), dtype=np.float64)
+    return np.tile(DAYS_OF_MONTHS, (monthly.sizes["year"], 1))
 
 
 def _with_factor(monthly: xr.Dataset, reach: NearestCells, factor: FieldFactor | None) -> dict[str, Array]:
@@ -231,10 +243,11 @@ def _yield_columns(yields: Mapping[str, Array], monthly: xr.Dataset, reach: Near
     return columns
 
 
-def _sizing(yields: Mapping[str, Array], per_person: Array, availability: float) -> dict[str, Any]:
+def _sizing(
+    yields: Mapping[str, Array], days_in_month: Array, per_person: Array, availability: float
+) -> dict[str, Any]:
     """Sizing month, its yields, and the basin area of a person: central, and what the ends of the band give."""
-    days = np.asarray(DAYS_OF_MONTHS)[:, None]
-    per_day = {end: yields[f"monthly_yield{end}"] / days for end in ("", "_low", "_high")}
+    per_day = {end: yields[f"monthly_yield{end}"] / days_in_month[:, None] for end in ("", "_low", "_high")}
     found = sizing_month(np.broadcast_to(per_person[:, None], per_day[""].shape), per_day[""])
     month = np.maximum(found.month - 1, 0)
     known = found.month > 0
@@ -261,14 +274,15 @@ def _reasons(reach: NearestCells, sizing: Mapping[str, Any]) -> NDArray[np.str_]
     return np.asarray(np.where(np.isfinite(sizing["area_per_person_m2"]), "", told), dtype=np.str_)
 
 
-def _reached_columns(yields: Mapping[str, Array], sizing: Mapping[str, Any], *, typical: bool) -> dict[str, Any]:
+def _reached_columns(
+    yields: Mapping[str, Array], lengths: Array, sizing: Mapping[str, Any], *, typical: bool
+) -> dict[str, Any]:
     """What is reached in half, three quarters and nine tenths of the years."""
     by_year = yields["monthly_yield_by_year"]
     if typical:
         return {"years_of_record": np.zeros(by_year.shape[2], dtype=np.int64)}
     month = np.nan_to_num(np.asarray(sizing["sizing_month"]) - 1, nan=0.0).astype(int)
-    days = np.asarray(DAYS_OF_MONTHS)[month]
-    of_month = reached_yields(np.take_along_axis(by_year, month[None, None], axis=1)[:, 0] / days)
+    of_month = reached_yields(np.take_along_axis(by_year, month[None, None], axis=1)[:, 0] / lengths[:, month])
     of_year = reached_yields(year_totals(by_year))
     columns: dict[str, Any] = {"years_of_record": of_month.years}
     for share in ("p50", "p75", "p90"):
@@ -348,13 +362,20 @@ def _of_people(
     return columns
 
 
+def _draw_off(still: Still, wishes: Wishes) -> float | None:
+    """Salinity of the brine that leaves over that of the feed; None where the still file counts no salt."""
+    if still.concentration_factor <= 1.0:
+        return None
+    return float(draw_off_factor(still.concentration_factor, wishes.flushing))  # type: ignore[arg-type]
+
+
 def _with_feed(
     table: pd.DataFrame, yields: Mapping[str, Array], still: Still, wishes: Wishes
 ) -> tuple[dict[str, Any], tuple[str, ...]]:
     """Feed and brine of one square metre in the sizing month, salt of its year, and what blending would allow."""
     salinity = table["feed_salinity_g_kg"].to_numpy(dtype=float) if "feed_salinity_g_kg" in table else None
-    factor = float(draw_off_factor(still.concentration_factor, wishes.flushing))  # type: ignore[arg-type]
-    if not factor > 1.0:
+    factor = _draw_off(still, wishes)
+    if factor is None:
         return {}, ("The still file's concentration_factor of 1 means that no salt is left: no feed or brine is told.",)
     day = feed_and_brine(table["sizing_yield_l_m2_day"].to_numpy(dtype=float), factor, salinity)
     year = feed_and_brine(table["annual_yield_l_m2_year"].to_numpy(dtype=float), factor, salinity)
@@ -371,7 +392,8 @@ def _with_feed(
 
 
 def _month_table(
-    table: pd.DataFrame, yields: Mapping[str, Array], per_person: Array, still: Still, wishes: Wishes, *, typical: bool
+    table: pd.DataFrame, yields: Mapping[str, Array], still: Still, wishes: Wishes, *, days_in_month: Array,
+    typical: bool,
 ) -> pd.DataFrame:
     """One row per place and month: litres, their reach over the years, need, feed and brine."""
     count = len(table)
@@ -386,14 +408,14 @@ def _month_table(
         for share in ("p50", "p75", "p90"):
             columns[f"yield_{share}_l_m2_month"] = getattr(reached, share).T.ravel()
         columns["years_of_record"] = reached.years.T.ravel()
-    columns["need_l_person_day"] = np.tile(per_person, count)
-    days = np.tile(DAYS_OF_MONTHS, count)
+    columns["need_l_person_day"] = np.tile(daily_need(wishes.need, 1.0), count)
+    days = np.tile(days_in_month, count)
     sized = (table["need_l_person_day"] / table["sizing_yield_l_m2_day"]).to_numpy(dtype=float)
     columns["share_of_need_at_sized_area"] = (
         columns["yield_l_m2_month"] / days * np.repeat(sized, MONTHS)
         / np.where(columns["need_l_person_day"] > 0, columns["need_l_person_day"], np.nan))
-    factor = float(draw_off_factor(still.concentration_factor, wishes.flushing))  # type: ignore[arg-type]
-    if factor > 1.0:
+    factor = _draw_off(still, wishes)
+    if factor is not None:
         salinity = np.repeat(table["feed_salinity_g_kg"].to_numpy(dtype=float), MONTHS) \
             if "feed_salinity_g_kg" in table else None
         found = feed_and_brine(columns["yield_l_m2_month"], factor, salinity)
