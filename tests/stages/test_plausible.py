@@ -90,11 +90,22 @@ def test_a_run_judges_no_short_record_either():
         assert run(daily(np.array([0.1]), days=days), min_valid_days_share=0.05) == doubted
 
 
-def test_missing_days_do_not_make_a_record_dull():
-    weather = daily(np.array([0.3]))
-    weather["irradiation"][::2] = np.nan  # half of 0.3 would be dull
-    assert found(weather) == FINE
-    assert run(weather, min_valid_days_share=0.05) == FINE
+@pytest.mark.parametrize(("clearness", "doubted"), [(0.3, FINE), (0.6, FINE), (0.15, DULL), (0.92, BRIGHT)])
+def test_missing_days_make_a_record_neither_dull_nor_bright(clearness, doubted):
+    """Half of 0.3 would be dull and twice 0.6 bright; 0.15 stays dull, though months are made up to their length."""
+    weather = daily(np.array([clearness]))
+    weather["irradiation"][::2] = np.nan
+    assert found(weather) == doubted
+    assert run(weather, min_valid_days_share=0.05) == doubted
+
+
+def test_years_of_which_some_months_are_left_out_are_judged_by_the_rest():
+    weather = daily(np.array([0.3, 0.6, 0.15, 0.92]), days=1461)
+    random = np.random.default_rng(3)
+    weather["irradiation"][random.random(1461) < 0.2] = np.nan  # some months keep fewer than 0.8 of their days
+    monthly = sf.monthly_yield(weather, DESIGN, method="rule")
+    assert 0.0 < (monthly["days_used"] < 0.7 * monthly["days_expected"]).mean() < 1.0
+    assert json.loads(monthly.attrs["counts"])["clearness"] == {"dull": 1, "bright": 1, "values": 4}
 
 
 def test_months_left_out_for_their_gaps_do_not_make_a_record_dull():

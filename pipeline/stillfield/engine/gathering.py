@@ -84,7 +84,7 @@ class Gathering:
                 place = cells[some]
                 self._put(self._monthly[number], place, sums)
                 if number == 0:
-                    self.irradiation[0][:, place] = sums.totals[SUNSHINE]
+                    self.irradiation[0][:, place] = _of_used_days(sums)
                     self.irradiation[1][:, place] = sums.used
 
     def _put(self, monthly: dict[str, Array], place: NDArray[np.int64], sums: MonthSums) -> None:
@@ -113,3 +113,9 @@ class Gathering:
             for name in parts[0]:
                 series.setdefault(name, []).append(np.concatenate([part[name] for part in parts if part])[:rows])
         return {name: np.stack(columns, axis=1) for name, columns in series.items()}
+
+
+def _of_used_days(sums: MonthSums) -> Array:
+    """Irradiation of the days used alone, shape (12, cell); the totals of months are of all their days [MJ m-2]."""
+    all_days = np.where(sums.valid > 0, sums.valid * sums.months.mean_length[:, None], 1.0)
+    return np.asarray(sums.totals[SUNSHINE] * sums.used / all_days)
