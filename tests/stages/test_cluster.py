@@ -62,8 +62,8 @@ def rows_apart(prepared: Prepared, reader: LazyReader | None = None) -> Prepared
 
 @pytest.fixture(scope="module")
 def cluster() -> Iterator[distributed.LocalCluster]:
-    with distributed.LocalCluster(n_workers=2, threads_per_worker=1, processes=True, dashboard_address=None,
-                                  silence_logs=50) as made:
+    with distributed.LocalCluster(n_workers=2, threads_per_worker=1, processes=True, silence_logs=50,
+                                  dashboard_address="127.0.0.1:0", scheduler_kwargs={"dashboard": False}) as made:
         yield made
 
 

@@ -106,8 +106,10 @@ def _client(scheduler: str, workers: int, *, only_look: bool = False) -> Iterato
         if only_look:
             yield None  # type: ignore[misc]
             return
+        # No dashboard, and its server on any free port: on the usual one, a second run beside this one would be warned.
         cluster: Any = distributed.LocalCluster(
-            n_workers=workers, threads_per_worker=1, processes=True, dashboard_address=None, silence_logs=40)
+            n_workers=workers, threads_per_worker=1, processes=True, dashboard_address="127.0.0.1:0",
+            scheduler_kwargs={"dashboard": False}, silence_logs=40)
         with cluster, distributed.Client(cluster) as client:
             yield client
         return
