@@ -21,6 +21,7 @@ from stillfield.methods.registry import get_method
 from stillfield.settings.model import RunSettings
 from stillfield.settings.region import Region as RegionKeys
 from stillfield.sources.places import refuse_misplaced
+from stillfield.stages.rank import refuse_blind
 from stillfield.stages.reach import cells_to_follow
 from stillfield.stages.read import Box, Mask, Region, read_places, read_weather
 from stillfield.stages.size import Wishes
@@ -99,6 +100,8 @@ def open_run(settings: RunSettings) -> Opened:
                              sheet=settings.places.sheet, layer=settings.places.layer)
         for remark in places.attrs.get("remarks", []):
             log.info("%s", remark)
+        priced = all(design.cost is not None for design in settings.designs)
+        refuse_blind(places, settings.rank.weights.by_criterion(), preferences_of(settings).screens, priced=priced)
     log.info("reading the weather")
     region = None if settings.region is None else region_of(settings.region)
     weather = read_weather(

@@ -14,6 +14,7 @@ from stillfield.decisions.need import need_of
 from stillfield.decisions.ranking_score import Screen
 from stillfield.decisions.ranking_uncertainty import Uncertainty
 from stillfield.errors import PlacesError
+from stillfield.stages.rank import refuse_blind
 from stillfield.stages.size import Wishes
 
 SPOTS = [(10.0, 40.0), (11.0, 40.0), (11.0, 42.0), (11.0, 42.0)]
@@ -186,6 +187,19 @@ def test_unusable_weights_are_refused(monthly, weights):
 def test_weights_of_which_nothing_is_known_are_refused(monthly):
     with pytest.raises(PlacesError, match="nothing is known of the criteria that have a weight"):
         decided(monthly, places(SPOTS[:1]), weights={"salinity": 1.0})
+
+
+@pytest.mark.parametrize(("weights", "screen", "words"), [
+    ({"salinity": 1.0}, None, "nothing is known of the criteria that have a weight"),
+    ({"cost": 1.0, "yield": 0.0}, None, "nothing is known of the criteria that have a weight"),
+    ({"yield": 1.0}, Screen("cost_per_litre", "at most", 0.1, "dear"), "wanted prices in the still file"),
+    ({"yield": 1.0}, Screen("elevation_m", "at most", 0.1, "high"), "got elevation_m; wanted a column of the places"),
+])
+def test_what_cannot_be_weighed_or_screened_is_refused_before_anything_is_computed(weights, screen, words):
+    screens = () if screen is None else (screen,)
+    with pytest.raises(PlacesError, match=words):
+        refuse_blind(places(SPOTS, population=[1.0] * 4), weights, screens, priced=False)
+    refuse_blind(villages().assign(elevation_m=3.0), weights, screens, priced=True)
 
 
 def test_a_typical_year_is_ranked_without_years():

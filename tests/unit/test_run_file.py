@@ -102,7 +102,8 @@ def test_a_sound_file_gives_frozen_settings_with_defaults(folder):
         ("places: {table: demo/villages.csv, max_cell_distance_km: 25 km}",
          "line 8, places.max_cell_distance_km: should be a number between 0 and 1000 (got the text '25 km'; "
          "write the number alone, in the unit of the key)"),
-        ("places: {}", "line 8, places.table: is missing: CSV table of places with name, latitude and longitude"),
+        ("places: {}", "line 8, places.table: is missing: Table of places with name, latitude and longitude: "
+         "CSV, GeoJSON, GeoPackage or XLSX"),
         ("places:\n  table: villages.csv",
          "line 9, places.table: no such file 'villages.csv' (did you mean 'demo/villages.csv'?)"),
         ("places: {table: demo/vilages.csv}",
@@ -131,9 +132,39 @@ def test_a_sound_file_gives_frozen_settings_with_defaults(folder):
         ("rule: !!python/object/apply:os.system [ls]",
          "line 8, rule: the tag '!!python/object/apply:os.system' is not accepted; write the value without it"),
         ("base: &b {efficiency: 0.2}\nrule: {<<: *b}", "line 8, base: unknown key (known here: name, weather, region, "
-         "still, method, rule, places, need, rank, missing, output, map)"),
+         "still, method, rule, places, need, storage, feed, still_field_factor, rank, missing, output, compute, map)"),
         ("\"a\\e[2Jb\": 1", "line 8, a\\x1b[2Jb: unknown key (known here: name, weather, region, still, method, rule, "
-                            "places, need, rank, missing, output, map)"),
+                            "places, need, storage, feed, still_field_factor, rank, missing, output, compute, map)"),
+        ("need: {litres_per_person_day: 0}",
+         "line 8, need.litres_per_person_day: should be between 0.1 and 100 (got 0)"),
+        ("need: {figure: drink}",
+         "line 8, need.figure: should be one of 'drinking', 'cooking', 'hygiene', 'drinking-and-cooking', 'basic', "
+         "'hot-labour' (got 'drink'; did you mean 'drinking'?)"),
+        ("need: {season: [1, 2, 3]}", "line 8, need.season: should be a list of 12 (got 3 items)"),
+        ("need: {season: [-1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1, 1]}",
+         "line 8, need.season (item 1): should be between 0 and 100 (got -1)"),
+        ("need: {season: [0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0, 0]}",
+         "line 8, need.season: water should be needed in at least one month"),
+        ("need: {share: 1.2}", "line 8, need.share: should be above 0 and at most 1 (got 1.2)"),
+        ("need: {people_per_household: 0}",
+         "line 8, need.people_per_household: should be above 0 and at most 100 (got 0)"),
+        ("storage: {share_of_days: 0}", "line 8, storage.share_of_days: should be above 0 and at most 1 (got 0)"),
+        ("storage: {tank_days: [3, 1]}", "line 8, storage: tank_days should rise from 0 or more"),
+        ("feed: {flushing: daily}", "line 8, feed.flushing: should be one of 'continuous', 'batch' (got 'daily')"),
+        ("still_field_factor: {value: 0.8, low: 0.9, high: 1.0, source: yard}",
+         "line 8, still_field_factor: should run from low over value to high (got 0.9, 0.8, 1)"),
+        ("still_field_factor: {value: 0.8, low: 0.7, high: 0.9}", "line 8, still_field_factor.source: is missing: "
+                                                                  "Trial it comes from"),
+        ("rank: {screens: [{column: population, because: few}]}",
+         "line 8, rank.screens (item 1): should have at_least or at_most, one of them"),
+        ("rank: {screens: [{column: populaton, at_least: 50, because: few}]}",
+         "line 8, rank.screens (item 1).column: should be one of 'population', 'feed_salinity_g_kg', "
+         "'distance_to_feed_km', 'elevation_m', 'cell_distance_km', 'sizing_yield_l_m2_day', 'area_per_person_m2', "
+         "'cost_per_litre', 'annual_yield_l_m2_year' (got 'populaton'; did you mean 'population'?)"),
+        ("rank: {top: 0}", "line 8, rank.top: should be between 1 and 1000 (got 0)"),
+        ("rank: {uncertainty: {draws: 5}}", "line 8, rank.uncertainty.draws: should be between 100 and 20000 (got 5)"),
+        ("compute: {workers: 0}", "line 8, compute.workers: should be between 1 and 1024 (got 0)"),
+
     ],
 )  # fmt: skip
 def test_each_fault_names_its_line_key_and_cure(folder, lines, expected):
@@ -380,9 +411,17 @@ def test_groups_whose_keys_are_all_commented_out_keep_their_defaults(folder):
 
 def test_weights_left_out_count_nothing_and_none_at_all_are_the_usual_ones(folder):
     assert load(folder, SOUND + "rank: {weights: {people: 2}}\n").rank.weights.by_criterion() == {
-        "yield": 0.0, "people": 2.0, "salinity": 0.0, "distance": 0.0,
+        "yield": 0.0, "reliability": 0.0, "cost": 0.0, "people": 2.0, "salinity": 0.0, "distance": 0.0,
     }
     assert sum(load(folder, SOUND).rank.weights.by_criterion().values()) == pytest.approx(1.0)
+
+
+def test_the_need_is_drinking_water_all_year_unless_it_is_stated(folder):
+    need = load(folder, SOUND).need
+    assert (need.litres_per_person_day, need.figure, need.season) == (None, "drinking", None)
+    assert (need.people_per_household, need.share) == (5.0, 1.0)
+    season = load(folder, SOUND + "need: {figure: basic, season: [1,1,1,1,1,1.5,2,2,1,1,1,0]}\n").need.season
+    assert season == (1, 1, 1, 1, 1, 1.5, 2, 2, 1, 1, 1, 0)
 
 
 def test_a_region_may_cross_the_antimeridian(folder):

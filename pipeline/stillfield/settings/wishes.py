@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Field, model_validator
+from pydantic import BeforeValidator, Field, field_validator, model_validator
 
 from stillfield.decisions.blend import TASTE_LIMITS
 from stillfield.decisions.need import FIGURES
@@ -23,12 +23,19 @@ class Need(Group):
     figure: Annotated[str, OneOf(tuple(FIGURES))] = Field(
         "drinking", description="Published figure to take the litres from"
     )
-    season: tuple[float, ...] | None = Field(
+    season: tuple[Annotated[float, Field(ge=0, le=100)], ...] | None = Field(
         None, strict=False, min_length=_MONTHS, max_length=_MONTHS,
         description="Need of each month, January first, as a multiple of the litres [1]; the same all year without it",
     )
     people_per_household: float = Field(5.0, gt=0, le=100, description="People in a household")
     share: float = Field(1.0, gt=0, le=1, description="Share of the need that the stills are to meet [1]")
+
+    @field_validator("season")
+    @classmethod
+    def _some_need(cls, season: tuple[float, ...] | None) -> tuple[float, ...] | None:
+        if season is not None and not any(season):
+            raise refuse("water should be needed in at least one month")
+        return season
 
 
 class Storage(Group):

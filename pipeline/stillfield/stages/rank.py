@@ -126,6 +126,48 @@ def _for_need(table: pd.DataFrame, yields: MonthlyYields) -> np.ndarray:
     return np.where(relative > 0, litres / np.where(relative > 0, relative, 1.0), np.nan)
 
 
+def refuse_blind(
+    places: pd.DataFrame, weights: Mapping[str, float], screens: Sequence[Screen], *, priced: bool
+) -> None:
+    """Find out before any litre is computed whether weights and screens have something to go by.
+
+    Parameters
+    ----------
+    places : pandas.DataFrame
+        As `sources.places.read_places` gives it.
+    weights : mapping of str to float
+        By name of the criterion.
+    screens : sequence of Screen
+        Hard limits.
+    priced : bool
+        Whether the still file has prices.
+
+    Raises
+    ------
+    PlacesError
+        If a screen reads, or all weights go to, what neither the table nor the still file has.
+    """
+    absent = {name for name in ("population", "feed_salinity_g_kg", "distance_to_feed_km", "elevation_m")
+              if name not in places}
+    absent |= set() if priced else {"cost_per_litre"}
+    for screen in screens:
+        if screen.column in absent:
+            raise PlacesError(
+                "a screen reads what is not there", where="rank.screens", got=screen.column,
+                wanted="prices in the still file" if screen.column == "cost_per_litre" else "a column of the places",
+            )
+    if all(CRITERIA[name].column in absent for name, weight in weights.items() if weight > 0):
+        raise _nothing_known([name for name, weight in weights.items() if weight > 0])
+
+
+def _nothing_known(names: Sequence[str]) -> PlacesError:
+    return PlacesError(
+        "nothing is known of the criteria that have a weight", where="rank.weights", got=", ".join(names),
+        wanted="a criterion whose column the table of places or the still file has",
+        cure="Give weight to another criterion, or add the column.",
+    )
+
+
 def rank_region(monthly: xr.Dataset, weights: Mapping[str, float] | None = None) -> xr.Dataset:
     """Score and rank the cells or sites of a region, by what of the weights can be known of a cell.
 
@@ -187,11 +229,7 @@ def _criteria(weights: Mapping[str, float] | None, table: pd.DataFrame) -> tuple
     used = [replace(CRITERIA[name], weight=weight) for name, weight in stated.items()
             if weight > 0 and CRITERIA[name].column in table]
     if not used:
-        raise PlacesError(
-            "nothing is known of the criteria that have a weight", where="rank.weights", got=", ".join(stated),
-            wanted="a criterion whose column the table of places or the still file has",
-            cure="Give weight to another criterion, or add the column.",
-        )
+        raise _nothing_known([name for name, weight in stated.items() if weight > 0])
     return used, [name for name, weight in stated.items() if weight > 0 and CRITERIA[name].column not in table]
 
 
