@@ -327,5 +327,5 @@ def _cells(cells: Cells) -> list[str]:
                  *_figure_table(shown[:2 + _FEW], cells.what),
                  f"  The year changes most at {cells.where[year[0]]}."]
     if cells.only_in_one:
-        lines.append(f"  {cells.only_in_one} {cells.what}s have a year's litres in one run only.")
+        lines.append(f"  With a year's litres in one run only: {cells.only_in_one}.")
     return lines

@@ -119,8 +119,8 @@ def _table(folder: Path, name: str, manifest: Mapping[str, Any], units: Mapping[
         raise StillfieldError("is not what the run wrote", where=str(path),
                               cure="It was changed or cut off since; run it again, or put the original back.")
     text = {column: str for column, unit in units.items() if unit == ""}
-    return pd.read_csv(path, dtype=text, keep_default_na=False, na_values={
-        column: [""] for column in units if column not in text}, float_precision="round_trip")
+    empty = {column: [""] for column in units if column not in text}
+    return pd.read_csv(path, dtype=text, keep_default_na=False, na_values=empty)
 
 
 def _monthly(path: Path) -> xr.Dataset:
