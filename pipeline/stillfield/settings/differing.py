@@ -58,12 +58,12 @@ def differing_keys(
     Examples
     --------
     >>> a = {"need": {"litres_per_person_day": 5.0, "share": 1.0}, "region": None, "name": "one"}
-    >>> b = {"need": {"litres_per_person_day": 3.0, "share": 1.0}, "region": {"box": {"south": 1.0}}, "name": "two"}
+    >>> b = {"need": {"litres_per_person_day": 3.0, "share": 1.0}, "region": {"south": 1.0}, "name": "two"}
     >>> for found in differing_keys(a, b):
     ...     print(found.key, f"[{found.unit}]", found.a, found.b, found.moves_figures)
     name [] one two False
     need.litres_per_person_day [L day-1] 5.0 3.0 True
-    region.box.south [deg north] None 1.0 True
+    region.south [deg north] None 1.0 True
     """
     leaves_a, leaves_b = dict(_leaves(a)), dict(_leaves(b))
     members = _members(leaves_a), _members(leaves_b)
