@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import logging
+import time
 from collections.abc import Sequence
 from dataclasses import asdict
 from pathlib import Path
@@ -15,6 +16,7 @@ from stillfield.decide import Days, decide
 from stillfield.engine.job import Missing, months_of
 from stillfield.methods import Method
 from stillfield.opening import Opened, open_run, preferences_of, wishes_of
+from stillfield.products.plan_text import duration_words
 from stillfield.products.still_table import still_row, stills_text, write_stills
 from stillfield.products.summary import Summary, summarise
 from stillfield.settings.load import resolved_yaml
@@ -27,6 +29,9 @@ from stillfield.stages.upgrade import Change
 from stillfield.stages.write import Results, write_results
 
 log = logging.getLogger(__name__)
+
+#: Progress is told no more often. [s]
+SECONDS_BETWEEN_WORDS = 10.0
 
 
 def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
@@ -59,7 +64,7 @@ def run(settings: RunSettings, *, run_file: str | Path) -> Summary:
     log.info("estimating by method %s", settings.method)
     outcome = months_of(
         opened.prepared, settings.stills, rule_efficiency=settings.rule.efficiency,
-        missing=Missing(**settings.missing.model_dump()), followed=opened.followed, progress=_tell_progress,
+        missing=Missing(**settings.missing.model_dump()), followed=opened.followed, progress=_Telling(),
     )
     for sentence in outcome.monthly[0].attrs.get("conventions", [])[said:]:
         log.info("%s", sentence)  # what was counted on the way
@@ -81,9 +86,18 @@ def _together(settings: RunSettings, summaries: Sequence[Summary], rows: Sequenc
     return Summary("\n".join(texts), tuple(files))
 
 
-def _tell_progress(done: int, of: int) -> None:
-    if of > 1:
-        log.info("%d of %d blocks done", done, of)
+class _Telling:
+    """Says every now and then how far a run is and how long it will take."""
+
+    def __init__(self) -> None:
+        self._began = self._told = time.monotonic()
+
+    def __call__(self, share: float) -> None:
+        now = time.monotonic()
+        if now - self._told < SECONDS_BETWEEN_WORDS or share <= 0.0:
+            return
+        self._told = now
+        log.info("%.0f %% done, %s left", 100.0 * share, duration_words((now - self._began) * (1.0 / share - 1.0)))
 
 
 def _one_still(

@@ -10,6 +10,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.decisions.nearest import NearestCells, cell_centres, nearest_cells
+from stillfield.errors import PlacesError
 
 Array = NDArray[np.floating[Any]]
 
@@ -88,10 +89,20 @@ def reach_places(places: pd.DataFrame, monthly: xr.Dataset, *, max_cell_distance
     Returns
     -------
     NearestCells
+
+    Raises
+    ------
+    PlacesError
+        If no cell knows its every month.
     """
     latitude, longitude = positions_of(monthly)
     space = [dim for dim in ("latitude", "longitude", "site") if dim in monthly.dims]
     valid = monthly["worst_month"].transpose(*space).notnull().to_numpy().ravel()
+    if not valid.any():
+        raise PlacesError(
+            "no cell has litres for all twelve months, so no place can be sized on its worst month", where="weather",
+            cure="Give weather for every month of a year, lower missing.min_valid_days_share, or leave places out.",
+        )
     heights = None
     if "elevation" in monthly.coords and set(monthly["elevation"].dims) == set(space) and "elevation_m" in places:
         heights = monthly["elevation"].transpose(*space).to_numpy().ravel()
