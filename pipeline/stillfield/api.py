@@ -22,7 +22,7 @@ from stillfield.engine.job import Missing, months_of, prepare
 from stillfield.methods.registry import get_method
 from stillfield.physics.rule import USUAL_EFFICIENCY
 from stillfield.physics.still import Panel, Still
-from stillfield.settings.still_file import load_still_file
+from stillfield.settings.still_file import load_still_design, load_still_file
 from stillfield.sources import guess_kind
 from stillfield.sources.gates import gate
 from stillfield.sources.places import read_places
@@ -99,7 +99,7 @@ def load_places(
 
 
 def rank_places(
-    monthly: xr.Dataset, places: pd.DataFrame, still: Still | None = None, *,
+    monthly: xr.Dataset, places: pd.DataFrame, still: Still | str | Path | None = None, *,
     litres_per_person_day: float | None = None, max_cell_distance_km: float = 25.0,
     weights: Mapping[str, float] | None = None,
 ) -> pd.DataFrame:
@@ -111,8 +111,9 @@ def rank_places(
         As `monthly_yield` gives it.
     places : pandas.DataFrame
         As `load_places` gives it.
-    still : Still, optional
-        The design, for feed and brine; without it a basin that concentrates its feed twofold.
+    still : Still, str or path, optional
+        The design, for feed and brine. A still file brings its prices and its days out of work along, so that the
+        areas are those of a run and the litre has a cost. Without it, a basin that works every day.
     litres_per_person_day : float, optional
         Water each person needs; the published figure for drinking without it. [L]
     max_cell_distance_km : float
@@ -136,9 +137,14 @@ def rank_places(
     A still is no barrier to volatile contaminants; distillate must be disinfected, remineralised and tested
     before people drink it. See `stillfield.vocabulary.WATER_CAUTION`.
     """
-    design = still or Still("stated by nobody", (Panel(1.0, 15.0),))
+    design, cost = still or Still("stated by nobody", (Panel(1.0, 15.0),)), None
+    if not isinstance(design, Still):
+        file = load_still_design(design)
+        design, cost = file.still, file.cost
     ways = Preferences(weights, max_cell_distance_km=max_cell_distance_km)
-    return decide(monthly, places, still=design, wishes=usual_wishes(litres_per_person_day), preferences=ways).places
+    found = decide(monthly, places, still=design, cost=cost, wishes=usual_wishes(litres_per_person_day),
+                   preferences=ways)
+    return found.places
 
 
 def monthly_yield(

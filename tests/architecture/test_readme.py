@@ -83,7 +83,10 @@ def test_the_first_run_runs(tmp_path):
     run_file = config / "my-coast.yaml"
     assert load_run(run_file).method == "fitted"
     near, far = table(finished(run_file, cwd=tmp_path) / "places.csv")
-    assert (near["name"], near["rank"], far["rank"], far["reason"]) == ("Near", "1", "", "no valid cell within 25 km")
+    assert (near["name"], near["rank"], far["rank"]) == ("Near", "1", "")
+    # From 20.5 N, 40 W to 25 N, 40 W along the meridian.
+    assert far["reason"] == ("no litres: the nearest cell with twelve known months is 500 km away, beyond "
+                             "places.max_cell_distance_km")
     assert 500 < float(near["annual_yield_l_m2_year"]) < 1500
 
 

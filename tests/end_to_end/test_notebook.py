@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
+import pandas as pd
 import pytest
 import xarray as xr
 
@@ -30,7 +31,7 @@ def test_a_ranked_table_in_a_notebook_and_on_the_command_line(tmp_path):
     box, (rows, columns) = SMALL_WEATHER["box"], SMALL_WEATHER["shape"]
     weather = sf.open_weather(SMALL_WEATHER["land"], "synthetic", **box, shape=(rows, columns), years=1)
     monthly = sf.monthly_yield(weather, sf.load_still(STILL), method="rule", rule_efficiency=0.35)
-    ranked = sf.rank_places(monthly, sf.load_places(villages), litres_per_person_day=4, max_cell_distance_km=40)
+    ranked = sf.rank_places(monthly, sf.load_places(villages), STILL, litres_per_person_day=4, max_cell_distance_km=40)
     run_file = write_run(
         tmp_path / "x.yaml", weather=SMALL_WEATHER, places={"table": str(villages), "max_cell_distance_km": 40},
         need={"litres_per_person_day": 4}, rule={"efficiency": 0.35},
@@ -47,7 +48,21 @@ def test_a_ranked_table_in_a_notebook_and_on_the_command_line(tmp_path):
             continue
         assert int(row["rank"]) == ours["rank"]
         assert float(row["area_per_person_m2"]) == pytest.approx(ours["area_per_person_m2"], abs=0.006)
+        assert float(row["cost_per_litre"]) == pytest.approx(ours["cost_per_litre"], rel=0.006)
+        assert [row["rank_low"], row["rank_high"]] == [str(ours["rank_low"]), str(ours["rank_high"])]
         np.testing.assert_allclose(months_of(row)[0], ours["yield_jan_l_m2_month"], atol=0.006)
+
+
+def test_a_still_without_its_file_works_every_day_and_has_no_price():
+    weather = sf.open_weather("pvlib:data/12839.tm2")
+    monthly = sf.monthly_yield(weather, sf.load_still(STILL), method="rule")
+    village = pd.DataFrame({"name": ["Shore"], "id": ["1"], "latitude": [25.8], "longitude": [-80.3]})
+    plain, priced = (sf.rank_places(monthly, village, still).iloc[0] for still in (sf.load_still(STILL), STILL))
+    assert "cost_per_litre" not in plain
+    assert priced["cost_per_litre"] > 0
+    # Of 3 L a day (Sphere Handbook 2018, drinking, quoted from memory), from a still that works on 95 of 100 days.
+    assert plain["area_per_person_m2"] == pytest.approx(3.0 / plain["sizing_yield_l_m2_day"])
+    assert priced["area_per_person_m2"] == pytest.approx(3.0 / 0.95 / plain["sizing_yield_l_m2_day"])
 
 
 def test_a_box_cuts_the_weather_in_a_notebook_as_in_a_run_file(tmp_path):

@@ -114,3 +114,18 @@ def test_notes_lead_with_the_whole_caution_and_explain_every_column(tmp_path):
     for column in CELL_COLUMNS:
         assert f"\n{column.name}" in text
         assert column.meaning in " ".join(text.split())
+
+
+def test_money_and_shares_show_no_more_than_is_known(tmp_path):
+    frame = pd.DataFrame({
+        "capital_village": [1233240.0, 999.96, 0.0], "cost_per_litre": [0.016249, 0.00098765, 12.345],
+        "area_village_m2": [10276.15, 143.302, np.nan], "share_of_days_served": [0.9504, 1.0, 0.0],
+        "reliability": [0.9431, 1.0, np.nan], "longest_poor_spell_days": [6.0, 0.0, np.nan],
+        "need_l_person_day": [5, 2.25, 3.0], "modification_capital_to_break_even_per_m2": [-123.4, 1.0, 2.0],
+    })  # fmt: skip
+    write_csv(frame, tmp_path / "t.csv")
+    rows = (tmp_path / "t.csv").read_text().splitlines()[1:]
+    assert rows == [
+        "1230000,0.0162,10280,0.95,0.94,6,5.00,-123", "1000,0.000988,143.3,1.00,1.00,0,2.25,1.00",
+        "0,12.3,,0.00,,,3.00,2.00",
+    ]

@@ -35,9 +35,11 @@ _DECIMALS: tuple[tuple[tuple[str, ...], int], ...] = (
 )
 #: Shares, by how their name starts, get two decimals.
 _SHARES = ("share_of_",)
-#: Money, by how its name starts, gets three digits that count: prices are not better known.
-_MONEY = ("cost_per_litre", "annual_cost", "capital_", "modification_capital")
-_MONEY_DIGITS = 3
+#: Digits that count, by how the name starts: prices are known to three, what a whole village needs to four.
+_DIGITS: tuple[tuple[tuple[str, ...], int], ...] = (
+    (("cost_per_litre", "annual_cost", "capital_", "modification_capital"), 3),
+    (("area_village", "need_l_day"), 4),
+)
 #: Numbers without a unit above (people, grams per kilogram) stand as they are, to at most so many decimals.
 _MOST_DECIMALS = 4
 
@@ -220,8 +222,9 @@ def write_csv(frame: pd.DataFrame, path: str | Path, *, columns: Sequence[str] |
 
 
 def _text_cells(column: pd.Series[Any], name: str) -> list[str]:
-    if name.startswith(_MONEY):
-        return [_cell(value, _decimals_of_digits(value, _MONEY_DIGITS)) for value in column.tolist()]
+    digits = next((count for starts, count in _DIGITS if name.startswith(starts)), None)
+    if digits is not None:
+        return [_cell(value, _decimals_of_digits(value, digits)) for value in column.tolist()]
     shares = 2 if name.startswith(_SHARES) else None
     decimals = next((count for ends, count in _DECIMALS if name.endswith(ends)), shares)
     return [_cell(value, decimals) for value in column.tolist()]
