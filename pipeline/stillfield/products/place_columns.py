@@ -35,7 +35,8 @@ PLACE_COLUMNS: tuple[Column, ...] = (
     Column("reliability", "1", "sizing_yield_p90 over sizing_yield_p50: 1 where all years are alike."),
     Column("least_yield_month", "", "Month with the fewest litres a day, whatever the need."),
     Column("need_l_person_day", "L d-1", "Need of a person in the sizing month that the stills are to meet."),
-    Column("area_per_person_m2", "m2", "Basin area that gives one person's need in the sizing month."),
+    Column("area_per_person_m2", "m2", "Basin area that gives one person's need in the sizing month, days "
+           "out of work counted (availability in the still file)."),
     Column("area_per_person_at_low_yield_m2", "m2", "The same at the low end of the band: the cautious size."),
     Column("area_per_person_at_high_yield_m2", "m2", "The same at the high end of the band."),
     Column("area_with_tank_per_person_m2", "m2", "Smallest basin area that, with the tank beside it, meets the need on "
