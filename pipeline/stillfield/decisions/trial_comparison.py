@@ -16,7 +16,6 @@ from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.stats import t as student
 
 from stillfield.decisions.trial import LEVEL, Estimator, RatioOfDays, error_of_mean, ratio_of_days
 from stillfield.errors import DecisionError
@@ -197,6 +196,8 @@ def compare_stills(
     >>> compare_stills(wick, plain).verdict
     'better'
     """
+    from scipy.stats import t as student  # a second to load, and a run needs only the records
+
     common = np.intersect1d(first.day, second.day)
     paired = common.size >= max(LEAST_PAIRED_DAYS, LEAST_PAIRED_SHARE * min(first.day.size, second.day.size))
     if paired:
@@ -252,6 +253,8 @@ def _verdict(low: float, high: float) -> Verdict:
 
 def _visible(longer: Array, errors: tuple[float, float, float], level: float) -> Array:
     """Difference seen with probability `POWER`, were the records so many times as long."""
+    from scipy.stats import t as student  # a second to load, and a run needs only the records
+
     chance, allowance, freedom = errors
     apart = chance / np.sqrt(longer)
     error = np.hypot(apart, allowance)

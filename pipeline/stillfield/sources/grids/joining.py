@@ -7,7 +7,6 @@ from dataclasses import dataclass, field
 from functools import partial
 from typing import Any
 
-import dask.array as da
 import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
@@ -116,6 +115,8 @@ def _holders(pieces: Sequence[Piece], stamp: Any) -> list[str]:
 
 
 def _merged(one: xr.DataArray, other: xr.DataArray, told: NDArray[Any], tolerance: float) -> Any:
+    import dask.array as da
+
     first, second = da.asarray(one.data), da.asarray(other.data)
     second = second.rechunk(first.chunks)
     labels = da.from_array(told.reshape(-1, *[1] * (first.ndim - 1)), chunks=(first.chunks[0], *[1] * (first.ndim - 1)))
@@ -139,6 +140,8 @@ def _same_block(first: NDArray[Any], second: NDArray[Any], told: NDArray[Any], *
 
 def _masked(values: xr.DataArray, valid: tuple[float, float]) -> xr.DataArray:
     """Values as floats; undeclared sentinels and values outside the stated range are marked `TAKEN_OUT`."""
+    import dask.array as da
+
     kind = values.dtype if np.issubdtype(values.dtype, np.floating) else np.dtype(np.float64)
     data = da.asarray(values.data)
     return values.copy(data=da.map_blocks(partial(_mask_block, valid=valid), data, dtype=kind,
