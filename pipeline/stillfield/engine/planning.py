@@ -83,7 +83,7 @@ class BlockPlan:
     @property
     def size(self) -> int:
         """Records times cells."""
-        return sum(window.stop - window.start for window in self.windows) * self.cells
+        return int(sum(window.stop - window.start for window in self.windows) * self.cells)
 
     @property
     def longest(self) -> int:
