@@ -494,3 +494,13 @@ def test_shipped_run_files_load(path):
     settings = load_run(path)
     assert settings.stills
     assert folder_name(settings.name) == settings.name
+
+
+def test_a_field_factor_belongs_to_one_still(tmp_path):
+    stills = [str(CONFIG / "stills" / f"{name}.yaml") for name in ("single-slope-glass", "deep-basin")]
+    (tmp_path / "run.yaml").write_text(
+        "name: two\nweather: {kind: typical-year, files: 'pvlib:data/12839.tm2'}\n"
+        f"still: [{stills[0]!r}, {stills[1]!r}]\n"
+        "still_field_factor: {value: 0.9, low: 0.8, high: 1.0, source: a trial}\n")
+    with pytest.raises(RunFileError, match=r"line 4, still_field_factor: belongs to one still"):
+        load_run(tmp_path / "run.yaml")

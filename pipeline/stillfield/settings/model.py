@@ -13,6 +13,7 @@ from pydantic import (
     GetPydanticSchema,
     PlainSerializer,
     ValidationError,
+    ValidationInfo,
     WithJsonSchema,
     field_serializer,
     field_validator,
@@ -248,6 +249,13 @@ class RunSettings(Group):
                 raise refuse(f"two stills are called '{name}' ('{first[name]}' and '{choice.given}')")
             first[name] = choice.given
         return choices
+
+    @field_validator("still_field_factor")
+    @classmethod
+    def _of_one_still(cls, factor: FieldFactorKeys | None, info: ValidationInfo) -> FieldFactorKeys | None:
+        if factor is not None and len(info.data.get("still", ())) > 1:
+            raise refuse("belongs to one still; run the others apart, and see `stillfield compare`")
+        return factor
 
     @property
     def stills(self) -> tuple[Still, ...]:
