@@ -67,7 +67,7 @@ def open_weather(
     checked, _ = gate(weather, where=str(weather.attrs.get("files", "weather")))
     if any(values.chunks is not None for values in weather.data_vars.values()):
         # Of lazy weather the gate counts nothing, and what it puts right the engine would no longer see.
-        checked = checked.assign_attrs(ungated=weather)
+        checked.encoding = {**weather.encoding, "ungated": weather}
     return mark_as_stored(checked)
 
 

@@ -87,7 +87,7 @@ def main() -> None:
     for number, (name, (dtype, options)) in enumerate(LAYOUTS.items()):
         path = folder / f"layout-{number}.nc"
         write(path, dtype, options)
-        stored = open_netcdf([str(path)], variables=said).attrs["stored"]
+        stored = open_netcdf([str(path)], variables=said).encoding["stored"]
         costs = [
             cost(lambda path=path: bare(path), values),
             cost(lambda stored=stored: stored.read("temp_air", *WHOLE, out, at, fast=False), values),

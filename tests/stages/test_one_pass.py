@@ -69,7 +69,7 @@ def opened(file: Path, method: str, way: str) -> Prepared:
     """A run that reads chunk by chunk, through the NetCDF library, or as dask computes what xarray opened."""
     weather = sf.open_weather(str(file), variables={"ghi": {"name": "rsds", "stamp": "start"}})
     if way == "lazy":
-        del weather.attrs["stored"]
+        del weather.encoding["stored"]
     prepared = prepare(weather, get_method(method, hourly=True), means=Means(fast=way == "chunks"))
     assert type(prepared.reader) is (LazyReader if way == "lazy" else StoredReader)
     return prepared

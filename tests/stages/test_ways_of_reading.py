@@ -70,7 +70,7 @@ def months(files: list[str], *, fast: bool = True, lazily: bool = False, workers
            region: Box | None = None, method: str = "fitted") -> tuple[type, xr.Dataset]:
     opened = read_weather("netcdf", files, variables=VARIABLES, region=region)
     if lazily:
-        opened.attrs.pop("stored")
+        opened.encoding.pop("stored")
     prepared = prepare(opened, get_method(method, hourly=True), means=Means(workers, fast=fast))
     found = months_of(prepared, [STILL]).monthly[0]
     return type(prepared.reader), found
@@ -129,6 +129,16 @@ def test_weather_that_was_changed_after_opening_is_not_read_past(tmp_path) -> No
     before = months_of(prepare(opened, method), [STILL]).monthly[0]
     assert bool((months_of(prepared, [STILL]).monthly[0]["monthly_yield"] > before["monthly_yield"]).sel(month=3).all())
     assert isinstance(prepare(opened.isel(time=slice(0, 480)), method).reader, LazyReader)
+
+
+def test_opened_weather_can_be_written_and_opened_again(tmp_path) -> None:
+    """As a notebook does that wants to keep a region: what the engine knows of the files stays out of the way."""
+    import stillfield as sf
+
+    opened = sf.open_weather(written(tmp_path, LAYOUTS["blocks"]), variables=VARIABLES)
+    opened.isel(latitude=slice(0, 2)).to_netcdf(tmp_path / "kept.nc")
+    again = sf.open_weather(str(tmp_path / "kept.nc"))
+    np.testing.assert_allclose(again["temp_air"], opened["temp_air"][:, :2], rtol=1e-6)
 
 
 def _same_as_truth(found: xr.Dataset, truth: xr.Dataset) -> None:

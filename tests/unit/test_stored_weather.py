@@ -82,7 +82,7 @@ def read(stored, name, records=slice(None), rows=slice(None), columns=slice(None
 
 def agree(opened: xr.Dataset, *, fast: bool = True) -> None:
     """Every quantity, whole and in parts, is what the general way gives."""
-    stored = pickle.loads(pickle.dumps(opened.attrs["stored"]))
+    stored = pickle.loads(pickle.dumps(opened.encoding["stored"]))
     np.testing.assert_array_equal(stored.latitude, opened["latitude"].values)
     np.testing.assert_array_equal(stored.longitude, opened["longitude"].values)
     assert stored.time.equals(opened.indexes["time"])
@@ -130,9 +130,9 @@ def test_hourly_weather_of_every_layout(tmp_path, layout, parts, past_library):
     opened = open_netcdf(written(hourly(), tmp_path, parts=parts, **LAYOUTS[layout]), variables=STATED)
     agree(opened)
     assert (past_library == []) == (layout in FAST)
-    fast = {name: read(opened.attrs["stored"], name)[0] for name in opened.attrs["stored"].fields}
+    fast = {name: read(opened.encoding["stored"], name)[0] for name in opened.encoding["stored"].fields}
     for name, values in fast.items():
-        np.testing.assert_array_equal(read(opened.attrs["stored"], name, fast=False)[0], values)
+        np.testing.assert_array_equal(read(opened.encoding["stored"], name, fast=False)[0], values)
 
 
 @pytest.mark.parametrize("change", [north_up, positive_longitude, single_precision])
@@ -164,9 +164,9 @@ def test_names_and_stamps_of_a_reanalysis(tmp_path):
     weather = weather.rename(valid_time="time")
     said = {"ghi": {"name": "ssrd", "means": "hour-ending accumulation"}}
     opened = open_netcdf(written(weather, tmp_path, parts=3, **LAYOUTS["deflate"]), variables=said)
-    assert set(opened.attrs["stored"].fields) == {"ghi", "temp_air", "temp_dew", "wind_speed"}
+    assert set(opened.encoding["stored"].fields) == {"ghi", "temp_air", "temp_dew", "wind_speed"}
     agree(opened)
-    values, _ = read(opened.attrs["stored"], "wind_speed")
+    values, _ = read(opened.encoding["stored"], "wind_speed")
     np.testing.assert_allclose(values[1:], wind[:-1] * 4.87 / np.log(67.8 * 10 - 5.42), rtol=1e-6)  # FAO-56 eq. 47
 
 
@@ -177,8 +177,8 @@ def test_energy_since_midnight(tmp_path, parts):
     weather = grid(hours(1.0), ssrd=(grown, "J m-2")).astype(np.float32, keep_attrs=True)
     files = written(weather.isel(time=np.r_[0:30, 33:96]), tmp_path, parts=parts, **LAYOUTS["deflate"])
     opened = open_netcdf(files, variables={"ghi": {"name": "ssrd", "means": "since-00-UTC"}})
-    assert opened.attrs["stored"].fields["ghi"].combination == "difference"
-    stored = opened.attrs["stored"]
+    assert opened.encoding["stored"].fields["ghi"].combination == "difference"
+    stored = opened.encoding["stored"]
     expected, _ = lazily(opened, "ghi")
     np.testing.assert_allclose(read(stored, "ghi")[0], expected, rtol=1e-6, atol=1e-3)
     np.testing.assert_array_equal(read(stored, "ghi", slice(7, 60))[0], read(stored, "ghi")[0][7:60])
@@ -189,7 +189,7 @@ def test_mean_temperature_of_the_extremes(tmp_path):
     weather["tasmax"] = weather["tasmin"] + 8.0
     weather["tasmax"].attrs = weather["tasmin"].attrs
     opened = open_netcdf(written(weather, tmp_path, **LAYOUTS["deflate"]))
-    assert opened.attrs["stored"].fields["temp_air"].combination == "mean"
+    assert opened.encoding["stored"].fields["temp_air"].combination == "mean"
     agree(opened)
 
 
@@ -199,13 +199,13 @@ def test_a_stated_range_in_packed_numbers(tmp_path):
     with netCDF4.Dataset(tmp_path / "w000.nc", "a") as file:
         file["tas"].valid_range = np.array([-20000, 20000], np.int16)
     opened = open_netcdf(names)
-    assert read(opened.attrs["stored"], "temp_air")[1].counts["sentinel"].sum() > 0
+    assert read(opened.encoding["stored"], "temp_air")[1].counts["sentinel"].sum() > 0
     agree(opened)
 
 
 def test_each_column_at_its_own_hour_and_cells_left_out(tmp_path):
     opened = open_netcdf(written(hourly(), tmp_path, parts=4, **LAYOUTS["deflate"]), variables=STATED)
-    stored, whole = opened.attrs["stored"], lazily(opened, "temp_air")[0]
+    stored, whole = opened.encoding["stored"], lazily(opened, "temp_air")[0]
     kept = np.ones((3, 4), bool)
     kept[1, 2] = False
     at = np.array([-2, -2, 0, 3])
@@ -222,7 +222,7 @@ def test_each_column_at_its_own_hour_and_cells_left_out(tmp_path):
 def test_the_first_impossible_value_is_reported_not_raised(tmp_path):
     weather = hourly()
     weather["t2m"][30, 2, 1] = 400.0
-    stored = open_netcdf(written(weather, tmp_path, **LAYOUTS["deflate"]), variables=STATED).attrs["stored"]
+    stored = open_netcdf(written(weather, tmp_path, **LAYOUTS["deflate"]), variables=STATED).encoding["stored"]
     found = read(stored, "temp_air", slice(10, 50), slice(1, 3))[1]
     assert (found.breach.record, found.breach.cell, found.breach.number) == (20, 4 + 1, 1)
     assert found.breach.value == pytest.approx(126.85, abs=1e-4)
@@ -230,15 +230,16 @@ def test_the_first_impossible_value_is_reported_not_raised(tmp_path):
 
 def test_without_numba_or_libdeflate_the_numbers_are_the_same(tmp_path, monkeypatch):
     opened = open_netcdf(written(hourly(), tmp_path, parts=2, **LAYOUTS["packed"]), variables=STATED)
-    usual = read(opened.attrs["stored"], "temp_air")[0]
+    usual = read(opened.encoding["stored"], "temp_air")[0]
     monkeypatch.setattr("stillfield.sources.settle.is_compiled", lambda *_: False)
     monkeypatch.setattr(fast_chunks, "is_compiled", lambda *_: False)
     monkeypatch.setattr(fast_chunks, "_deflate", lambda: fast_chunks._by_standard_library)
-    np.testing.assert_array_equal(read(opened.attrs["stored"], "temp_air")[0], usual)
+    np.testing.assert_array_equal(read(opened.encoding["stored"], "temp_air")[0], usual)
 
 
 def test_several_threads_read_at_once(tmp_path):
-    stored = open_netcdf(written(hourly(), tmp_path, parts=3, **LAYOUTS["deflate"]), variables=STATED).attrs["stored"]
+    files = written(hourly(), tmp_path, parts=3, **LAYOUTS["deflate"])
+    stored = open_netcdf(files, variables=STATED).encoding["stored"]
     whole = read(stored, "temp_air")[0]
     with ThreadPoolExecutor(4) as pool:
         parts = list(pool.map(lambda i: read(stored, "temp_air", slice(i, i + 12), fast=i % 24 == 0)[0],
@@ -257,7 +258,7 @@ def test_a_damaged_chunk_is_refused(tmp_path, damage, packed, library, monkeypat
     if library == "standard":
         monkeypatch.setattr(fast_chunks, "_deflate", lambda: fast_chunks._by_standard_library)
     files = written(hourly(), tmp_path, **LAYOUTS[packed])
-    stored = open_netcdf(files, variables=STATED).attrs["stored"]
+    stored = open_netcdf(files, variables=STATED).encoding["stored"]
     index = chunk_index.chunk_index(str(tmp_path / "w000.nc"), "t2m")
     start, size = int(index.starts[1, 0, 0]), int(index.sizes[1, 0, 0])
     pack = zlib.compress if packed == "deflate" else compress
@@ -272,7 +273,7 @@ def test_a_damaged_chunk_is_refused(tmp_path, damage, packed, library, monkeypat
 
 def test_a_file_that_ends_before_its_chunks_is_refused(tmp_path):
     files = written(hourly(), tmp_path, **LAYOUTS["deflate"])
-    stored = open_netcdf(files, variables=STATED).attrs["stored"]
+    stored = open_netcdf(files, variables=STATED).encoding["stored"]
     index = chunk_index.chunk_index(str(tmp_path / "w000.nc"), "t2m")
     read(stored, "temp_air")
     with (tmp_path / "w000.nc").open("r+b") as file:
@@ -294,7 +295,7 @@ def test_a_chunk_that_was_never_written_is_missing(tmp_path):
         sun[:2] = 20.0
     opened = open_netcdf([str(path)])
     agree(opened)
-    assert read(opened.attrs["stored"], "irradiation")[1].counts["missing"].tolist() == [2] * 12
+    assert read(opened.encoding["stored"], "irradiation")[1].counts["missing"].tolist() == [2] * 12
 
 
 def _repeated(folder):
@@ -319,14 +320,14 @@ def _versions(folder):
 @pytest.mark.parametrize("write", [_repeated, _vapour, _versions])
 def test_what_is_not_plain_is_left_to_the_general_way(tmp_path, write):
     opened = open_netcdf(write(tmp_path))
-    assert "stored" not in opened.attrs
+    assert "stored" not in opened.encoding
     assert opened["irradiation"].notnull().any()
 
 
 @pytest.mark.parametrize("change", [lambda weather: weather, positive_longitude])
 def test_columns_in_another_order(tmp_path, change):
     opened = open_netcdf(written(change(hourly()), tmp_path, **LAYOUTS["deflate"]), variables=STATED)
-    stored, order = opened.attrs["stored"], np.array([2, 3, 0])
+    stored, order = opened.encoding["stored"], np.array([2, 3, 0])
     other = stored.with_columns(order, stored.longitude[order] % 360.0)
     np.testing.assert_array_equal(read(other, "temp_air")[0], read(stored, "temp_air")[0][:, :, order])
     np.testing.assert_array_equal(read(other, "ghi", columns=slice(1, 3))[0],
@@ -336,7 +337,7 @@ def test_columns_in_another_order(tmp_path, change):
 
 def test_chunk_edges_follow_files_and_turned_axes(tmp_path):
     opened = open_netcdf(written(north_up(hourly()), tmp_path, parts=4, zlib=True, chunk=(10, 2, 3)), variables=STATED)
-    records, rows, columns = opened.attrs["stored"].chunk_edges("temp_air")
+    records, rows, columns = opened.encoding["stored"].chunk_edges("temp_air")
     assert records.tolist() == [0, 10, 20, 24, 34, 44, 48, 58, 68, 72, 82, 92, 96]
     assert rows.tolist() == [0, 1, 3]
     assert columns.tolist() == [0, 3, 4]
@@ -344,5 +345,5 @@ def test_chunk_edges_follow_files_and_turned_axes(tmp_path):
 
 def test_weather_without_chunks_may_be_cut_but_across_its_rows(tmp_path):
     opened = open_netcdf(written(hourly(), tmp_path, format="NETCDF3_64BIT"), variables=STATED)
-    assert [one.tolist() for one in opened.attrs["stored"].chunk_edges("ghi")] == [
+    assert [one.tolist() for one in opened.encoding["stored"].chunk_edges("ghi")] == [
         list(range(97)), [0, 1, 2, 3], [0, 4]]

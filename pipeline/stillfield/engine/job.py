@@ -34,8 +34,8 @@ from stillfield.vocabulary import STEP_HOURS_DAILY
 #: Told again and again which share of the work is done. [1]
 Progress = Callable[[float], None]
 
-#: Attributes that only tell the engine how to read.
-_OF_OPENING = ("stored", "stored_graphs", "ungated", "files")
+#: Attributes that only help in messages.
+_OF_OPENING = ("files",)
 #: Cells whose weather is kept for the audit to choose from.
 AUDIT_CANDIDATES = 48
 
@@ -194,7 +194,7 @@ def _ungated(weather: xr.Dataset, names: Sequence[str]) -> xr.Dataset:
 
     Those that were changed since stay as they are.
     """
-    before = weather.attrs.get("ungated")
+    before = weather.encoding.get("ungated")
     if before is None:
         return weather
     return weather.assign({name: before[name].variable for name in names if is_as_stored(weather, [name])})

@@ -129,7 +129,7 @@ def stored_reader(
     StoredReader or None
         None where the weather was changed after it was opened, or its cells lie apart in the files.
     """
-    stored = weather.attrs.get("stored")
+    stored = weather.encoding.get("stored")
     known = isinstance(stored, StoredWeather) and set(names) <= set(stored.fields)
     if not isinstance(stored, StoredWeather) or not known or not is_as_stored(weather, names):
         return None

@@ -137,13 +137,15 @@ def _columns(weather: xr.Dataset, columns: NDArray[np.intp]) -> xr.Dataset:
 
 def _stored_alike(weather: xr.Dataset) -> xr.Dataset:
     """Put what tells where the weather lies in its files on the columns of the weather, whose order is new."""
-    stored = weather.attrs.get("stored")
+    stored = weather.encoding.get("stored")
     if stored is None:
         return weather
     longitude = weather["longitude"].values
     places = _nearest(stored.longitude, longitude, "longitude", where=stored.where)
     other = stored.with_columns(places, longitude)
-    return weather if other is None else weather.assign_attrs(stored=other)
+    if other is not None:
+        weather.encoding = {**weather.encoding, "stored": other}
+    return weather
 
 
 def run_on(weather: xr.Dataset) -> tuple[xr.Dataset, list[str]]:

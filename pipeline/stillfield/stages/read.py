@@ -61,18 +61,20 @@ def mark_as_stored(weather: xr.Dataset) -> xr.Dataset:
     Parameters
     ----------
     weather : xarray.Dataset
-        With attribute ``stored`` where its source says how it lies in its files, or ``ungated`` where it was checked
-        since and that is what it was before.
+        With ``stored`` in its encoding where its source says how it lies in its files, or ``ungated`` where it was
+        checked since and that is what it was before.
 
     Returns
     -------
     xarray.Dataset
-        With attribute ``stored_graphs``, the names of the graphs of its lazy variables; unchanged without these.
+        With ``stored_graphs`` in its encoding, the names of the graphs of its lazy variables; unchanged without these.
     """
-    if not {"stored", "ungated"} & set(weather.attrs):
+    if not {"stored", "ungated"} & set(weather.encoding):
         return weather
     graphs = {str(name): _graph(values) for name, values in weather.data_vars.items()}
-    return weather.assign_attrs(stored_graphs=graphs)
+    marked = weather.copy(deep=False)
+    marked.encoding = {**weather.encoding, "stored_graphs": graphs}
+    return marked
 
 
 def is_as_stored(weather: xr.Dataset, names: Iterable[str]) -> bool:
@@ -90,7 +92,7 @@ def is_as_stored(weather: xr.Dataset, names: Iterable[str]) -> bool:
     bool
         False where one is in memory, was changed, or was never marked.
     """
-    graphs = weather.attrs.get("stored_graphs", {})
+    graphs = weather.encoding.get("stored_graphs", {})
     return all(graphs.get(name) is not None and graphs[name] == _graph(weather[name]) for name in names)
 
 

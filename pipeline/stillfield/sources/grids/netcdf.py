@@ -132,7 +132,10 @@ def weather_from_pieces(
     made = _assemble(weather, step_hours=step_hours, notes=notes, labels=labels, counts=counts)
     made = made.assign_attrs(recognised=recognised)
     stored = stored_weather(made, pieces, joined, meaning, {name: one.indexes["time"] for name, one in weather.items()})
-    return made if stored is None else made.assign_attrs(stored=stored)
+    if stored is not None:
+        # Beside the attributes, which a notebook may write into a file.
+        made.encoding = {**made.encoding, "stored": stored}
+    return made
 
 
 def join_roles(pieces: Sequence[Piece]) -> tuple[dict[str, Joined], list[str]]:
