@@ -100,6 +100,13 @@ def test_a_killed_worker_costs_time_and_no_digit(cluster) -> None:
     assert killed[0] not in {worker.pid for worker in cluster.workers.values() if worker.process.is_alive()}
 
 
+def test_processes_of_this_machine_give_the_digits_of_this_process() -> None:
+    prepared = rows_apart(prepare(weather(), get_method("fitted")))
+    here = months_of(prepared, [STILL]).monthly[0]
+    there = months_of(replace(prepared, means=Means(2, scheduler="processes")), [STILL]).monthly[0]
+    xr.testing.assert_identical(there, here)
+
+
 def test_a_fault_in_the_weather_comes_back_as_it_is(cluster) -> None:
     data = weather()
     data["temp_air"][5, 2, 1] = 93.0
