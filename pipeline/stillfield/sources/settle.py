@@ -17,6 +17,9 @@ from stillfield.errors import WeatherError
 from stillfield.physics.compiling import Engine, is_compiled
 from stillfield.vocabulary import Quantity
 
+#: Numbers that stand for "missing" in files that do not declare them, and what is too large to be any quantity.
+SENTINELS = (-999.0, -9999.0)
+IMPOSSIBLY_LARGE = 1e14
 #: Mark of a number that stood for missing and was taken out: it travels as infinity, which no unit conversion
 #: touches, until it is counted and made missing.
 TAKEN_OUT = np.inf

@@ -14,11 +14,8 @@ from numpy.typing import NDArray
 from stillfield.errors import WeatherError
 from stillfield.sources.grids.grid_axes import snapped
 from stillfield.sources.grids.netcdf_pieces import Piece
-from stillfield.sources.settle import TAKEN_OUT
+from stillfield.sources.settle import IMPOSSIBLY_LARGE, SENTINELS, TAKEN_OUT
 
-#: Numbers that stand for "missing" in files that do not declare them.
-SENTINELS = (-999.0, -9999.0)
-IMPOSSIBLY_LARGE = 1e14
 #: Numbers of a repeated record are the same when they agree to this share: single precision. [1]
 _SAME = 1e-6
 

@@ -15,9 +15,8 @@ from numpy.typing import NDArray
 from stillfield.errors import WeatherError
 from stillfield.sources.grids.chunk_index import ONE_READER, chunk_index
 from stillfield.sources.grids.fast_chunks import Slab, can_read_chunks, read_chunks
-from stillfield.sources.grids.joining import IMPOSSIBLY_LARGE, SENTINELS
 from stillfield.sources.grids.stored import Coding, Span, StoredField, StoredFile, StoredVariable
-from stillfield.sources.settle import TAKEN_OUT, Numbers, Settled, Sink, bounded, settle
+from stillfield.sources.settle import IMPOSSIBLY_LARGE, SENTINELS, TAKEN_OUT, Numbers, Settled, Sink, bounded, settle
 from stillfield.vocabulary import Quantity
 
 #: The library is asked for about this much at once. [bytes]
