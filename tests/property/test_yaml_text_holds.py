@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 import io
+import re
 
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from ruamel.yaml import YAML
 
@@ -43,6 +44,8 @@ def test_any_text_is_read_or_refused_in_one_line(text):
 def test_what_a_yaml_1_2_writer_wrote_comes_back(data):
     stream = io.StringIO()
     YAML(typ="safe", pure=True).dump(data, stream)
+    # Between brackets the writer leaves a text such as ?0 without quotes, which its own reader then refuses.
+    assume(not re.search(r"[\[{,:] *\?", stream.getvalue()))
     assert parse_text(stream.getvalue()).data == data
 
 

@@ -8,6 +8,7 @@ import xarray as xr
 
 from decision_samples import STILL, daily, monthly_of, places
 from stillfield.decide import Preferences, decide
+from stillfield.errors import PlacesError
 from stillfield.stages import reach
 from stillfield.stages.reach import cells_to_follow, daily_of_places, reach_places
 
@@ -50,11 +51,10 @@ def test_too_far_stays_in_the_table_and_says_how_far(monthly):
     assert far["rank"] is not far["rank"] or far[["rank", "rank_low", "rank_high"]].isna().all()
 
 
-def test_where_no_cell_has_weather_every_place_stays(monthly):
+def test_where_no_cell_knows_its_every_month_places_are_refused(monthly):
     nothing = monthly.where(monthly["longitude"] > 90.0)
-    table = decided(nothing, places([(10.0, 40.0), (11.0, 40.0)]))
-    assert table["reason"].tolist() == ["no litres: no cell knows all twelve months"] * 2
-    assert table["rank"].isna().all()
+    with pytest.raises(PlacesError, match="no cell has litres for all twelve months"):
+        decided(nothing, places([(10.0, 40.0), (11.0, 40.0)]))
 
 
 def test_height_is_told_from_the_place_up_to_the_cell(monthly):

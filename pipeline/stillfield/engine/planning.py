@@ -145,7 +145,7 @@ def plan_blocks(
     >>> stored = Layout(np.arange(0, 3651, 73), np.array([0, 50, 100]), np.array([0, 50, 100]))
     >>> plan = plan_blocks(stored, variables=3, years=10, workers=2)
     >>> len(plan.blocks), plan.blocks[0].cells, len(plan.blocks[0].windows)
-    (4, 2500, 4)
+    (4, 2500, 10)
     """
     records, rows, columns = layout.shape
     result = rows * columns * stills * (CELL_BYTES + CELL_YEAR_BYTES * years)
