@@ -163,6 +163,11 @@ WAYS: dict[str, tuple[str, Callable[[str], None]]] = {
     "two-stills": ("stillfield, two stills", lambda folder: months(folder, stills=(STILL, SECOND_STILL))),
     "rule": ("stillfield, constant efficiency", lambda folder: months(folder, method="rule")),
     "balance": ("stillfield, heat balance", lambda folder: months(folder, method="heat-balance")),
+    "balance-two-threads": (
+        "stillfield, heat balance, two threads", lambda folder: months(folder, method="heat-balance", workers=2)),
+    "balance-two-processes": (
+        "stillfield, heat balance, cluster of two",
+        lambda folder: months(folder, method="heat-balance", workers=2, scheduler="processes")),
     "two-threads": ("stillfield, two threads", lambda folder: months(folder, workers=2)),
     "one-process": ("stillfield, cluster of one", lambda folder: months(folder, workers=1, scheduler="processes")),
     "two-processes": ("stillfield, cluster of two", lambda folder: months(folder, workers=2, scheduler="processes")),
