@@ -89,12 +89,32 @@ def reached_yields(by_year: ArrayLike, *, typical: bool = False) -> Reached:
     years = np.asarray(np.isfinite(values).sum(axis=0), dtype=np.int64)
     ranked = np.sort(np.where(np.isfinite(values), values, np.nan), axis=0)
     enough = years >= LEAST_YEARS
-    p50, p75, p90 = (np.where(enough, _quantile(ranked, years, below), np.nan) for below in (0.5, 0.25, 0.1))
+    p50, p75, p90 = (np.where(enough, quantile_of_ranked(ranked, years, below), np.nan) for below in (0.5, 0.25, 0.1))
     return Reached(p50, p75, p90, years)
 
 
-def _quantile(ranked: Array, count: Whole, share: float) -> Array:
-    """Linear quantile of values sorted with NaN last; numpy's nanquantile calls Python for every cell."""
+def quantile_of_ranked(ranked: Array, count: Whole, share: float) -> Array:
+    """Linear quantile, as numpy's default, of values sorted with NaN last: nanquantile calls Python for every cell.
+
+    Parameters
+    ----------
+    ranked : ndarray, shape (year, ...)
+        Sorted along the first axis.
+    count : ndarray of int, shape (...)
+        How many are not NaN.
+    share : float
+        Of the years that lie below, 0 to 1. [1]
+
+    Returns
+    -------
+    ndarray, shape (...)
+        NaN where there is none.
+
+    Examples
+    --------
+    >>> quantile_of_ranked(np.array([[1.0], [3.0], [np.nan]]), np.array([2]), 0.5)
+    array([2.])
+    """
     last = np.maximum(count - 1, 0)
     place = share * last
     below = np.floor(place).astype(np.int64)

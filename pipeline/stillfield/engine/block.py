@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property, lru_cache
-from importlib.util import find_spec
 from typing import Any
 
 import numpy as np
@@ -15,6 +14,7 @@ from stillfield.engine.planning import BlockPlan
 from stillfield.engine.readers import Reader
 from stillfield.engine.steps import Counts, Steps, cell_numbers
 from stillfield.methods import WARM_UP_DAYS, Block, Cells, DailyYield, March, Method, unrolled
+from stillfield.physics.compiling import is_compiled
 from stillfield.physics.still import Still
 from stillfield.physics.sun import extraterrestrial_irradiation
 from stillfield.sources.gates import most_irradiation, refuse_sunshine
@@ -87,6 +87,11 @@ class Work:
         """Whether the method takes steps."""
         return self.method.resolution == "hourly"
 
+    @property
+    def steps_taken(self) -> int:
+        """Steps of a day as the method takes them; 1 where it takes days."""
+        return self.local.steps_per_day if self.by_steps else 1
+
 
 @dataclass(frozen=True)
 class BlockResult:
@@ -124,13 +129,14 @@ class BlockResult:
 
 @dataclass
 class _Group:
-    """Some cells of a block that set out together, and how far they have come."""
+    """Some cells of a block that set out together, how far they have come, and which of them are followed."""
 
     cells: NDArray[np.intp] | slice
     marches: list[March]
     sums: list[MonthSums]
     sunshine: list[Array]
     done: list[int]
+    followed: list[tuple[int, int]]
 
 
 def work_block(work: Work, block: BlockPlan, tell: Callable[[int], None] | None = None) -> BlockResult:
@@ -154,7 +160,7 @@ def work_block(work: Work, block: BlockPlan, tell: Callable[[int], None] | None 
     WeatherError
         If the weather cannot be read or cannot be true.
     """
-    steps = Steps(work.reader, work.names, work.local, block, _fill_steps(work))
+    steps = Steps(work.reader, work.names, work.local, block, work.local.whole_steps(work.fill_hours))
     walk = _Walk(work, block)
     try:
         for number, window in enumerate(block.windows, start=1):
@@ -168,10 +174,6 @@ def work_block(work: Work, block: BlockPlan, tell: Callable[[int], None] | None 
     return walk.result(steps.counts)
 
 
-def _fill_steps(work: Work) -> int:
-    return int(work.fill_hours / work.local.step_hours + 1e-9) if work.local.steps_per_day > 1 else 0
-
-
 class _Walk:
     """The state of a block between windows."""
 
@@ -182,12 +184,12 @@ class _Walk:
         self.latitude = work.local.latitude[self.cells]
         self.clock = work.local.clock_to_solar_hours[self.cells]
         self.groups: list[_Group] = []
-        self.counts: Counts = {}
         self.missing_days = np.zeros(block.cells, dtype=np.int64)
         self.followed = {int(cell): [np.full(work.local.days, np.nan, np.float32) for _ in work.stills]
                          for cell in np.intersect1d(self.cells, work.followed)}
-        self.sampled: dict[int, dict[str, list[Array]]] = {
-            int(cell): {} for cell in np.intersect1d(self.cells, work.sampled)}
+        sampled = np.flatnonzero(np.isin(self.cells, work.sampled))
+        self.sampled: dict[int, dict[str, list[Array]]] = {int(self.cells[at]): {} for at in sampled}
+        self.sampled_at = dict(zip(self.sampled, sampled.tolist(), strict=True))
         # Rows of a grid share a latitude, so the bound is made for each row or site once.
         by_row = self.latitude.reshape(block.rows.stop - block.rows.start, -1)
         self.bound_shape = (by_row.shape[0], 1 if (by_row == by_row[:, :1]).all() else by_row.shape[1])
@@ -253,8 +255,7 @@ class _Walk:
         whole = not self.groups and alive.mean() >= SPARSE_SHARE
         cells: NDArray[np.intp] | slice = slice(None) if whole else np.flatnonzero(alive)
         work = self.work
-        place = Cells(self.latitude[cells], self.clock[cells],
-                      work.local.steps_per_day if work.by_steps else 1)
+        place = Cells(self.latitude[cells], self.clock[cells], work.steps_taken)
         marches = [work.method.begin(place, still, conditions_of(still)) for still in work.stills]
         count, counted_from = place.latitude.size, (self.block.span or (0, 0))[0]
         self.groups.append(_Group(
@@ -262,21 +263,23 @@ class _Walk:
             [MonthSums.begin(work.months, count, min_valid_days_share=work.min_valid_days_share, first_day=counted_from,
                              part=self.block.span is not None) for _ in marches],
             [np.zeros((0, count), np.float32) for _ in marches], [first_day for _ in marches],
+            [(int(cell), at) for at, cell in enumerate(self.cells[cells]) if int(cell) in self.followed],
         ))
 
     def _advance(
         self, group: _Group, numbers: slice, weather: Mapping[str, Array], sunshine: Array, *, last: bool
     ) -> None:
         work = self.work
-        block = Block(weather, self.latitude[group.cells], work.day_of_year[numbers],
-                      work.local.steps_per_day if work.by_steps else 1, self.clock[group.cells])
+        block = Block(weather, self.latitude[group.cells], work.day_of_year[numbers], work.steps_taken,
+                      self.clock[group.cells])
         if work.months.typical:
             block = unrolled(block)
         for number, march in enumerate(group.marches):
             found = dict(zip(conditions_of(work.stills[number]), march.advance(block, last=last), strict=True))
             band = [found[condition] for condition in band_of(work.stills[number])]
             if work.months.typical:
-                band = [_real_days(one, min(WARM_UP_DAYS, work.local.days), work.local.days) for one in band]
+                before = min(WARM_UP_DAYS, work.local.days)  # the days that `unrolled` has put in front
+                band = [one.of_days(slice(before, before + work.local.days)) for one in band]
             held = group.sunshine[number]
             known = np.concatenate([held, sunshine]) if held.shape[0] else sunshine
             given = band[0].litres.shape[0]
@@ -292,19 +295,17 @@ class _Walk:
         flags = [flag[mine] if flag is not None and flag.any() else None for flag in (central.frost, central.outside)]
         group.sums[number].add(days.start, [central.litres[mine], low.litres[mine], high.litres[mine], sunshine[mine]],
                                flags, sum_days=_sum_days())
-        for cell, litres in self.followed.items():
-            at = np.flatnonzero(self.cells[group.cells] == cell)
-            if at.size:
-                litres[number][days] = central.litres[mine, at[0]]
+        for cell, at in group.followed:
+            self.followed[cell][number][days] = central.litres[mine, at]
 
     def _sample(self, first_day: int, weather: Mapping[str, Array]) -> None:
         if first_day >= self.work.sampled_days or not self.sampled:
             return
-        per_day = self.work.local.steps_per_day if self.work.by_steps else 1
+        per_day = self.work.steps_taken
         days = next(iter(weather.values())).shape[0] // per_day
         mine = self._counted(first_day, min(days, self.work.sampled_days - first_day))
         for cell, kept in self.sampled.items():
-            at = int(np.flatnonzero(self.cells == cell)[0])
+            at = self.sampled_at[cell]
             for name, values in weather.items():
                 kept.setdefault(name, []).append(values[mine.start * per_day:mine.stop * per_day, at].copy())
 
@@ -323,7 +324,7 @@ class _Walk:
 @lru_cache(maxsize=1)
 def _sum_days() -> SumDays:
     """Month sums, compiled where numba is installed."""
-    if find_spec("numba") is None:
+    if not is_compiled("auto", "month sums"):
         return month_sums
     from stillfield.engine.month_sums_compiled import month_sums as compiled
 
@@ -338,10 +339,3 @@ def band_of(still: Still) -> tuple[str, str, str]:
 def conditions_of(still: Still) -> tuple[str, ...]:
     """Name every condition of a band once, so that a still without a band is worked once."""
     return tuple(dict.fromkeys(band_of(still)))
-
-
-def _real_days(one: DailyYield, before: int, days: int) -> DailyYield:
-    """Yields of a typical year without the days around it."""
-    some = slice(before, before + days)
-    frost, outside = (None if flag is None else flag[some] for flag in (one.frost, one.outside))
-    return DailyYield(one.litres[some], frost, outside)

@@ -106,7 +106,7 @@ class Gathering:
     def weather_of_sample(self) -> dict[str, Array]:
         """Weather of the sampled cells over the first days, by name, shape (day * steps_per_day, cell)."""
         work = self._work
-        rows = min(work.sampled_days, work.local.days) * (work.local.steps_per_day if work.by_steps else 1)
+        rows = min(work.sampled_days, work.local.days) * work.steps_taken
         series: dict[str, list[Array]] = {}
         for cell in sorted(self.sampled):
             parts = [weather for _, weather in sorted(self.sampled[cell].items())]

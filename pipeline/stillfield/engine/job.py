@@ -34,8 +34,6 @@ from stillfield.vocabulary import STEP_HOURS_DAILY
 #: Told again and again which share of the work is done. [1]
 Progress = Callable[[float], None]
 
-#: Attributes that only help in messages.
-_OF_OPENING = ("files",)
 #: Cells whose weather is kept for the audit to choose from.
 AUDIT_CANDIDATES = 48
 
@@ -317,8 +315,7 @@ def _results(prepared: Prepared, work: Work, share: _Share) -> Iterator[BlockRes
 def _candidates(prepared: Prepared) -> NDArray[np.int64]:
     """Cells spread evenly over those of the region, on land where the weather tells."""
     weather = prepared.weather
-    inside = _inside(weather)
-    keep = np.ones(prepared.local.latitude.size, bool) if inside is None else inside.ravel()
+    keep = prepared.kept()
     space = space_of(weather)
     if "elevation" in weather.coords and set(weather["elevation"].dims) == set(space):
         keep = keep & np.isfinite(weather["elevation"].transpose(*space).to_numpy().ravel())
@@ -334,7 +331,7 @@ def _gathered(prepared: Prepared, work: Work, results: Iterator[BlockResult]) ->
     counted = _all_counts(prepared, gathering)
     said = [*prepared.weather.attrs.get("conventions", []), *sentences(counted)]
     weather = prepared.weather.copy(deep=False)
-    weather.attrs = {key: value for key, value in weather.attrs.items() if key not in _OF_OPENING}
+    weather.attrs.pop("files", None)  # only for messages
     weather = weather.assign_attrs(counts=json.dumps(counted, sort_keys=True), conventions=list(dict.fromkeys(said)))
     space = space_of(weather)
     monthly = [
@@ -353,15 +350,15 @@ def _all_counts(prepared: Prepared, gathering: Gathering) -> Counts:
     if COUNTS in weather:
         counts = {name: kinds for name, kinds in totals(weather[COUNT].to_numpy(), weather[COUNTS].to_numpy()).items()
                   if name in taken}
-    inside = _inside(weather)
-    cells = prepared.local.latitude.size if inside is None else int(inside.sum())
+    kept = prepared.kept()
+    cells = int(kept.sum())
     for name in prepared.names:
         kinds = {**gathering.counts.get(name, {}), "values": cells * int(weather.sizes["time"])}
         counts[name] = {**kinds, **counts.get(name, {})}
     if prepared.local.steps_per_day > 1:
-        _, rows, columns = prepared.reader.layout.shape
-        kept = prepared.reader.kept(BlockPlan(slice(0, rows), slice(0, columns), ()))
-        counts["days"] = count_days(prepared.local, slice(0, columns), kept, gathering.missing_days.reshape(kept.shape))
+        grid = (-1, prepared.local.start.size)
+        counts["days"] = count_days(
+            prepared.local, slice(None), kept.reshape(grid), gathering.missing_days.reshape(grid))
     if "latitude" in weather.coords:
         counts["clearness"] = count_doubtful(*gathering.irradiation, prepared.local.latitude)
     return counts
@@ -372,7 +369,7 @@ def _sample(work: Work, gathering: Gathering) -> Sample:
     cells = np.array(sorted(gathering.sampled), dtype=np.int64)
     days = min(work.sampled_days, work.local.days)
     block = Block(
-        weather, work.local.latitude[cells], work.day_of_year[:days], work.local.steps_per_day if work.by_steps else 1,
+        weather, work.local.latitude[cells], work.day_of_year[:days], work.steps_taken,
         work.local.clock_to_solar_hours[cells],
     )
     return Sample(cells, block, work.months.of_day[:days])

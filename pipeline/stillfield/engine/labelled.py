@@ -65,8 +65,7 @@ def on_local_days(weather: xr.Dataset, *, min_valid_hours: float = 20.0, fill_ho
     _, rows, columns = reader.layout.shape
     whole = slice(0, weather.sizes["time"])
     block = BlockPlan(slice(0, rows), slice(0, columns), (whole,))
-    fill_steps = int(fill_hours / local.step_hours + 1e-9) if local.steps_per_day > 1 else 0
-    steps = Steps(reader, names, local, block, fill_steps)
+    steps = Steps(reader, names, local, block, local.whole_steps(fill_hours))
     _, found = steps.take(whole, last=True)
     if local.steps_per_day == 1:
         return OnLocalDays(_labelled(weather, local, found, DAY_WEATHER, ()), None, steps.counts)

@@ -84,6 +84,25 @@ def quantities(step_hours: float) -> Mapping[str, Quantity]:
     return DAY_WEATHER if step_hours >= STEP_HOURS_DAILY else STEP_WEATHER
 
 
+def kept_cells(inside: NDArray[np.bool_] | None, block: BlockPlan) -> NDArray[np.bool_]:
+    """Which cells of a block belong to the region.
+
+    Parameters
+    ----------
+    inside : ndarray of bool, shape (row, column), or None
+        Cells of the region; all without it.
+    block : BlockPlan
+        The block.
+
+    Returns
+    -------
+    ndarray of bool, shape (row, column) of the block
+    """
+    if inside is None:
+        return np.ones((block.rows.stop - block.rows.start, block.columns.stop - block.columns.start), np.bool_)
+    return inside[block.rows, block.columns]
+
+
 @dataclass(frozen=True)
 class LazyReader:
     """Weather behind xarray, in memory or computed a window at a time.
@@ -129,9 +148,7 @@ class LazyReader:
 
     def kept(self, block: BlockPlan) -> NDArray[np.bool_]:
         """Which cells of a block belong to the region, shape (row, column)."""
-        if self.inside is None:
-            return np.ones((block.rows.stop - block.rows.start, block.columns.stop - block.columns.start), np.bool_)
-        return self.inside[block.rows, block.columns]
+        return kept_cells(self.inside, block)
 
     def read(
         self, name: str, records: slice, block: BlockPlan, out: Array, at: NDArray[np.int64]

@@ -13,7 +13,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from stillfield.engine.planning import BlockPlan, Layout
-from stillfield.engine.readers import totals_of
+from stillfield.engine.readers import kept_cells, totals_of
 from stillfield.sources.grids.stored import StoredWeather
 from stillfield.sources.grids.stored_reading import close_files
 from stillfield.sources.settle import Breach
@@ -84,9 +84,7 @@ class StoredReader:
 
     def kept(self, block: BlockPlan) -> NDArray[np.bool_]:
         """Which cells of a block belong to the region, shape (row, column)."""
-        if self.inside is None:
-            return np.ones((block.rows.stop - block.rows.start, block.columns.stop - block.columns.start), np.bool_)
-        return self.inside[block.rows, block.columns]
+        return kept_cells(self.inside, block)
 
     def read(
         self, name: str, records: slice, block: BlockPlan, out: Array, at: NDArray[np.int64]

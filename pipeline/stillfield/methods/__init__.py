@@ -91,6 +91,11 @@ class DailyYield:
     frost: Flags | None = None
     outside: Flags | None = None
 
+    def of_days(self, some: slice) -> DailyYield:
+        """The same of some of its days."""
+        frost, outside = (None if flag is None else flag[some] for flag in (self.frost, self.outside))
+        return DailyYield(self.litres[some], frost, outside)
+
 
 class March(Protocol):
     """A still on some cells, walked through time."""
@@ -169,12 +174,7 @@ def whole_record(method: Method, block: Block, still: Still, conditions: Iterabl
     before, whole = (min(WARM_UP_DAYS, days), unrolled(block)) if block.cyclic else (0, block)
     cells = Cells(whole.latitude, whole.clock_to_solar_hours, whole.steps_per_day)
     found = method.begin(cells, still, list(conditions)).advance(whole, last=True)
-    some = slice(before, before + days)
-    return [DailyYield(one.litres[some], _some(one.frost, some), _some(one.outside, some)) for one in found]
-
-
-def _some(flags: Flags | None, some: slice) -> Flags | None:
-    return None if flags is None else flags[some]
+    return [one.of_days(slice(before, before + days)) for one in found]
 
 
 def unrolled(block: Block) -> Block:

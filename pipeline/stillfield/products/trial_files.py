@@ -3,14 +3,13 @@
 from __future__ import annotations
 
 import json
-import shutil
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
-from stillfield.errors import OutputError
+from stillfield.products.staging import all_or_none
 from stillfield.products.tables import Column, write_csv, write_notes
 
 #: Files of a trial, in the order in which a reader wants them.
@@ -55,20 +54,9 @@ def write_trial(
     OutputError
         If the folder cannot be written to.
     """
-    stage = folder / ".unfinished"
-    try:
-        shutil.rmtree(stage, ignore_errors=True)
-        stage.mkdir(parents=True)
-        try:
-            write_notes(stage / FILES[0], DAY_COLUMNS, title=title, remarks=sentences)
-            write_csv(days, stage / FILES[1], columns=[column.name for column in DAY_COLUMNS])
-            text = json.dumps(figures, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
-            (stage / FILES[2]).write_text(text, encoding="utf-8", newline="\n")
-            for name in FILES:
-                (stage / name).replace(folder / name)
-        finally:
-            shutil.rmtree(stage, ignore_errors=True)
-    except OSError as error:
-        raise OutputError("cannot write the results of the trial", where=str(folder),
-                          got=error.strerror or str(error)) from None
+    text = json.dumps(figures, indent=2, ensure_ascii=False, allow_nan=False) + "\n"
+    with all_or_none(folder, "the results of the trial") as stage:
+        write_notes(stage / FILES[0], DAY_COLUMNS, title=title, remarks=sentences)
+        write_csv(days, stage / FILES[1], columns=[column.name for column in DAY_COLUMNS])
+        (stage / FILES[2]).write_text(text, encoding="utf-8", newline="\n")
     return tuple(folder / name for name in FILES)

@@ -15,6 +15,7 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
+from stillfield.decisions.reliability import quantile_of_ranked
 from stillfield.vocabulary import YIELD
 
 Array = NDArray[np.floating[Any]]
@@ -224,18 +225,8 @@ def month_sums(
 
 
 def _quantile(values: Array, q: float) -> Array:
-    """Quantile over the valid years, linear between ranks as numpy's default; NaN where there is none.
-
-    By one sort, which puts NaN last: numpy's nanquantile calls Python for every cell.
-    """
-    ranked = np.sort(values, axis=0)
-    count = np.isfinite(values).sum(axis=0)
-    place = q * np.maximum(count - 1, 0)
-    below = np.floor(place).astype(int)
-    above = np.minimum(below + 1, np.maximum(count - 1, 0))
-    low = np.take_along_axis(ranked, below[None], axis=0)[0]
-    high = np.take_along_axis(ranked, above[None], axis=0)[0]
-    return np.where(count > 0, low + (place - below) * (high - low), np.nan)
+    """Quantile over the valid years; NaN where there is none."""
+    return quantile_of_ranked(np.sort(values, axis=0), np.isfinite(values).sum(axis=0), q)
 
 
 def climatology(sums: MonthSums, *, rule_litres_per_mj: float) -> dict[str, Array]:

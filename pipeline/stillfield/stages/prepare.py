@@ -63,6 +63,10 @@ class LocalDays:
         """Length of a step [h]."""
         return STEP_HOURS_DAILY / self.steps_per_day
 
+    def whole_steps(self, hours: float) -> int:
+        """Whole steps within some hours of a record in steps; none of daily weather."""
+        return int(hours / self.step_hours + 1e-9) if self.steps_per_day > 1 else 0
+
     @property
     def days(self) -> int:
         """Number of days."""
